@@ -1,0 +1,1 @@
+"""From a site's records to the posterior of the slowness vector through time."""

@@ -1,0 +1,1 @@
+"""Earth models and travel-time tables."""

@@ -1,0 +1,1 @@
+"""Energy inversion: covariances of all windows as a non-negative sum over place and time."""

@@ -1,0 +1,1 @@
+"""Smoothing of the frames, line-source fit and resampling."""

@@ -1,0 +1,1 @@
+"""Grid, geometry and ray stack."""

@@ -1,0 +1,1 @@
+"""Maps, panels, movie and report."""

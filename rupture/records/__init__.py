@@ -1,0 +1,1 @@
+"""Read, correct and check records; make six-component sites of them."""

@@ -1,0 +1,1 @@
+"""Null tests, resolution studies and siting."""

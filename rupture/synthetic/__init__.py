@@ -1,0 +1,1 @@
+"""Kinematic sources, two engines, noise and scenarios."""
