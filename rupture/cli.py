@@ -10,7 +10,9 @@ from importlib import import_module
 from rupture import __version__
 from rupture.errors import RuptureError
 
-_EPILOG = "Research tool: not for warning or life-safety decisions; the authorised agencies and licensed practice decide."
+_EPILOG = (
+    "Research tool: not for warning or life-safety decisions; the authorised agencies and licensed practice decide."
+)
 
 
 def main(arguments: Sequence[str] | None = None) -> int:
@@ -42,18 +44,33 @@ def build_parser() -> argparse.ArgumentParser:
     parser.add_argument("--version", action="version", version=f"rupture {__version__}")
     commands = parser.add_subparsers(dest="command", required=True, metavar="COMMAND")
 
-    demo = _command(commands, "demo", "an invented earthquake, end to end: files written, read back, tracked", "rupture.commands:demo")
+    demo = _command(
+        commands,
+        "demo",
+        "an invented earthquake, end to end: files written, read back, tracked",
+        "rupture.commands:demo",
+    )
     _out(demo)
     _null_tests(demo)
 
-    track = _command(commands, "track", "direction, speed and length of a rupture, with movie, figures and report", "rupture.commands:track")
+    track = _command(
+        commands,
+        "track",
+        "direction, speed and length of a rupture, with movie, figures and report",
+        "rupture.commands:track",
+    )
     _inputs(track)
     _map(track)
     _null_tests(track)
     _out(track)
     track.add_argument("--json", action="store_true", help="print summary.json on stdout instead of sentences")
 
-    direction = _command(commands, "direction", "each site's back-azimuth through time; one site is enough", "rupture.commands:direction")
+    direction = _command(
+        commands,
+        "direction",
+        "each site's back-azimuth through time; one site is enough",
+        "rupture.commands:direction",
+    )
     _inputs(direction)
     _out(direction)
     direction.add_argument("--json", action="store_true", help="print the summary on stdout as JSON")
@@ -63,7 +80,12 @@ def build_parser() -> argparse.ArgumentParser:
     check.add_argument("--json", action="store_true", help="print the table as JSON")
     check.add_argument("--quiet", action="store_true", help="no progress on stderr")
 
-    simulate = _command(commands, "simulate", "synthetic six-component records as miniSEED, StationXML and QuakeML", "rupture.commands:simulate")
+    simulate = _command(
+        commands,
+        "simulate",
+        "synthetic six-component records as miniSEED, StationXML and QuakeML",
+        "rupture.commands:simulate",
+    )
     simulate.add_argument("scenario", metavar="SCENARIO.toml", help="scenario file, or the name of a ready one")
     simulate.add_argument("--seed", type=int, help="seed of all random numbers (wins over the file)")
     _out(simulate)
@@ -71,7 +93,12 @@ def build_parser() -> argparse.ArgumentParser:
     template = _command(commands, "template", "a commented job or scenario file on stdout", "rupture.commands:template")
     template.add_argument("kind", choices=["track", "simulate"], help="which file")
 
-    redraw = _command(commands, "redraw", "pictures, movie and report again from a result; nothing recomputed", "rupture.commands:redraw")
+    redraw = _command(
+        commands,
+        "redraw",
+        "pictures, movie and report again from a result; nothing recomputed",
+        "rupture.commands:redraw",
+    )
     redraw.add_argument("result", metavar="RESULT.nc", help="result.nc of a run")
     redraw.add_argument("--style", metavar="FILE", help="Matplotlib style file that is laid over the project's own")
     _out(redraw)
@@ -93,24 +120,57 @@ def _out(parser: argparse.ArgumentParser) -> None:
 def _inputs(parser: argparse.ArgumentParser) -> None:
     group = parser.add_argument_group("input (wins over the job file)")
     parser.add_argument("job", nargs="?", metavar="JOB.toml", help="job file; see `rupture template track`")
-    group.add_argument("--records", nargs="+", action="extend", metavar="GLOB", help="record files, folders or globs (anything ObsPy reads)")
+    group.add_argument(
+        "--records",
+        nargs="+",
+        action="extend",
+        metavar="GLOB",
+        help="record files, folders or globs (anything ObsPy reads)",
+    )
     group.add_argument("--inventory", nargs="+", action="extend", metavar="FILE", help="StationXML")
     group.add_argument("--event", metavar="FILE", help="QuakeML")
     group.add_argument(
-        "--origin", nargs=4, metavar=("TIME", "LON", "LAT", "DEPTH"), help="origin in place of --event: UTC time, degrees, km"
+        "--origin",
+        nargs=4,
+        metavar=("TIME", "LON", "LAT", "DEPTH"),
+        help="origin in place of --event: UTC time, degrees, km",
     )
     group.add_argument("--magnitude", type=float, metavar="M", help="moment magnitude, where the event has none")
-    group.add_argument("--mechanism", nargs=3, type=float, metavar=("STRIKE", "DIP", "RAKE"), help="focal mechanism in degrees")
+    group.add_argument(
+        "--mechanism",
+        nargs=3,
+        type=float,
+        metavar=("STRIKE", "DIP", "RAKE"),
+        help="focal mechanism in degrees",
+    )
     group.add_argument("--earth", metavar="MODEL", help="uniform:SPEED (S, km/s), iasp91, ak135, prem, or an .nd file")
-    group.add_argument("--band", nargs=2, type=float, action="append", metavar=("LOW", "HIGH"), help="frequency band in Hz; repeat for more")
-    group.add_argument("--array", nargs="+", action="append", metavar="STATION", help="stations (NET.STA) that together make one site; repeat for more")
+    group.add_argument(
+        "--band",
+        nargs=2,
+        type=float,
+        action="append",
+        metavar=("LOW", "HIGH"),
+        help="frequency band in Hz; repeat for more",
+    )
+    group.add_argument(
+        "--array",
+        nargs="+",
+        action="append",
+        metavar="STATION",
+        help="stations (NET.STA) that together make one site; repeat for more",
+    )
     group.add_argument("--seed", type=int, metavar="N", help="seed of all random numbers")
 
 
 def _map(parser: argparse.ArgumentParser) -> None:
     group = parser.add_argument_group("map")
     group.add_argument("--trace", metavar="FILE", help="fault trace (GeoJSON LineString): follow the front along it")
-    group.add_argument("--half-width", type=float, metavar="KM", help="half width of the map grid; default from the magnitude")
+    group.add_argument(
+        "--half-width",
+        type=float,
+        metavar="KM",
+        help="half width of the map grid; default from the magnitude",
+    )
     group.add_argument("--spacing", type=float, metavar="KM", help="distance between cells")
     group.add_argument("--no-energy", action="store_true", help="skip the energy inversion")
 

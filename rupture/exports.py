@@ -56,7 +56,13 @@ def write_direction_csv(result: Result, path: str | Path) -> None:
                 for t in np.flatnonzero(np.isfinite(columns[-1][i, b])):
                     values = [column[i, b, t] for column in columns]
                     writer.writerow(
-                        [code, utc_text(origin, times[t]), _number(times[t], 3), f"{low[b]:g}", f"{high[b]:g}"]
+                        [
+                            code,
+                            utc_text(origin, times[t]),
+                            _number(times[t], 3),
+                            f"{low[b]:g}",
+                            f"{high[b]:g}",
+                        ]
                         + [_number(v, 2) for v in values[:3]]
                         + [_number(v, 3) for v in values[3:]]
                     )
@@ -74,9 +80,17 @@ def write_track_csv(result: Result, path: str | Path) -> None:
             see, snn, sen = (float(row[f"covariance_{k}"]) for k in ("ee", "nn", "en"))
             scale = np.sqrt(max(see, 0.0) * max(snn, 0.0))
             writer.writerow(
-                [utc_text(origin, tau), _number(tau, 3), _number(float(row["longitude"]), 5), _number(float(row["latitude"]), 5)]
+                [
+                    utc_text(origin, tau),
+                    _number(tau, 3),
+                    _number(float(row["longitude"]), 5),
+                    _number(float(row["latitude"]), 5),
+                ]
                 + [_number(v, 3) for v in (float(row["east"]), float(row["north"]), np.sqrt(see), np.sqrt(snn))]
-                + [_number(sen / scale if scale > 0 else 0.0, 3), _number(float(row["active_probability"]), 4)]
+                + [
+                    _number(sen / scale if scale > 0 else 0.0, 3),
+                    _number(float(row["active_probability"]), 4),
+                ]
             )
 
 
@@ -117,11 +131,21 @@ def write_track_geojson(result: Result, path: str | Path) -> None:
     track, origin, summary = result.track, origin_time(result), result.summary
     assert track is not None
     event = summary["event"]
-    features = [_point(event["longitude_deg"], event["latitude_deg"], {"role": "epicentre", "time_utc": event["origin_time"]})]
+    features = [
+        _point(
+            event["longitude_deg"],
+            event["latitude_deg"],
+            {"role": "epicentre", "time_utc": event["origin_time"]},
+        )
+    ]
     for i, code in enumerate(result.sites["site"].values):
         row = result.sites.isel(site=i)
         features.append(
-            _point(float(row["longitude"]), float(row["latitude"]), {"role": "site", "code": str(code), "used": bool(row["used"])})
+            _point(
+                float(row["longitude"]),
+                float(row["latitude"]),
+                {"role": "site", "code": str(code), "used": bool(row["used"])},
+            )
         )
     for t, tau in enumerate(np.asarray(track["source_time"].values)):
         row = track.isel(source_time=t)
@@ -134,9 +158,17 @@ def write_track_geojson(result: Result, path: str | Path) -> None:
         parts = split_at_date_line(lon[np.isfinite(lon)], lat[np.isfinite(lon)]) if np.isfinite(lon).any() else []
         if parts:
             geometry: dict[str, Any] = (
-                {"type": "LineString", "coordinates": parts[0]} if len(parts) == 1 else {"type": "MultiLineString", "coordinates": parts}
+                {"type": "LineString", "coordinates": parts[0]}
+                if len(parts) == 1
+                else {"type": "MultiLineString", "coordinates": parts}
             )
-            features.append({"type": "Feature", "geometry": geometry, "properties": {"role": "fitted arm", "arm": arm + 1}})
+            features.append(
+                {
+                    "type": "Feature",
+                    "geometry": geometry,
+                    "properties": {"role": "fitted arm", "arm": arm + 1},
+                }
+            )
     Path(path).write_text(json.dumps({"type": "FeatureCollection", "features": features}, indent=1), encoding="utf-8")
 
 

@@ -43,14 +43,18 @@ def output_folder(target: str | Path, overwrite: bool = False, holds: str = "res
     if target.exists() and not target.is_dir():
         raise InputError(f"{target}: exists and is not a folder; give another --out")
     if (target / holds).exists() and not overwrite:
-        raise InputError(f"{target}: already holds {holds} of an earlier run; give another --out, or --overwrite to replace it")
+        raise InputError(
+            f"{target}: already holds {holds} of an earlier run; give another --out, or --overwrite to replace it"
+        )
     made = not target.exists()
     try:
         target.mkdir(parents=True, exist_ok=True)
         lock = FileLock(target / LOCK_NAME, timeout=0)
         lock.acquire()
     except Timeout:
-        raise InputError(f"{target}: another run is writing into this folder; wait for it or give another --out") from None
+        raise InputError(
+            f"{target}: another run is writing into this folder; wait for it or give another --out"
+        ) from None
     except OSError as error:
         raise InputError(f"{target}: cannot be written ({error.strerror or error})") from error
     scratch = Path(tempfile.mkdtemp(prefix=".part-", dir=target))

@@ -17,7 +17,10 @@ def _geod() -> Geod:
 
 
 def distance_azimuth(
-    longitude_from_deg: ArrayLike, latitude_from_deg: ArrayLike, longitude_to_deg: ArrayLike, latitude_to_deg: ArrayLike
+    longitude_from_deg: ArrayLike,
+    latitude_from_deg: ArrayLike,
+    longitude_to_deg: ArrayLike,
+    latitude_to_deg: ArrayLike,
 ) -> tuple[NDArray[np.float64], NDArray[np.float64], NDArray[np.float64]]:
     """Return geodesic distance and the azimuths at both ends.
 
@@ -89,7 +92,9 @@ class LocalPlane:
         self.latitude_deg = float(latitude_deg)
         self._proj = Proj(proj="aeqd", lon_0=self.longitude_deg, lat_0=self.latitude_deg, ellps=ELLIPSOID)
 
-    def to_plane(self, longitude_deg: ArrayLike, latitude_deg: ArrayLike) -> tuple[NDArray[np.float64], NDArray[np.float64]]:
+    def to_plane(
+        self, longitude_deg: ArrayLike, latitude_deg: ArrayLike
+    ) -> tuple[NDArray[np.float64], NDArray[np.float64]]:
         """Return east and north in m of points given in degrees."""
         lon, lat = np.broadcast_arrays(np.asarray(longitude_deg, float), np.asarray(latitude_deg, float))
         east, north = self._proj(lon.ravel(), lat.ravel())

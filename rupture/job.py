@@ -7,7 +7,7 @@ import tomllib
 import types
 import typing
 from collections.abc import Mapping
-from dataclasses import MISSING, asdict, dataclass, field, fields, is_dataclass, replace
+from dataclasses import MISSING, fields, is_dataclass
 from pathlib import Path
 from typing import Any
 
@@ -79,7 +79,9 @@ def settings_from_table(cls: type, table: Mapping[str, Any], where: str) -> Any:
             values[key] = adapter.validate_python(_tuples(value), strict=True)
         except ValidationError as error:
             wrong.append(f"{where}: '{key}' = {value!r}: {error.errors()[0]['msg'].lower()}")
-    missing = [f.name for f in known.values() if f.default is MISSING and f.default_factory is MISSING and f.name not in table]
+    missing = [
+        f.name for f in known.values() if f.default is MISSING and f.default_factory is MISSING and f.name not in table
+    ]
     wrong += [f"{where}: the key '{name}' is missing" for name in missing]
     if wrong:
         raise InputError("\n".join(wrong))

@@ -74,7 +74,11 @@ class Site:
     def kind(self) -> str:
         """What the site has: 6C, 3C+rotZ, Z+rotH, 3C, ... in the trade's short form."""
         has = self.present
-        acc = "3C" if has[ACCELERATION].all() else "".join(n[-1] for n, h in zip(COMPONENTS[:3], has[:3], strict=True) if h)
+        acc = (
+            "3C"
+            if has[ACCELERATION].all()
+            else "".join(n[-1] for n, h in zip(COMPONENTS[:3], has[:3], strict=True) if h)
+        )
         if has.all():
             return "6C"
         rot = has[ROTATION]
