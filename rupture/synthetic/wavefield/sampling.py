@@ -6,6 +6,7 @@ from dataclasses import dataclass
 
 import numpy as np
 from numpy.typing import NDArray
+from scipy.fft import irfft, next_fast_len
 from scipy.special import erfc
 
 from rupture.conventions import KM
@@ -15,13 +16,17 @@ from rupture.errors import InputError
 REFERENCE_HZ = 1.0
 """Frequency at which a model's speeds hold; away from it they disperse as Q demands."""
 
-WRAP_DECAY = float(np.log(1e4))
+WRAP_DECAY = float(np.log(1e3))
 """Whatever arrives after the period comes back at its start smaller by exp(-WRAP_DECAY)."""
+
+GUARD_CYCLES = 30.0
+"""The period exceeds the wanted time axis by this many periods of the upper frequency: the pass band's forerunner of
+a wave at time zero comes round to the end of the period, where undoing the damping magnifies it."""
 
 PASS_SHARE = 0.8
 """Up to this share of the upper frequency the pass band is flat; from there it falls smoothly to zero."""
 
-TAIL = 12.0
+TAIL = 13.0
 """Wavenumbers beyond exp(-TAIL) of evanescent decay between source and surface are left out."""
 
 END_TERMS = 5
@@ -38,7 +43,7 @@ class FrequencyPlan:
     Attributes
     ----------
     step_s, samples
-        Time axis, the first sample at the origin time; the period is step_s times samples.
+        Time axis, the first sample at the origin time.
     high_hz
         Nothing above this frequency; must lie below half the sampling rate.
 
@@ -61,15 +66,21 @@ class FrequencyPlan:
                 f"The upper frequency, {self.high_hz:g} Hz, must lie between 0 and half the sampling rate, {nyquist:g} Hz; "
                 "lower it or sample faster"
             )
-        if self.high_hz * self.period_s < 4:
+        if self.high_hz * self.step_s * self.samples < 4:
             raise InputError(
-                f"A window of {self.period_s:g} s is too short for waves up to {self.high_hz:g} Hz; make it at least {4 / self.high_hz:g} s"
+                f"A window of {self.step_s * self.samples:g} s is too short for waves up to {self.high_hz:g} Hz; "
+                f"make it at least {4 / self.high_hz:g} s"
             )
 
     @property
+    def cycle(self) -> int:
+        """Samples of the whole period: the time axis and a guard."""
+        return int(next_fast_len(self.samples + int(np.ceil(GUARD_CYCLES / (self.high_hz * self.step_s))), real=True))
+
+    @property
     def period_s(self) -> float:
-        """Length of the time axis in s."""
-        return self.step_s * self.samples
+        """Length of the period in s."""
+        return self.step_s * self.cycle
 
     @property
     def damping(self) -> float:
@@ -94,7 +105,7 @@ class FrequencyPlan:
 
     def series(self, spectra: NDArray[np.complex128]) -> NDArray[np.float64]:
         """Turn spectra (..., frequencies) into band-limited time series (..., samples)."""
-        damped = np.fft.irfft(spectra * self.window, self.samples, axis=-1) / self.step_s
+        damped = irfft(spectra * self.window, self.cycle, axis=-1)[..., : self.samples] / self.step_s
         damped *= np.exp(self.damping * self.step_s * np.arange(self.samples))
         return damped
 
