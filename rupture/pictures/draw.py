@@ -1,0 +1,145 @@
+"""All figures of a result, with their data beside them."""
+
+from __future__ import annotations
+
+import re
+from collections.abc import Callable
+from dataclasses import dataclass
+from functools import partial
+from pathlib import Path
+
+import numpy as np
+
+from rupture.pictures.answer_figures import along_figure, energy_figure, kinds_figure, posterior_figure
+from rupture.pictures.direction_figure import direction_figure, directions_figure
+from rupture.pictures.frames_figure import frames_figure
+from rupture.pictures.map_figure import map_figure
+from rupture.pictures.scene import Scene
+from rupture.pictures.style import Picture
+from rupture.pictures.tables import (
+    Table,
+    along_tables,
+    direction_tables,
+    energy_tables,
+    frames_tables,
+    kinds_tables,
+    map_tables,
+    posterior_tables,
+)
+from rupture.result import Result
+
+FORMATS = ("png", "pdf")
+
+
+@dataclass(frozen=True)
+class Sheet:
+    """One figure that a result has the data for.
+
+    Attributes
+    ----------
+    name
+        File name without suffix.
+    draw
+        Draws it; takes the keyword `style`.
+    tables
+        Makes its data.
+    """
+
+    name: str
+    draw: Callable[..., Picture]
+    tables: Callable[[], list[Table]]
+
+
+def sheets(result: Result) -> list[Sheet]:
+    """Return the figures that can be drawn of a result: directions always, the rest where the stage ran."""
+    scene = Scene.of(result)
+    out = [Sheet("map", partial(map_figure, result), partial(map_tables, scene))]
+    share = result.direction["probability"].values
+    shown = [s for s in range(len(scene.codes)) if np.isfinite(share[s]).any()]
+    if len(shown) > 1:
+        out.append(Sheet("directions", partial(directions_figure, result), list))
+    for s in shown:
+        name = f"direction_{file_name(scene.codes[s])}"
+        out.append(Sheet(name, partial(direction_figure, result, scene.codes[s]), partial(direction_tables, scene, s)))
+    if result.map is not None:
+        out.append(Sheet("frames", partial(frames_figure, result), partial(frames_tables, scene, "location")))
+        out.append(Sheet("energy", partial(energy_figure, result), partial(energy_tables, scene)))
+    if result.energy is not None and result.map is not None:
+        out.append(
+            Sheet("energy_map", partial(map_figure, result, field="energy"), partial(map_tables, scene, "energy"))
+        )
+        out.append(
+            Sheet(
+                "energy_frames", partial(frames_figure, result, field="energy"), partial(frames_tables, scene, "energy")
+            )
+        )
+    track = result.track
+    if track is not None and "along_probability" in track:
+        out.append(Sheet("along", partial(along_figure, result), partial(along_tables, scene)))
+    if track is not None and "sample" in track and (track["kind"].values.astype(str) != "stationary").any():
+        out.append(Sheet("posterior", partial(posterior_figure, result), partial(posterior_tables, scene)))
+    if result.summary.get("rupture"):
+        out.append(Sheet("kinds", partial(kinds_figure, result), partial(kinds_tables, scene)))
+    return out
+
+
+def file_name(code: str) -> str:
+    """Return a site code as a safe part of a file name.
+
+    Examples
+    --------
+    >>> file_name("ZX.R01"), file_name("../a b")
+    ('ZX.R01', '_a_b')
+    """
+    return re.sub(r"[^A-Za-z0-9._-]+", "_", code).lstrip(".") or "site"
+
+
+def draw_all(
+    result: Result,
+    out_dir: str | Path,
+    style: str | Path | None = None,
+    progress: Callable[[int, int], None] | None = None,
+    formats: tuple[str, ...] = FORMATS,
+) -> list[Path]:
+    """Draw every figure that the result has the data for, each with its data as CSV beside it.
+
+    Parameters
+    ----------
+    result
+        A result.
+    out_dir
+        Folder for the files; made when it does not exist.
+    style
+        A Matplotlib style file to lay over the house look.
+    progress
+        Called with (done, total).
+    formats
+        File formats: png (300 dpi), pdf, svg.
+
+    Returns
+    -------
+    list of pathlib.Path
+        What was written, figures and tables.
+
+    Raises
+    ------
+    InputError
+        When the style file cannot be used.
+    """
+    folder = Path(out_dir)
+    folder.mkdir(parents=True, exist_ok=True)
+    todo = sheets(result)
+    written: list[Path] = []
+    for done, sheet in enumerate(todo):
+        if progress is not None:
+            progress(done, len(todo))
+        picture = sheet.draw(style=style)
+        for suffix in formats:
+            path = folder / f"{sheet.name}.{suffix}"
+            picture.savefig(path)
+            written.append(path)
+        for table in sheet.tables():
+            written.append(table.write(folder / f"{sheet.name}{'_' if table.name else ''}{table.name}.csv"))
+    if progress is not None:
+        progress(len(todo), len(todo))
+    return written

@@ -1,0 +1,206 @@
+"""The data of each figure as plain tables, so that others can draw their own."""
+
+from __future__ import annotations
+
+import csv
+from collections.abc import Callable, Sequence
+from dataclasses import dataclass
+from pathlib import Path
+from typing import Any
+
+import numpy as np
+
+from rupture.pictures.answer_figures import KINDS, energy_series
+from rupture.pictures.direction_figure import coherence, posterior_interval, predicted_curves
+from rupture.pictures.frames_figure import field_frames
+from rupture.pictures.layers import SHARES, area_rings
+from rupture.pictures.map_figure import field_total
+from rupture.pictures.scene import Scene, credible_level
+
+
+@dataclass(frozen=True)
+class Table:
+    """Named columns of one length.
+
+    Attributes
+    ----------
+    name
+        What is added to the figure's file name; empty for its only table.
+    columns
+        Column names, units in them, and values.
+    """
+
+    name: str
+    columns: dict[str, Sequence[Any]]
+
+    def write(self, path: Path) -> Path:
+        """Write as CSV; numbers with seven digits, missing ones empty."""
+        with path.open("w", newline="", encoding="utf-8") as stream:
+            writer = csv.writer(stream, lineterminator="\n")
+            writer.writerow(self.columns)
+            for row in zip(*self.columns.values(), strict=True):
+                writer.writerow([_text(value) for value in row])
+        return path
+
+
+def _text(value: Any) -> str:
+    if isinstance(value, float | np.floating):
+        return "" if not np.isfinite(value) else f"{value:.7g}"
+    return str(value)
+
+
+def map_tables(scene: Scene, field: str = "location") -> list[Table]:
+    """Sites, rays, track, line source, cells and credible areas of the map figure."""
+    sites = scene.result.sites
+    out = [
+        Table(
+            "sites",
+            {
+                "site": scene.codes, "longitude_deg": sites["longitude"].values, "latitude_deg": sites["latitude"].values,
+                "components": scene.components, "used": scene.used.astype(int), "reason": [str(r) for r in sites["reason"].values],
+            },
+        )
+    ]  # fmt: skip
+    rays = scene.rays
+    picked = [
+        (s, f) for f in range(scene.source_time.size) for s in range(len(scene.codes)) if np.isfinite(rays[s, f, 0])
+    ]
+    if picked:
+        s, f = np.array(picked).T
+        out.append(
+            Table(
+                "rays",
+                {
+                    "source_time_s": scene.source_time[f], "site": [scene.codes[i] for i in s], "window_time_s": scene.s_arrival[s, f],
+                    "back_azimuth_deg": rays[s, f, 0] % 360, "back_azimuth_p16_deg": rays[s, f, 1] % 360,
+                    "back_azimuth_p84_deg": rays[s, f, 2] % 360, "probability_coherent": rays[s, f, 3],
+                },
+            )
+        )  # fmt: skip
+    out += _track_tables(scene)
+    if scene.result.map is not None:
+        total = field_total(scene, field)
+        lon, lat = scene.to_degrees(scene.cell_km)
+        out.append(Table("cells", {"longitude_deg": lon.ravel(), "latitude_deg": lat.ravel(), "share": total.ravel()}))
+        out += _area_table(scene, total)
+    return out
+
+
+def _track_tables(scene: Scene) -> list[Table]:
+    track = scene.result.track
+    if track is None:
+        return []
+    columns: dict[str, Sequence[Any]] = {"source_time_s": scene.source_time}
+    for name, unit in (("longitude", "deg"), ("latitude", "deg"), ("east", "km"), ("north", "km")):
+        columns[f"{name}_{unit}"] = track[name].values
+    for name in ("covariance_ee", "covariance_nn", "covariance_en"):
+        columns[f"{name}_km2"] = track[name].values
+    columns["active_probability"] = track["active_probability"].values
+    for arm in range(scene.front_km.shape[0]):
+        columns[f"arm{arm + 1}_longitude_deg"] = track["front_longitude"].values[arm]
+        columns[f"arm{arm + 1}_latitude_deg"] = track["front_latitude"].values[arm]
+    return [Table("track", columns)]
+
+
+def _area_table(scene: Scene, total: Any) -> list[Table]:
+    if scene.is_trace:
+        return []
+    share, ring_number, places = [], [], []
+    for part in SHARES:
+        level = credible_level(total, part)
+        rings = area_rings(scene, total, level) if np.isfinite(level) else []
+        for number, ring in enumerate(rings, start=1):
+            share += [part] * len(ring)
+            ring_number += [number] * len(ring)
+            places.append(ring)
+    if not places:
+        return []
+    lon, lat = scene.to_degrees(np.vstack(places))
+    return [Table("areas", {"share": share, "ring": ring_number, "longitude_deg": lon, "latitude_deg": lat})]
+
+
+def direction_tables(scene: Scene, index: int) -> list[Table]:
+    """Posterior image and curves of one site."""
+    direction = scene.result.direction
+    time = direction["time"].values.astype(float)
+    axis = direction["back_azimuth"].values.astype(float)
+    share = np.asarray(direction["probability"].values[index], float)
+    interval = posterior_interval(scene, index)
+    curves: dict[str, Sequence[Any]] = {
+        "seconds_after_origin": time,
+        "back_azimuth_deg": interval[:, 0] % 360,
+        "back_azimuth_p05_deg": interval[:, 1] % 360,
+        "back_azimuth_p95_deg": interval[:, 2] % 360,
+        "probability_coherent": coherence(scene, index),
+        "power_m2_s4": direction["power"].values[index],
+    }
+    for arm, curve in enumerate(predicted_curves(scene)[:, index]):
+        curves[f"predicted_arm{arm + 1}_deg"] = curve
+    known = np.isfinite(share).all(axis=1)
+    image = {
+        "seconds_after_origin": np.repeat(time[known], axis.size),
+        "back_azimuth_deg": np.tile(axis, int(known.sum())),
+        "probability": share[known].ravel(),
+    }
+    return [Table("", curves), Table("posterior", image)]
+
+
+def along_tables(scene: Scene) -> list[Table]:
+    """Image and fitted front of the distance figure."""
+    track = scene.result.track
+    assert track is not None
+    along = track["along"].values.astype(float)
+    share = np.asarray(track["along_probability"].values, float)
+    image = {
+        "source_time_s": np.repeat(scene.source_time, along.size),
+        "along_km": np.tile(along, scene.source_time.size),
+        "probability": share.ravel(),
+    }
+    front: dict[str, Sequence[Any]] = {"source_time_s": scene.source_time}
+    for arm in range(scene.front_km.shape[0]):
+        front[f"arm{arm + 1}_km"] = track["front_distance"].values[arm]
+    return [Table("", image), Table("front", front)]
+
+
+def posterior_tables(scene: Scene) -> list[Table]:
+    """All draws of the line-source fit."""
+    track = scene.result.track
+    assert track is not None
+    columns: dict[str, Sequence[Any]] = {"kind": [str(kind) for kind in track["kind"].values]}
+    for k, name in enumerate(track["parameter"].values):
+        columns[str(name)] = track["sample"].values[:, k]
+    return [Table("", columns)]
+
+
+def kinds_tables(scene: Scene) -> list[Table]:
+    """Kind probabilities and null-test figures."""
+    shares = scene.result.summary["rupture"]["kind_probability"]
+    reliability = scene.result.summary.get("reliability") or {}
+    tests = {k: v for k, v in reliability.items() if k.endswith("_probability") and isinstance(v, int | float)}
+    names = [*sorted(shares, key=lambda k: KINDS.index(k) if k in KINDS else len(KINDS)), *tests]
+    return [Table("", {"quantity": names, "probability": [{**shares, **tests}[name] for name in names]})]
+
+
+def energy_tables(scene: Scene) -> list[Table]:
+    """Energy against source time."""
+    series = {f"{name.replace(' ', '_')}_per_s": values for name, values in energy_series(scene).items()}
+    return [Table("", {"source_time_s": scene.source_time, **series})]
+
+
+def frames_tables(scene: Scene, field: str) -> list[Table]:
+    """Cells of the frames figure, long form; cells below a ten-thousandth of the largest value are left out."""
+    values, _ = field_frames(scene, field)
+    flat = values.reshape(values.shape[0], -1)
+    lon, lat = (v.ravel() for v in scene.to_degrees(scene.cell_km))
+    frame, cell = np.nonzero(flat > 1e-4 * flat.max())
+    return [
+        Table(
+            "",
+            {
+                "source_time_s": scene.source_time[frame], "longitude_deg": lon[cell], "latitude_deg": lat[cell], "value": flat[frame, cell],
+            },
+        )
+    ]  # fmt: skip
+
+
+TableFunction = Callable[[Scene], list[Table]]
