@@ -138,8 +138,9 @@ def draw_all(
             path = folder / f"{sheet.name}.{suffix}"
             picture.savefig(path)
             written.append(path)
-        for table in sheet.tables():
-            written.append(table.write(folder / f"{sheet.name}{'_' if table.name else ''}{table.name}.csv"))
+        written += [
+            table.write(folder / f"{sheet.name}{'_' if table.name else ''}{table.name}.csv") for table in sheet.tables()
+        ]
     if progress is not None:
         progress(len(todo), len(todo))
     return written
