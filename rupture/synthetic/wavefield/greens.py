@@ -2,7 +2,6 @@
 
 from __future__ import annotations
 
-from collections.abc import Callable
 from dataclasses import dataclass
 from enum import Enum
 
@@ -11,24 +10,12 @@ from numpy.typing import ArrayLike, NDArray
 
 from rupture.earth.layers import LayeredModel
 from rupture.errors import InputError
-from rupture.synthetic.wavefield.bessel import bessel_tables
+from rupture.synthetic.wavefield.integration import Report, integrate
 from rupture.synthetic.wavefield.mechanism import COMPONENT_SLICES, ELEMENTS, element_weights, to_east_north
-from rupture.synthetic.wavefield.reflection import J0_COLUMNS, J1_COLUMNS, J2_COLUMNS, surface_kernels
-from rupture.synthetic.wavefield.sampling import (
-    FrequencyPlan,
-    medium,
-    wavenumber_counts,
-    wavenumber_step,
-    wavenumber_weights,
-)
+from rupture.synthetic.wavefield.sampling import FrequencyPlan
 
 CODE_VERSION = 1
 """Part of the key of stored Green's functions: raised whenever the numbers change."""
-
-WAVENUMBERS_AT_ONCE = 1024
-FREQUENCIES_AT_ONCE = 16
-
-Report = Callable[[int, int], None]
 
 
 class Motion(Enum):
@@ -167,6 +154,17 @@ def greens_at_depths(
 
     Parameters, errors as for `greens`; `source_depth_km` has shape (depths,).
     """
+    distance = checked_distances(distance_m)
+    asked = np.atleast_1d(np.asarray(source_depth_km, float))
+    depth, where = np.unique(asked, return_inverse=True)
+    spectra = np.empty((depth.size, distance.size, len(ELEMENTS), plan.omega.size), complex)
+    for block in integrate(model, depth, [distance] * depth.size, plan, report):
+        spectra[block.depth, block.distances, :, block.frequencies] = block.spectra
+    return [GreensTable(float(depth[d]), distance, plan, spectra[d]) for d in where]
+
+
+def checked_distances(distance_m: ArrayLike) -> NDArray[np.float64]:
+    """Return distances as an array of floats; raise InputError when one is not positive or there is none."""
     distance = np.atleast_1d(np.asarray(distance_m, float))
     if distance.ndim != 1 or not distance.size:
         raise InputError("Distances must form a list of at least one number")
@@ -175,70 +173,4 @@ def greens_at_depths(
             f"A receiver at {distance.min() / 1e3:g} km distance: radial and transverse are not defined there; "
             "give distances above zero"
         )
-    asked = np.atleast_1d(np.asarray(source_depth_km, float))
-    depth, where = np.unique(asked, return_inverse=True)
-    spectra = _integrate(model, depth, distance, plan, report)
-    return [GreensTable(float(depth[d]), distance, plan, spectra[:, d]) for d in where]
-
-
-def _integrate(
-    model: LayeredModel,
-    depth_km: NDArray[np.float64],
-    distance_m: NDArray[np.float64],
-    plan: FrequencyPlan,
-    report: Report | None,
-) -> NDArray[np.complex128]:
-    """Sum the kernels over wavenumber; returns (distances, depths, 18, frequencies)."""
-    omega = plan.omega
-    layers = medium(model, depth_km, omega)
-    step = wavenumber_step(model, plan, float(distance_m.max()))
-    counts = wavenumber_counts(layers, omega, step)
-    k, weight = wavenumber_weights(step, int(counts.max()))
-    columns = (J0_COLUMNS, J1_COLUMNS, J2_COLUMNS)
-    sums = [np.zeros((distance_m.size, depth_km.size, omega.size, n), complex) for n in columns]
-    blocks = [
-        (lo, min(lo + WAVENUMBERS_AT_ONCE, k.size), f, min(f + FREQUENCIES_AT_ONCE, omega.size))
-        for lo in range(0, k.size, WAVENUMBERS_AT_ONCE)
-        for f in range(0, omega.size, FREQUENCIES_AT_ONCE)
-        if counts[f : f + FREQUENCIES_AT_ONCE].max() > lo
-    ]
-    tables, tabled = None, -1
-    for done, (lo, hi, f0, f1) in enumerate(blocks):
-        if tabled != lo:
-            tables, tabled = bessel_tables(distance_m, k[lo:hi]), lo
-        hi = min(hi, int(counts[f0:f1].max()))
-        kernels = [np.empty((hi - lo, depth_km.size, f1 - f0, n), complex) for n in columns]
-        surface_kernels(
-            k[lo:hi], weight[lo:hi], lo, counts[f0:f1], omega[f0:f1] ** 2, layers.alpha2[f0:f1], layers.beta2[f0:f1],
-            layers.density, layers.thickness_m, layers.emit, layers.layer_above, *kernels,
-        )  # fmt: skip
-        for total, table, kernel in zip(sums, tables, kernels, strict=True):
-            part = table[:, : hi - lo] @ kernel.reshape(hi - lo, -1).view(float)
-            total[:, :, f0:f1] += part.view(complex).reshape(distance_m.size, depth_km.size, f1 - f0, -1)
-        if report is not None:
-            report(done + 1, len(blocks))
-    return _assemble(*sums, distance_m) / (1j * omega)
-
-
-def _assemble(
-    zero: NDArray[np.complex128], one: NDArray[np.complex128], two: NDArray[np.complex128], distance_m: NDArray[np.float64]
-) -> NDArray[np.complex128]:
-    """Combine sums over J0, J1 and J2 (distances, depths, frequencies, columns) into (distances, depths, 18, frequencies).
-
-    Derivatives of Bessel functions and the near-field terms J_m / (k r) come from J1' = J0 - J1/x, J2' = J1 - 2 J2/x.
-    """
-    b1_0, b3_0, a2_0, c2_0, kb2_0 = np.moveaxis(zero, -1, 0)
-    a1_1, a3_1, b2_1, kc2_1, kb1_1, kb3_1, a2_k1, c2_k1, c1_1 = np.moveaxis(one, -1, 0)
-    b1_2, kc1_2, a1_k2, c1_k2 = np.moveaxis(two, -1, 0)
-    near = (1.0 / distance_m)[:, None, None]
-    one_dip = near * (c2_k1 - a2_k1)
-    two_slip = 2 * near * (a1_k2 - c1_k2)
-    rows = [
-        -a1_1, a2_0 + one_dip, -a1_1 + two_slip, -a3_1,
-        c2_0 - one_dip, -c1_1 - two_slip,
-        -b1_0, b2_1, b1_2, -b3_0,
-        -near * b2_1, -2 * near * b1_2,
-        kb1_1, kb2_0 - near * b2_1, kb1_1 - 2 * near * b1_2, kb3_1,
-        0.5 * kc2_1, -0.5 * kc1_2,
-    ]  # fmt: skip
-    return np.stack(rows, axis=2)
+    return distance

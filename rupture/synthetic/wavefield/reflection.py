@@ -18,7 +18,7 @@ import numpy as np
 from numba import njit, prange
 
 J0_COLUMNS, J1_COLUMNS, J2_COLUMNS = 5, 9, 4
-"""How many integrands go with each Bessel function; `greens.assemble` names them."""
+"""How many integrands go with each Bessel function; `integration._assemble` names them."""
 
 NEGLIGIBLE_DEPTH = 10.0
 """Layers more than this many one-way S decay lengths below the source are not visited: their echo is exp(-20)."""
@@ -119,7 +119,7 @@ def _layer_sh(nu_beta, mu, e_beta, z):
 
 @njit(cache=True, parallel=True)
 def surface_kernels(
-    k, weight, first, count, omega2, alpha2, beta2, density, thickness, emit, layer_of_depth, out0, out1, out2
+    k, weight, count, omega2, alpha2, beta2, density, thickness, emit, layer_of_depth, out0, out1, out2
 ):
     """Fill the integrands that go with J0, J1 and J2, weighted by k dk / 2 pi.
 
@@ -127,10 +127,8 @@ def surface_kernels(
     ----------
     k, weight
         Wavenumbers in rad/m and quadrature weights k dk / 2 pi, shape (K,).
-    first
-        Index of k[0] in the whole wavenumber axis.
     count
-        How many wavenumbers of the whole axis matter, shape (F, D), not increasing with depth.
+        How many wavenumbers matter, shape (F, D), not increasing with depth.
     omega2, alpha2, beta2
         Squared angular frequency (F,) and squared complex speeds (F, L), frequency-dependent through Q.
     density, thickness
@@ -153,7 +151,7 @@ def surface_kernels(
         for f in range(omega2.size):
             active = 0
             for d in range(depths):
-                if first + ik < count[f, d]:
+                if ik < count[f, d]:
                     active = d + 1
                 else:
                     out0[ik, d, f, :] = 0.0
