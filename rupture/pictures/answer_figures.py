@@ -172,7 +172,7 @@ def posterior_figure(result: Result, style_file: str | Path | None, width_mm: fl
     centre = (13 + size / 2) / width_mm if wide else 0.5
     picture.text(centre, 4.6 / height, "\n".join(notes), ha="center", va="bottom", fontsize=6.0, linespacing=1.35)
     if wide:
-        panels = [(name, label, unit) for name, label, unit in _SIZES if _has_sample(result, name)]
+        panels = [(name, label, unit) for name, label, unit in SIZES if has_sample(result, name)]
         tall = 72.0 / max(len(panels), 1)
         for k, (name, label, unit) in enumerate(panels):
             panel = picture.axes_mm(104, height - 12 - (k + 1) * tall + 9, 70, tall - 12)
@@ -180,10 +180,11 @@ def posterior_figure(result: Result, style_file: str | Path | None, width_mm: fl
     return picture
 
 
-_SIZES = (("speed_km_s", "rupture speed", "km/s"), ("length_km", "length", "km"), ("duration_s", "duration", "s"))
+SIZES = (("speed_km_s", "rupture speed", "km/s"), ("length_km", "length", "km"), ("duration_s", "duration", "s"))
 
 
-def _has_sample(result: Result, name: str) -> bool:
+def has_sample(result: Result, name: str) -> bool:
+    """Return whether the fit of a result has a parameter of this name."""
     return result.track is not None and "parameter" in result.track and name in result.track["parameter"].values
 
 

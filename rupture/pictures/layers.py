@@ -53,7 +53,7 @@ def ray_polygon(scene: Scene, site: int, frame: int, reach_km: float) -> Array |
     angle = np.radians(np.linspace(low, high, max(2, int((high - low) / 4) + 2)))
     # On an azimuthal map a geodesic that does not pass the centre bends a little; at regional distances the bend
     # is below the width of the ray, but meridians converge: turn north at the site into north on the map.
-    angle = angle + _convergence(scene, site)
+    angle = angle + convergence(scene, site)
     rim = scene.site_km[site] + reach_km * np.stack([np.sin(angle), np.cos(angle)], axis=-1)
     return np.vstack([scene.site_km[site], rim])
 
@@ -63,11 +63,11 @@ def ray_end(scene: Scene, site: int, frame: int, reach_km: float) -> Array | Non
     best, _, _, coherent = scene.rays[site, frame]
     if not (np.isfinite(best) and coherent >= RAY_PROBABILITY and scene.used[site]):
         return None
-    angle = np.radians(best) + _convergence(scene, site)
+    angle = np.radians(best) + convergence(scene, site)
     return scene.site_km[site] + reach_km * np.array([np.sin(angle), np.cos(angle)])
 
 
-def _convergence(scene: Scene, site: int) -> float:
+def convergence(scene: Scene, site: int) -> float:
     """Angle from north at the site to north on the map in rad: bearing of the centre on the map less its azimuth."""
     east, north = scene.site_km[site]
     if np.hypot(east, north) < 1e-6:
