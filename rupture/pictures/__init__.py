@@ -15,7 +15,7 @@ _PUBLIC = {
     "kinds_figure": "answer_figures",
     "make_movie": "movie",
     "map_figure": "map_figure",
-    "posterior_figure": "answer_figures",
+    "posterior_figure": "posterior_figure",
     "write_report": "report",
 }
 

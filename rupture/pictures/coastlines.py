@@ -204,7 +204,7 @@ def _with_arcs(
     last_far: float | None = None
     far_at = np.flatnonzero(~near)
     position = 0
-    for at in far_at:
+    for at in far_at.tolist():
         if at > position:
             keep.append(points[position:at])
             last_far = None

@@ -103,7 +103,13 @@ def draw_sites(axes: Any, scene: Scene, names: bool = True, size: float = 4.6) -
             where = [s for s, k in enumerate(kinds) if k == kind and bool(scene.used[s]) == used]
             if not where:
                 continue
-            look = {"marker": marker, "markersize": size, "mec": style.INK, "mew": 0.7, "linestyle": "none"}
+            look: dict[str, Any] = {
+                "marker": marker,
+                "markersize": size,
+                "mec": style.INK,
+                "mew": 0.7,
+                "linestyle": "none",
+            }
             look["mfc"] = style.INK if used else "white"
             axes.plot(*(scene.site_km[where].T * KM), zorder=7, **look)
             label = {
@@ -129,7 +135,14 @@ def draw_sites(axes: Any, scene: Scene, names: bool = True, size: float = 4.6) -
 
 def draw_epicentre(axes: Any) -> Line2D:
     """Draw the epicentre star; return its legend handle."""
-    look = {"marker": "*", "markersize": 9.5, "mfc": style.ACCENT, "mec": "white", "mew": 0.7, "linestyle": "none"}
+    look: dict[str, Any] = {
+        "marker": "*",
+        "markersize": 9.5,
+        "mfc": style.ACCENT,
+        "mec": "white",
+        "mew": 0.7,
+        "linestyle": "none",
+    }
     axes.plot([0.0], [0.0], zorder=7.5, **look)
     return Line2D([], [], label="epicentre", **look)
 
@@ -143,7 +156,7 @@ def draw_cells(axes: Any, scene: Scene, values: Array, colours: Colormap, top: f
         middle = (places[1:] + places[:-1]) / 2
         ends = np.vstack([places[:1], middle, places[-1:]])
         band = LineCollection(
-            np.stack([ends[:-1], ends[1:]], axis=1),
+            list(np.stack([ends[:-1], ends[1:]], axis=1)),
             array=values,
             cmap=colours,
             norm=scale,
@@ -172,7 +185,7 @@ def draw_areas(axes: Any, scene: Scene, probability: Array) -> list[Line2D]:
         level = credible_level(probability, share)
         if not np.isfinite(level):
             continue
-        look = {"color": style.INK, "linewidth": width, "linestyle": dash}
+        look: dict[str, Any] = {"color": style.INK, "linewidth": width, "linestyle": dash}
         handles.append(Line2D([], [], label=f"{share:.0%} area", **look))
         if scene.is_trace:
             inside = probability >= level
@@ -202,7 +215,7 @@ def draw_track(axes: Any, scene: Scene, colours: Colormap, scale: Normalize, siz
     for arm, place in enumerate(scene.front_km):
         known = place[np.isfinite(place[:, 0])]
         if len(known) > 1:
-            look = {"color": style.INK, "linewidth": 1.0, "linestyle": style.ARM_DASHES[arm % 2]}
+            look: dict[str, Any] = {"color": style.INK, "linewidth": 1.0, "linestyle": style.ARM_DASHES[arm % 2]}
             axes.plot(*(known.T * KM), zorder=6.2, **look)
             axes.annotate(
                 "", known[-1] * KM, known[-2] * KM, zorder=6.3,
@@ -259,7 +272,8 @@ def draw_mechanism(picture: style.Picture, scene: Scene, place_mm: tuple[float, 
     axes.set_axis_off()
     axes.set_zorder(9)
     edge = np.linspace(-1.0, 1.0, 161)
-    pattern = p_radiation(*mechanism, *np.meshgrid(edge, edge))
+    strike, dip, rake = mechanism
+    pattern = p_radiation(strike, dip, rake, *np.meshgrid(edge, edge))
     rim = Circle((0, 0), 1, facecolor="white", edgecolor=style.INK, linewidth=0.6)
     axes.add_patch(rim)
     axes.contourf(edge, edge, pattern, levels=[0, 2], colors=[style.MUTED]).set_clip_path(rim)

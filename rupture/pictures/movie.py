@@ -151,7 +151,7 @@ class Animation:
                 rings += [ring * KM for ring in found]
                 widths += [width] * len(found)
         self.areas.set_segments(rings)
-        self.areas.set_linewidths(widths or [0.0])
+        self.areas.set_linewidth(widths or [0.0])
         past = np.isfinite(scene.track_km[:, 0]) & (np.arange(scene.source_time.size) <= frame)
         self.trail.set_offsets(scene.track_km[past] * KM if past.any() else np.empty((0, 2)))
         self.trail.set_array(scene.source_time[past])

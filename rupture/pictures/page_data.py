@@ -11,11 +11,12 @@ import numpy as np
 from numpy.typing import NDArray
 
 from rupture.pictures import layers, style
-from rupture.pictures.answer_figures import SIZES, energy_series, has_sample, posterior_sample, s_speed_km_s
+from rupture.pictures.answer_figures import energy_series, s_speed_km_s
 from rupture.pictures.basemap import KM, Extent, graticule
 from rupture.pictures.coastlines import local_land
 from rupture.pictures.direction_figure import coherence, predicted_curves, used_spans, window_of_interest
 from rupture.pictures.frames_figure import field_frames
+from rupture.pictures.posterior_figure import SIZES, has_sample, posterior_sample
 from rupture.pictures.scene import Scene, credible_level
 
 Array = NDArray[np.float64]
@@ -35,7 +36,7 @@ def page_data(scene: Scene) -> dict[str, Any]:
         The result to show.
     """
     result = scene.result
-    extent = layers.map_extent(scene, aspect=1.35)
+    extent = layers.map_extent(scene, aspect=1.7)
     out: dict[str, Any] = {
         "origin": scene.origin.isoformat(),
         "times": _numbers(scene.source_time, 3),
@@ -43,7 +44,6 @@ def page_data(scene: Scene) -> dict[str, Any]:
         "map": _map(scene, extent),
         "fields": [],
         "sites": [_site(scene, s) for s in range(len(scene.codes))],
-        "window": _numbers(np.array(window_of_interest(scene)), 2),
         "timeScale": [layers.time_scale(scene).vmin, layers.time_scale(scene).vmax],
         "colours": {"probability": _colours(style.probability_colours()), "time": _colours(style.time_colours())},
     }
@@ -108,11 +108,17 @@ def _map(scene: Scene, extent: Extent) -> dict[str, Any]:
         "coast": _lines(found.coast),
         "borders": _lines(found.borders),
         "grid": [
-            {"label": line.label, "meridian": line.meridian, "x": _numbers(p[::4, 0], 2), "y": _numbers(p[::4, 1], 2)}
+            {"label": line.label, "meridian": line.meridian, "x": _numbers(p[:, 0], 2), "y": _numbers(p[:, 1], 2)}
             for line in graticule(scene.plane, extent)
-            for p in [line.places_km]
+            for p in [_trimmed(line.places_km)]
         ],
     }
+
+
+def _trimmed(places: Array) -> Array:
+    """Leave out the places off the map at both ends of a line."""
+    known = np.flatnonzero(np.isfinite(places[:, 0]))
+    return places[known[0] : known[-1] + 1]
 
 
 def _site(scene: Scene, s: int) -> dict[str, Any]:

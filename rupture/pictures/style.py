@@ -161,16 +161,17 @@ def style_context(style: str | Path | None = None) -> Iterator[None]:
         if not path.is_file():
             raise InputError(f"{path}: no such Matplotlib style file")
         try:
-            user = dict(mpl.rc_params_from_file(path, fail_on_error=True, use_default_template=False))
+            user = {
+                str(k): v
+                for k, v in mpl.rc_params_from_file(path, fail_on_error=True, use_default_template=False).items()
+            }
         except (OSError, ValueError, KeyError, UnicodeDecodeError) as error:
             raise InputError(f"{path}: not a Matplotlib style file ({str(error).strip()})") from error
     keep = {"backend", "backend_fallback", "interactive", "toolbar", "webagg.port", "webagg.address"}
     # From Matplotlib's own defaults, so that a figure does not depend on whose machine draws it.
-    base = {key: value for key, value in mpl.rcParamsDefault.items() if key not in keep}
-    with mpl.rc_context():
-        mpl.rcParams.update(base)
-        mpl.rcParams.update(_RC)
-        mpl.rcParams.update({key: value for key, value in user.items() if key not in keep})
+    look: dict[Any, Any] = {key: value for key, value in mpl.rcParamsDefault.items() if key not in keep}
+    look |= _RC | {key: value for key, value in user.items() if key not in keep}
+    with mpl.rc_context(look):
         yield
 
 
@@ -207,7 +208,7 @@ def figure_function(draw: Callable[Concatenate[Result, str | Path | None, float,
             picture.text(0.5, 1.2 / height_mm, SHORT_CAUTION, ha="center", va="bottom", fontsize=5.4, color=MUTED)
         return picture
 
-    return wrapped  # type: ignore[return-value]
+    return wrapped
 
 
 def site_marker(components: str) -> str:

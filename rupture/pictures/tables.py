@@ -3,12 +3,13 @@
 from __future__ import annotations
 
 import csv
-from collections.abc import Callable, Sequence
+from collections.abc import Mapping, Sequence
 from dataclasses import dataclass
 from pathlib import Path
 from typing import Any
 
 import numpy as np
+from numpy.typing import NDArray
 
 from rupture.pictures.answer_figures import KINDS, energy_series
 from rupture.pictures.direction_figure import coherence, posterior_interval, predicted_curves
@@ -16,6 +17,8 @@ from rupture.pictures.frames_figure import field_frames
 from rupture.pictures.layers import SHARES, area_rings
 from rupture.pictures.map_figure import field_total
 from rupture.pictures.scene import Scene, credible_level
+
+Column = Sequence[Any] | NDArray[Any]
 
 
 @dataclass(frozen=True)
@@ -31,7 +34,7 @@ class Table:
     """
 
     name: str
-    columns: dict[str, Sequence[Any]]
+    columns: Mapping[str, Column]
 
     def write(self, path: Path) -> Path:
         """Write as CSV; numbers with seven digits, missing ones empty."""
@@ -90,7 +93,7 @@ def _track_tables(scene: Scene) -> list[Table]:
     track = scene.result.track
     if track is None:
         return []
-    columns: dict[str, Sequence[Any]] = {"source_time_s": scene.source_time}
+    columns: dict[str, Column] = {"source_time_s": scene.source_time}
     for name, unit in (("longitude", "deg"), ("latitude", "deg"), ("east", "km"), ("north", "km")):
         columns[f"{name}_{unit}"] = track[name].values
     for name in ("covariance_ee", "covariance_nn", "covariance_en"):
@@ -126,7 +129,7 @@ def direction_tables(scene: Scene, index: int) -> list[Table]:
     axis = direction["back_azimuth"].values.astype(float)
     share = np.asarray(direction["probability"].values[index], float)
     interval = posterior_interval(scene, index)
-    curves: dict[str, Sequence[Any]] = {
+    curves: dict[str, Column] = {
         "seconds_after_origin": time,
         "back_azimuth_deg": interval[:, 0] % 360,
         "back_azimuth_p05_deg": interval[:, 1] % 360,
@@ -156,7 +159,7 @@ def along_tables(scene: Scene) -> list[Table]:
         "along_km": np.tile(along, scene.source_time.size),
         "probability": share.ravel(),
     }
-    front: dict[str, Sequence[Any]] = {"source_time_s": scene.source_time}
+    front: dict[str, Column] = {"source_time_s": scene.source_time}
     for arm in range(scene.front_km.shape[0]):
         front[f"arm{arm + 1}_km"] = track["front_distance"].values[arm]
     return [Table("", image), Table("front", front)]
@@ -166,7 +169,7 @@ def posterior_tables(scene: Scene) -> list[Table]:
     """All draws of the line-source fit."""
     track = scene.result.track
     assert track is not None
-    columns: dict[str, Sequence[Any]] = {"kind": [str(kind) for kind in track["kind"].values]}
+    columns: dict[str, Column] = {"kind": [str(kind) for kind in track["kind"].values]}
     for k, name in enumerate(track["parameter"].values):
         columns[str(name)] = track["sample"].values[:, k]
     return [Table("", columns)]
@@ -201,6 +204,3 @@ def frames_tables(scene: Scene, field: str) -> list[Table]:
             },
         )
     ]  # fmt: skip
-
-
-TableFunction = Callable[[Scene], list[Table]]

@@ -342,7 +342,7 @@
       height: 170,
       scales: { x: { time: false }, y: { range: (u, low, high) => [0, high * 1.1 || 1] } },
       axes: [axisLook({ label: "source time after origin (s)" }), axisLook({ label: "energy share (1/s)", size: 62 })],
-      series: [{ label: "source time (s)" }, ...names.map((name, i) => ({ label: name, stroke: () => colour(looks[i]), width: 2, dash: dashes(i), paths: uPlot.paths.stepped({ align: 0 }) }))],
+      series: [{ label: "source time (s)" }, ...names.map((name, i) => ({ label: name, stroke: () => colour(looks[i]), width: 2, dash: dashes(i), points: { show: false }, paths: uPlot.paths.stepped({ align: 0 }) }))],
       cursor: { drag: { x: false, y: false } },
       hooks: { draw: [(u) => strokeLine(u, [times[state.frame], u.scales.y.min], [times[state.frame], u.scales.y.max], { stroke: colour("ink"), width: 2 })] },
     }, [times, ...names.map((name) => data.energy[name])]);
