@@ -6,16 +6,16 @@ import importlib
 from typing import Any
 
 _PUBLIC = {
-    "along_figure": "answer_figures",
-    "direction_figure": "direction_figure",
-    "directions_figure": "direction_figure",
+    "along_figure": "answers",
+    "direction_figure": "panels",
+    "directions_figure": "panels",
     "draw_all": "draw",
-    "energy_figure": "answer_figures",
-    "frames_figure": "frames_figure",
-    "kinds_figure": "answer_figures",
+    "energy_figure": "answers",
+    "frames_figure": "frames",
+    "kinds_figure": "answers",
     "make_movie": "movie",
-    "map_figure": "map_figure",
-    "posterior_figure": "posterior_figure",
+    "map_figure": "maps",
+    "posterior_figure": "posteriors",
     "write_report": "report",
 }
 

@@ -10,11 +10,11 @@ from pathlib import Path
 
 import numpy as np
 
-from rupture.pictures.answer_figures import along_figure, energy_figure, kinds_figure
-from rupture.pictures.direction_figure import direction_figure, directions_figure
-from rupture.pictures.frames_figure import frames_figure
-from rupture.pictures.map_figure import map_figure
-from rupture.pictures.posterior_figure import posterior_figure
+from rupture.pictures.answers import along_figure, energy_figure, kinds_figure
+from rupture.pictures.frames import frames_figure
+from rupture.pictures.maps import map_figure
+from rupture.pictures.panels import direction_figure, directions_figure
+from rupture.pictures.posteriors import posterior_figure
 from rupture.pictures.scene import Scene
 from rupture.pictures.style import Picture
 from rupture.pictures.tables import (

@@ -15,10 +15,10 @@ from numpy.typing import NDArray
 from rupture.errors import InputError
 from rupture.pictures import layers
 from rupture.pictures import style as look
-from rupture.pictures.answer_figures import energy_series
+from rupture.pictures.answers import energy_series
 from rupture.pictures.basemap import KM, Extent, draw_graticule, draw_land, draw_locator, draw_scale_bar, projected_axes
 from rupture.pictures.encode import encode_h264, encode_images
-from rupture.pictures.frames_figure import field_frames
+from rupture.pictures.frames import field_frames
 from rupture.pictures.scene import Scene, credible_level
 from rupture.result import Result
 

@@ -11,12 +11,12 @@ import numpy as np
 from numpy.typing import NDArray
 
 from rupture.pictures import layers, style
-from rupture.pictures.answer_figures import energy_series, s_speed_km_s
+from rupture.pictures.answers import energy_series, s_speed_km_s
 from rupture.pictures.basemap import KM, Extent, graticule
 from rupture.pictures.coastlines import local_land
-from rupture.pictures.direction_figure import coherence, predicted_curves, used_spans, window_of_interest
-from rupture.pictures.frames_figure import field_frames
-from rupture.pictures.posterior_figure import SIZES, has_sample, posterior_sample
+from rupture.pictures.frames import field_frames
+from rupture.pictures.panels import coherence, predicted_curves, used_spans, window_of_interest
+from rupture.pictures.posteriors import SIZES, has_sample, posterior_sample
 from rupture.pictures.scene import Scene, credible_level
 
 Array = NDArray[np.float64]

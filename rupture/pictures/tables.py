@@ -11,11 +11,11 @@ from typing import Any
 import numpy as np
 from numpy.typing import NDArray
 
-from rupture.pictures.answer_figures import KINDS, energy_series
-from rupture.pictures.direction_figure import coherence, posterior_interval, predicted_curves
-from rupture.pictures.frames_figure import field_frames
+from rupture.pictures.answers import KINDS, energy_series
+from rupture.pictures.frames import field_frames
 from rupture.pictures.layers import SHARES, area_rings
-from rupture.pictures.map_figure import field_total
+from rupture.pictures.maps import field_total
+from rupture.pictures.panels import coherence, posterior_interval, predicted_curves
 from rupture.pictures.scene import Scene, credible_level
 
 Column = Sequence[Any] | NDArray[Any]
