@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+import itertools
 from dataclasses import dataclass, field
 
 import numpy as np
@@ -22,6 +23,12 @@ SHEAR_SPEED_M_S = 3500.0
 
 LEVEL_BAND_HZ = (0.5, 1.5)
 """Band in which the high-frequency level is set."""
+
+LONGEST_DEFAULT_S = 10.0
+"""A sub-event that lasts longer would smear the front over more than it is to show."""
+
+COUNT_LIMITS = (60, 1500)
+"""Fewer sub-events leave holes along the rupture, more only cost time."""
 
 ZONE_RADIUS_KM = 2.0
 """Radius of the place in which a stationary source radiates."""
@@ -53,7 +60,7 @@ class Arm:
             raise InputError(f"an arm of {self.length_km:g} km has no length; give more than 0 km or leave the arm out")
         steps = self.steps
         starts = [s for s, _ in steps]
-        if starts[0] != 0 or any(b <= a for a, b in zip(starts, starts[1:], strict=False)):
+        if starts[0] != 0 or any(b <= a for a, b in itertools.pairwise(starts)):
             raise InputError(f"speed steps of an arm must start at 0 km and increase; got {starts}")
         if not all(0 < v <= 12 for _, v in steps):
             raise InputError("rupture speeds must be above 0 and at most 12 km/s (give km/s, not m/s)")
@@ -108,7 +115,7 @@ class KinematicSource:
     duration_s
         How long a stationary source radiates; not used when there are arms.
     sub_events
-        How many point sources.
+        How many point sources; by default as many as the stress drop asks for, 60 to 1,500.
     shortest_rise_s, longest_rise_s
         Range of rise times, distributed as sizes of a fractal set. The shortest decides up to which frequency energy is radiated (about
         its inverse). When the longest is None it is the one with which the high-frequency level is that of `stress_drop_mpa`.
@@ -128,7 +135,7 @@ class KinematicSource:
     arms: tuple[Arm, ...] = field(default=())
     width_km: float = 0.0
     duration_s: float = 20.0
-    sub_events: int = 400
+    sub_events: int | None = None
     shortest_rise_s: float = 0.4
     longest_rise_s: float | None = None
     stress_drop_mpa: float = 5.0
@@ -138,7 +145,7 @@ class KinematicSource:
     def __post_init__(self) -> None:
         if len(self.arms) > 2:
             raise InputError(f"a rupture has at most two arms, not {len(self.arms)}")
-        if self.sub_events < 20:
+        if self.sub_events is not None and self.sub_events < 20:
             raise InputError(f"{self.sub_events} sub-events cannot make a rupture; give at least 20")
         if not self.shortest_rise_s > 0 or (self.longest_rise_s or np.inf) <= self.shortest_rise_s:
             raise InputError("rise times must be positive and shortest_rise_s below longest_rise_s")
@@ -210,7 +217,7 @@ def make_sub_events(source: KinematicSource, seed: int) -> SubEvents:
         Seed of all random numbers; the same seed gives the same sub-events.
     """
     rng = np.random.default_rng(seed)
-    count = source.sub_events
+    count = source.sub_events or _default_count(source)
     quantile = (rng.permutation(count) + rng.random(count)) / count
     slip = np.exp(source.slip_spread * rng.standard_normal(count))
     size = _fractal_sizes(quantile, _size_ratio(source, quantile, slip))
@@ -319,6 +326,20 @@ def _size_ratio(source: KinematicSource, quantile: NDArray[np.float64], slip: ND
         else:
             high = middle
     return float(np.sqrt(low * high))
+
+
+def _default_count(source: KinematicSource) -> int:
+    """Return the number of sub-events with which the high-frequency level fits when the longest lasts 0.3 of the whole.
+
+    The level of an incoherent sum of equal parts goes as the square root of their number, inverted, and a corner as the root of its level.
+    """
+    trial = 400
+    longest = source.longest_rise_s or min(max(0.3 * source.radiated_s, 2 * source.shortest_rise_s), LONGEST_DEFAULT_S)
+    quantile = (np.arange(trial) + 0.5) / trial
+    size = _fractal_sizes(quantile, longest / source.shortest_rise_s)
+    corner = _level_corner_hz(size**3 * source.moment_nm / (size**3).sum(), source.shortest_rise_s * size)
+    wanted = brune_corner_hz(source.moment_nm, source.stress_drop_mpa * 1e6, SHEAR_SPEED_M_S)
+    return int(np.clip(trial * (corner / wanted) ** 4, *COUNT_LIMITS))
 
 
 def _level_corner_hz(moment_nm: NDArray[np.float64], rise_time_s: NDArray[np.float64]) -> float:
