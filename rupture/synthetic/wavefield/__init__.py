@@ -6,14 +6,14 @@ from importlib import import_module
 from typing import TYPE_CHECKING, Any
 
 if TYPE_CHECKING:
-    from rupture.synthetic.wavefield.greens import GreensTable, Motion, greens, greens_at_depths
+    from rupture.synthetic.wavefield.tables import GreensTable, Motion, greens, greens_at_depths
     from rupture.synthetic.wavefield.mechanism import ELEMENTS, double_couple, element_weights, to_east_north
     from rupture.synthetic.wavefield.records import raised_cosine_spectrum, wavefield_records
     from rupture.synthetic.wavefield.sampling import FrequencyPlan
     from rupture.synthetic.wavefield.store import GreensStore
 
 _HOME = {
-    "GreensTable": "greens", "Motion": "greens", "greens": "greens", "greens_at_depths": "greens",
+    "GreensTable": "tables", "Motion": "tables", "greens": "tables", "greens_at_depths": "tables",
     "ELEMENTS": "mechanism", "double_couple": "mechanism", "element_weights": "mechanism", "to_east_north": "mechanism",
     "raised_cosine_spectrum": "records", "wavefield_records": "records",
     "FrequencyPlan": "sampling", "GreensStore": "store",

@@ -13,7 +13,7 @@ from rupture.errors import InputError
 from rupture.geodesy import distance_azimuth
 from rupture.synthetic.engine import Engine, Receivers, Sampling, SubEvents
 from rupture.synthetic.wavefield.gather import NODES, add_block, lagrange
-from rupture.synthetic.wavefield.greens import Motion
+from rupture.synthetic.wavefield.tables import Motion
 from rupture.synthetic.wavefield.integration import Block, Report, integrate
 from rupture.synthetic.wavefield.mechanism import double_couple, element_weights
 from rupture.synthetic.wavefield.sampling import FrequencyPlan, medium, wavenumber_counts, wavenumber_step

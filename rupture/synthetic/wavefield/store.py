@@ -13,7 +13,7 @@ from numpy.typing import ArrayLike, NDArray
 
 from rupture.earth.layers import LayeredModel
 from rupture.errors import InputError
-from rupture.synthetic.wavefield.greens import CODE_VERSION, GreensTable, checked_distances, greens
+from rupture.synthetic.wavefield.tables import CODE_VERSION, GreensTable, checked_distances, greens
 from rupture.synthetic.wavefield.integration import Report
 from rupture.synthetic.wavefield.sampling import FrequencyPlan
 
