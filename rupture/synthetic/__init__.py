@@ -3,7 +3,16 @@
 from __future__ import annotations
 
 from importlib import import_module
-from typing import Any
+from typing import TYPE_CHECKING, Any
+
+if TYPE_CHECKING:
+    from rupture.synthetic.coda import CodaSettings, ScatteringEngine
+    from rupture.synthetic.engine import Engine, Receivers, Sampling, SubEvents
+    from rupture.synthetic.noise import RotationSensor, TranslationSensor, coloured_noise
+    from rupture.synthetic.ray import RayEngine, ray_records
+    from rupture.synthetic.scenario import Scenario, demo_scenario, read_scenario, ready_scenarios
+    from rupture.synthetic.simulate import SimulatedFiles, ground_motion, simulate
+    from rupture.synthetic.source import Arm, KinematicSource, make_sub_events
 
 _HOMES = {
     "SubEvents": "engine",
@@ -29,7 +38,29 @@ _HOMES = {
     "simulate": "simulate",
 }
 
-__all__ = sorted(_HOMES)
+__all__ = [
+    "Arm",
+    "CodaSettings",
+    "Engine",
+    "KinematicSource",
+    "RayEngine",
+    "Receivers",
+    "RotationSensor",
+    "Sampling",
+    "ScatteringEngine",
+    "Scenario",
+    "SimulatedFiles",
+    "SubEvents",
+    "TranslationSensor",
+    "coloured_noise",
+    "demo_scenario",
+    "ground_motion",
+    "make_sub_events",
+    "ray_records",
+    "read_scenario",
+    "ready_scenarios",
+    "simulate",
+]
 
 
 def __getattr__(name: str) -> Any:

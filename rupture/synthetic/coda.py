@@ -5,6 +5,7 @@ from __future__ import annotations
 from dataclasses import dataclass
 
 import numpy as np
+from numba import njit
 from numpy.typing import NDArray
 
 from rupture.conventions import ACCELERATION, KM
@@ -13,6 +14,9 @@ from rupture.errors import InputError
 from rupture.geodesy import distance_azimuth
 from rupture.synthetic.engine import Engine, Receivers, Sampling, SubEvents
 from rupture.synthetic.interfaces import free_surface_sv
+
+SAME_PLACE_M = 2000.0
+"""Receivers nearer than this to each other are one array and share their scattered waves."""
 
 
 @dataclass(frozen=True)
@@ -71,6 +75,7 @@ class ScatteringEngine:
     ) -> NDArray[np.float64]:
         """Return records with coda, shape (receivers, 6, samples); see `rupture.synthetic.engine.Engine`."""
         longitude, latitude = np.asarray(receivers.longitude_deg, float), np.asarray(receivers.latitude_deg, float)
+        places = group_places(longitude, latitude)
         total = np.zeros((longitude.size, 6, sampling.samples))
         group = np.floor(sources.time_s / self.settings.group_s).astype(int)
         for number in np.unique(group):
@@ -84,52 +89,110 @@ class ScatteringEngine:
             _, _, back_azimuth = distance_azimuth(
                 part.longitude_deg[heaviest], part.latitude_deg[heaviest], longitude, latitude
             )
-            for r in range(longitude.size):
-                rng = np.random.default_rng((self.seed, int(number), r))
-                total[r] += scatter(direct[r], float(back_azimuth[r]), model, sampling.step_s, self.settings, rng)
+            for members, offset_m in places:
+                # Sensors of one array see the same scattered waves, each at its own time.
+                rng = np.random.default_rng((self.seed, int(number), int(members[0])))
+                total[members] += scatter(
+                    direct[members[0]], float(back_azimuth[members[0]]), offset_m, model, sampling, self.settings, rng
+                )
         return total
 
 
 def scatter(
     direct: NDArray[np.float64],
     back_azimuth_rad: float,
+    offset_m: NDArray[np.float64],
     model: LayeredModel,
-    step_s: float,
+    sampling: Sampling,
     settings: CodaSettings,
     rng: np.random.Generator,
 ) -> NDArray[np.float64]:
-    """Return the coda that follows six-component records of one site, shape (6, samples).
+    """Return the coda that follows six-component records of one place, shape (sensors, 6, samples).
 
     Parameters
     ----------
     direct
         Unscattered records, shape (6, samples).
     back_azimuth_rad
-        Direction of the source at the site.
+        Direction of the source at the place.
+    offset_m
+        East and north of each sensor from where `direct` was recorded, shape (sensors, 2).
     model
         The Earth, for the speeds at the surface.
-    step_s
-        Sampling interval in s.
+    sampling
+        Time axis and band of the records.
     settings, rng
         Amount and shape of the coda; source of random numbers.
     """
     samples = direct.shape[1]
     length = 2 * samples
-    omega = 2 * np.pi * np.fft.rfftfreq(length, step_s)
-    inputs = np.fft.rfft(direct[ACCELERATION], length, axis=1)
+    step_hz = 1.0 / (length * sampling.step_s)
+    band = min(int(sampling.high_hz / step_hz) + 1, length // 2)
+    inputs = np.fft.rfft(direct[ACCELERATION], length, axis=1)[:, :band]
     count = settings.waves
     delay = rng.exponential(settings.decay_s, count)
     forward = rng.random(count) < settings.forward_share
     around = back_azimuth_rad + np.radians(settings.forward_spread_deg) * rng.standard_normal(count)
     azimuth = np.where(forward, around, 2 * np.pi * rng.random(count))
-    transfer = plane_s_waves(azimuth, rng.random(count), rng.standard_normal((count, 2, 3)), model)
-    # transfer (waves, 6, 3) and delays make one filter from three to six components.
-    turn = np.exp(-1j * omega[:, None] * delay[None, :])
-    filters = (turn @ transfer.reshape(count, 18)).reshape(omega.size, 6, 3)
-    coda = np.fft.irfft(np.einsum("fci,if->cf", filters, inputs), length, axis=1)[:, :samples]
-    have = np.sum(coda[ACCELERATION] ** 2)
+    slowness, transfer = plane_s_waves(azimuth, rng.random(count), rng.standard_normal((count, 2, 3)), model)
+    late = delay + offset_m @ slowness
+    spectra = _filter_waves(late, transfer, inputs, step_hz)
+    full = np.zeros((*spectra.shape[:2], length // 2 + 1), complex)
+    full[..., :band] = spectra
+    coda = np.fft.irfft(full, length, axis=-1)[..., :samples]
+    have = np.sum(coda[0, ACCELERATION] ** 2)
     want = settings.energy_ratio * np.sum(direct[ACCELERATION] ** 2)
     return coda * np.sqrt(want / have) if have > 0 else coda
+
+
+@njit(cache=True, error_model="numpy")
+def _filter_waves(
+    late_s: NDArray[np.float64],
+    transfer: NDArray[np.complex128],
+    inputs: NDArray[np.complex128],
+    step_hz: float,
+) -> NDArray[np.complex128]:
+    """Add delayed waves made of three inputs: late (sensors, waves), transfer (waves, 6, 3), inputs (3, frequencies)."""
+    sensors, waves = late_s.shape
+    band = inputs.shape[1]
+    out = np.zeros((sensors, 6, band), np.complex128)
+    for sensor in range(sensors):
+        filters = np.zeros((6, 3, band), np.complex128)
+        line = np.empty(band, np.complex128)
+        for wave in range(waves):
+            turn = np.exp(-2j * np.pi * step_hz * late_s[sensor, wave])
+            now = complex(1.0, 0.0)
+            for k in range(band):
+                line[k] = now
+                now *= turn
+            for c in range(6):
+                for i in range(3):
+                    weight = transfer[wave, c, i]
+                    for k in range(band):
+                        filters[c, i, k] += weight * line[k]
+        for c in range(6):
+            for i in range(3):
+                for k in range(band):
+                    out[sensor, c, k] += filters[c, i, k] * inputs[i, k]
+    return out
+
+
+def group_places(
+    longitude_deg: NDArray[np.float64], latitude_deg: NDArray[np.float64]
+) -> list[tuple[NDArray[np.int64], NDArray[np.float64]]]:
+    """Return receivers that stand together: their numbers and, in m, east and north from the first of them."""
+    free = np.ones(longitude_deg.size, bool)
+    places = []
+    for r in range(longitude_deg.size):
+        if not free[r]:
+            continue
+        distance, azimuth, _ = distance_azimuth(longitude_deg[r], latitude_deg[r], longitude_deg, latitude_deg)
+        members = np.flatnonzero(free & (distance < SAME_PLACE_M))
+        free[members] = False
+        members = np.concatenate([[r], members[members != r]])
+        offset = distance[members, None] * np.stack([np.sin(azimuth[members]), np.cos(azimuth[members])], axis=1)
+        places.append((members, offset))
+    return places
 
 
 def plane_s_waves(
@@ -137,8 +200,8 @@ def plane_s_waves(
     share: NDArray[np.float64],
     polarisation: NDArray[np.float64],
     model: LayeredModel,
-) -> NDArray[np.complex128]:
-    """Return six-component amplitudes of plane S waves at the free surface, shape (waves, 6, inputs).
+) -> tuple[NDArray[np.float64], NDArray[np.complex128]]:
+    """Return slowness vectors and six-component amplitudes of plane S waves at the free surface.
 
     Parameters
     ----------
@@ -150,6 +213,13 @@ def plane_s_waves(
         SV and SH amplitude for each input, shape (waves, 2, inputs).
     model
         The Earth; its first layer counts.
+
+    Returns
+    -------
+    slowness
+        East and north in s/m, shape (2, waves).
+    amplitude
+        Complex, for exp(+i omega t), shape (waves, 6, inputs).
     """
     vp, vs = float(model.vp_km_s[0]) * KM, float(model.vs_km_s[0]) * KM
     slowness = np.sqrt(share) / vs
@@ -161,4 +231,5 @@ def plane_s_waves(
     sine, cosine = np.sin(back_azimuth_rad + np.pi)[:, None], np.cos(back_azimuth_rad + np.pi)[:, None]
     east, north = radial * sine + transverse * cosine, radial * cosine - transverse * sine
     p_east, p_north = slowness[:, None] * sine, slowness[:, None] * cosine
-    return np.stack([east, north, up, -p_north * up, p_east * up, -0.5 * (p_east * north - p_north * east)], axis=1)
+    six = np.stack([east, north, up, -p_north * up, p_east * up, -0.5 * (p_east * north - p_north * east)], axis=1)
+    return np.stack([p_east[:, 0], p_north[:, 0]]), np.ascontiguousarray(six)

@@ -17,7 +17,7 @@ Sensor = Literal["translation", "rotation"]
 class _Fault(BaseModel):
     model_config = ConfigDict(extra="forbid", strict=True, frozen=True)
 
-    element: int | None = Field(None, ge=1)
+    element: int | None = Field(default=None, ge=1)
     """Which sensor of an array, counted from 1; all when left out."""
 
 
@@ -90,9 +90,7 @@ class Dead(_Fault):
     channels: tuple[Channel, ...]
 
 
-Fault = Annotated[
-    Turned | Reversed | Swapped | Late | Gain | Clipped | Gappy | Dead, Field(discriminator="kind")
-]
+Fault = Annotated[Turned | Reversed | Swapped | Late | Gain | Clipped | Gappy | Dead, Field(discriminator="kind")]
 
 
 def turn_horizontals(records: NDArray[np.float64], east: int, angle_rad: float) -> None:
@@ -145,5 +143,3 @@ def gaps_s(faults: tuple[Fault, ...], component: int) -> list[tuple[float, float
 def of_element(faults: tuple[Fault, ...], element: int | None) -> tuple[Fault, ...]:
     """Return the faults that concern one sensor of an array (or the only sensor of a site)."""
     return tuple(f for f in faults if f.element is None or f.element == element)
-
-

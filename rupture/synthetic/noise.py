@@ -136,7 +136,7 @@ def coloured_noise(spectrum: Spectrum, samples: int, step_s: float, rng: np.rand
         Source of random numbers; the same state gives the same noise.
     """
     length = 2 * samples
-    frequency = np.fft.rfftfreq(length, step_s)
+    frequency = np.asarray(np.fft.rfftfreq(length, step_s), np.float64)
     density = np.zeros(frequency.size)
     density[1:] = spectrum(frequency[1:])
     if not (np.isfinite(density).all() and (density >= 0).all()):

@@ -24,7 +24,10 @@ REFERENCE_HZ = 1.0
 PASS_SHARE = 0.8
 """Up to this share of the upper frequency the pass band is flat; from there it falls smoothly to zero."""
 
-_DECAY_LEVELS = 400
+MARGIN_S = 5.0
+"""Room in s before the first and after the last arrival, for the tails of phase-shifted waves."""
+
+_DECAY_LEVELS = 200
 _NEAREST_M = 1.0
 
 
@@ -75,11 +78,14 @@ class RayEngine:
         Whether waves refracted along those interfaces (Pn, Sn and the like) are added.
     least_contrast
         Interfaces at which the S speed grows by less than this share are not mirrors.
+    least_amplitude
+        Direct and reflected rays weaker than this share of the strongest of their pair are left out.
     """
 
     reflections: bool = True
     head_waves: bool = True
     least_contrast: float = 0.05
+    least_amplitude: float = 0.005
 
     def trace(self, sources: SubEvents, receivers: Receivers, model: LayeredModel) -> Rays:
         """Trace the rays of every pair of sub-event and receiver.
@@ -150,40 +156,44 @@ class RayEngine:
         check_sampling(sampling)
         rays = self.trace(sources, receivers, model)
         arrival = rays.time_s + sources.time_s[None, :, None]
-        end = sampling.start_s + sampling.samples * sampling.step_s
-        margin = 8.0 / sampling.high_hz
-        heard = rays.exists & (arrival < end + margin)
+        weight = six_components(rays)
+        size = np.abs(weight[..., :3]).max(axis=-1) * ~rays.head
+        heard = (
+            rays.exists
+            & (arrival < sampling.start_s + sampling.samples * sampling.step_s)
+            & (rays.head | (size >= self.least_amplitude * size.max(axis=-1, keepdims=True)))
+        )
+        out = np.zeros((rays.distance_m.shape[0], 6, sampling.samples))
         if not heard.any():
-            return np.zeros((distance_count(rays), 6, sampling.samples))
-        # The period holds every heard arrival, so that nothing wraps around into the window that is asked for.
-        longest = float(np.max(sources.rise_time_s))
-        early = max(0, int(np.ceil((sampling.start_s - arrival[heard].min() + margin) / sampling.step_s)))
-        period = _fast_length(early + sampling.samples + int(np.ceil((longest + 2 * margin) / sampling.step_s)))
-        start = sampling.start_s - early * sampling.step_s
+            return out
+        # A period of its own that holds every arrival, so that nothing wraps around and quiet times cost nothing.
+        margin = MARGIN_S + 8.0 / sampling.high_hz
+        early = int(np.floor((arrival[heard].min() - margin - sampling.start_s) / sampling.step_s))
+        last = arrival[heard].max() + float(np.max(sources.rise_time_s)) + margin - sampling.start_s
+        period = _fast_length(int(np.ceil(last / sampling.step_s)) - early)
         step_hz = 1.0 / (period * sampling.step_s)
-        frequency = step_hz * np.arange(1, int(sampling.high_hz / step_hz) + 1)
+        frequency = np.asarray(step_hz * np.arange(1, int(sampling.high_hz / step_hz) + 1), np.float64)
         source = (
             moment_rate_spectrum(frequency, sources.moment_nm, sources.rise_time_s)
             * pass_band(frequency, sampling.high_hz)
             * (-((2 * np.pi * frequency) ** 2))
         )
         loss_step = max(float(rays.loss_s.max()), 1e-6) / (_DECAY_LEVELS - 2)
-        decay = attenuation(frequency, loss_step * np.arange(_DECAY_LEVELS))
-        weight = six_components(rays) * heard[..., None]
-        spectra = sum_spectra(arrival - start, rays.loss_s, weight, rays.head, source, decay, loss_step, step_hz)
+        decay = attenuation(frequency, np.asarray(loss_step * np.arange(_DECAY_LEVELS), np.float64))
+        after = arrival - sampling.start_s - early * sampling.step_s
+        spectra = sum_spectra(
+            after, rays.loss_s, weight * heard[..., None], rays.head, source, decay, loss_step, step_hz
+        )
         full = np.zeros((*spectra.shape[:2], period // 2 + 1), np.complex128)
         full[..., 1 : frequency.size + 1] = spectra
         series = np.fft.irfft(full, period, axis=-1) / sampling.step_s
-        return np.ascontiguousarray(series[..., early : early + sampling.samples])
+        first, stop = max(early, 0), min(early + period, sampling.samples)
+        out[..., first:stop] = series[..., first - early : stop - early]
+        return out
 
 
 ray_records = RayEngine()
 """The ray engine with its defaults: direct waves, reflections from below and head waves."""
-
-
-def distance_count(rays: Rays) -> int:
-    """Return the number of receivers."""
-    return rays.distance_m.shape[0]
 
 
 def check_sampling(sampling: Sampling) -> None:

@@ -3,13 +3,12 @@
 from __future__ import annotations
 
 import tomllib
-from datetime import UTC, datetime
 from importlib import resources
 from pathlib import Path
 from typing import Any, Literal
 
 import numpy as np
-from pydantic import BaseModel, ConfigDict, Field, ValidationError, field_validator, model_validator
+from pydantic import Field, ValidationError, model_validator
 
 from rupture.earth.layers import LayeredModel
 from rupture.errors import InputError
@@ -17,162 +16,31 @@ from rupture.event import Event
 from rupture.geodesy import distance_azimuth
 from rupture.synthetic.coda import CodaSettings
 from rupture.synthetic.engine import Sampling
-from rupture.synthetic.faults import Fault
-from rupture.synthetic.noise import RotationSensor, TranslationSensor
 from rupture.synthetic.scaling import Scaling, rupture_size_km
 from rupture.synthetic.scenario_errors import sentences
+from rupture.synthetic.scenario_tables import (
+    CodaTable,
+    EventTable,
+    LayerTable,
+    NoiseTable,
+    RecordTable,
+    RuptureTable,
+    SiteTable,
+    Table,
+)
 from rupture.synthetic.source import Arm, KinematicSource
 
 SLOWEST_KM_S = 2.5
 """Records last by default until waves of this speed have come from the end of the rupture."""
 
 
-class _Table(BaseModel):
-    model_config = ConfigDict(extra="forbid", strict=True, frozen=True)
-
-
-class EventTable(_Table):
-    """The earthquake."""
-
-    origin_time: datetime
-    longitude_deg: float = Field(ge=-360, le=360)
-    latitude_deg: float = Field(ge=-90, le=90)
-    depth_km: float = Field(gt=0, le=100)
-    magnitude: float = Field(ge=4, le=9.6)
-    strike_deg: float
-    dip_deg: float = Field(gt=0, le=90)
-    rake_deg: float = Field(ge=-180, le=180)
-
-    @field_validator("origin_time")
-    @classmethod
-    def _utc(cls, value: datetime) -> datetime:
-        # A TOML time without offset is taken as UTC, as times of earthquakes are.
-        return value.replace(tzinfo=UTC) if value.tzinfo is None else value.astimezone(UTC)
-
-
-class ArmTable(_Table):
-    """One arm of the rupture; what is left out follows from strike and magnitude."""
-
-    azimuth_deg: float | None = None
-    length_km: float | None = Field(None, gt=0)
-    speed_km_s: float | tuple[tuple[float, float], ...] = 2.8
-    share: float | None = Field(None, gt=0, le=1)
-
-
-class RuptureTable(_Table):
-    """How the rupture runs; without arms it stays in one place."""
-
-    arm: tuple[ArmTable, ...] = Field((), max_length=2)
-    shape: Literal["line", "plane"] = "line"
-    width_km: float | None = Field(None, gt=0)
-    scaling: Literal["wells-coppersmith-1994", "leonard-2010"] = "wells-coppersmith-1994"
-    duration_s: float = Field(20.0, gt=0)
-    sub_events: int | None = Field(None, ge=20)
-    shortest_rise_s: float = Field(0.4, gt=0)
-    longest_rise_s: float | None = Field(None, gt=0)
-    stress_drop_mpa: float = Field(5.0, gt=0)
-    slip_spread: float = Field(0.4, ge=0)
-    front_spread_s: float = Field(0.2, ge=0)
-
-
-class LayerTable(_Table):
-    """One layer of the Earth."""
-
-    top_km: float = Field(ge=0)
-    vp_km_s: float = Field(gt=0)
-    vs_km_s: float = Field(gt=0)
-    density_kg_m3: float = Field(gt=0)
-    qp: float = Field(gt=0)
-    qs: float = Field(gt=0)
-
-
-class RecordTable(_Table):
-    """The time axis of the records."""
-
-    before_s: float = Field(90.0, ge=0)
-    length_s: float | None = Field(None, gt=0)
-    rate_hz: float = Field(20.0, gt=1, lt=1000)
-    high_hz: float | None = Field(None, gt=0)
-
-
-class CodaTable(_Table):
-    """Scattered waves; an energy ratio of 0 switches them off."""
-
-    energy_ratio: float = Field(0.3, ge=0)
-    decay_s: float = Field(8.0, gt=0)
-    forward_share: float = Field(0.5, ge=0, le=1)
-    forward_spread_deg: float = Field(25.0, gt=0)
-    waves: int = Field(80, ge=10)
-    group_s: float = Field(4.0, gt=0)
-
-
-class NoiseTable(_Table):
-    """Noise of the ground: 0 is Peterson's (1993) low model, 1 the high one; false for no noise at all."""
-
-    on: bool = True
-    ground_level: float = Field(0.6, ge=0, le=1)
-
-
-class ArrayTable(_Table):
-    """A small array in place of a rotation sensor."""
-
-    sensors: int = Field(ge=3, le=30)
-    aperture_m: float = Field(gt=0)
-
-
-class SiteTable(_Table):
-    """One site; its place as longitude and latitude, or as distance and azimuth from the epicentre."""
-
-    code: str = Field(pattern=r"^[A-Z0-9]{1,5}$")
-    name: str = ""
-    longitude_deg: float | None = Field(None, ge=-360, le=360)
-    latitude_deg: float | None = Field(None, ge=-90, le=90)
-    distance_km: float | None = Field(None, gt=0)
-    azimuth_deg: float | None = None
-    elevation_m: float = 0.0
-    components: str = "6C"
-    translation: Literal["accelerometer", "broadband", "low-gain-broadband"] = "accelerometer"
-    rotation: Literal[
-        "portable-fibre-optic", "portable-fibre-optic-early", "large-ring-laser", "array-derived"
-    ] = "portable-fibre-optic"
-    sensor_azimuth_deg: float = 0.0
-    array: ArrayTable | None = None
-    fault: tuple[Fault, ...] = ()
-
-    @field_validator("components")
-    @classmethod
-    def _known(cls, value: str) -> str:
-        parse_components(value)
-        return value
-
-    @model_validator(mode="after")
-    def _placed(self) -> SiteTable:
-        by_degrees = self.longitude_deg is not None and self.latitude_deg is not None
-        by_distance = self.distance_km is not None and self.azimuth_deg is not None
-        if by_degrees == by_distance:
-            raise ValueError("give either longitude_deg and latitude_deg, or distance_km and azimuth_deg")
-        if self.array is not None and not parse_components(self.components) <= {"acc_E", "acc_N", "acc_Z"}:
-            raise ValueError("the sensors of an array are translation sensors: components 3C or Z")
-        return self
-
-    @property
-    def translation_sensor(self) -> TranslationSensor:
-        """Class of the translation sensor."""
-        return TranslationSensor(self.translation)
-
-    @property
-    def rotation_sensor(self) -> RotationSensor:
-        """Class of the rotation sensor."""
-        return RotationSensor(self.rotation)
-
-
-class Scenario(_Table):
+class Scenario(Table):
     """A whole scenario; see `rupture template simulate` for every key with its meaning."""
 
     name: str
     engine: Literal["ray", "wavefield"] = "ray"
-    seed: int = Field(1, ge=0)
-    network: str = Field("XX", pattern=r"^[A-Z0-9]{1,2}$")
+    seed: int = Field(default=1, ge=0)
+    network: str = Field(default="XX", pattern=r"^[A-Z0-9]{1,2}$")
     earth: str | None = None
     event: EventTable
     rupture: RuptureTable = RuptureTable()
@@ -185,7 +53,7 @@ class Scenario(_Table):
     @model_validator(mode="after")
     def _whole(self) -> Scenario:
         if (self.earth is None) == (not self.layer):
-            raise ValueError("give the Earth once: either earth = \"...\" or [[layer]] tables")
+            raise ValueError('give the Earth once: either earth = "..." or [[layer]] tables')
         codes = [s.code for s in self.site]
         twice = sorted({c for c in codes if codes.count(c) > 1})
         if twice:
@@ -241,28 +109,6 @@ class Scenario(_Table):
         length = record.length_s or 30 * np.ceil((source.radiated_s + reach / SLOWEST_KM_S + 60) / 30)
         samples = int(np.ceil((record.before_s + length) * record.rate_hz))
         return Sampling(-record.before_s, 1 / record.rate_hz, samples, record.high_hz or 0.3 * record.rate_hz)
-
-
-def parse_components(text: str) -> set[str]:
-    """Return the components that a short form stands for: 6C, 3C, Z, rot3, rotH, rotZ, joined by +.
-
-    Examples
-    --------
-    >>> sorted(parse_components("Z+rotH"))
-    ['acc_Z', 'rot_E', 'rot_N']
-    """
-    known = {
-        "6C": {"acc_E", "acc_N", "acc_Z", "rot_E", "rot_N", "rot_Z"},
-        "3C": {"acc_E", "acc_N", "acc_Z"},
-        "Z": {"acc_Z"},
-        "rot3": {"rot_E", "rot_N", "rot_Z"},
-        "rotH": {"rot_E", "rot_N"},
-        "rotZ": {"rot_Z"},
-    }
-    parts = text.split("+")
-    if unknown := [p for p in parts if p not in known]:
-        raise ValueError(f"unknown components '{unknown[0]}' (known: {', '.join(known)}, joined by +)")
-    return set().union(*(known[p] for p in parts))
 
 
 def read_scenario(path: str | Path, **changes: Any) -> Scenario:

@@ -133,7 +133,7 @@ def to_counts(motion: NDArray[np.float64], step_s: float, response: Response) ->
 
         # Zeros in front: the sensor is at rest; its long period needs room at the end.
         length = next_fast_len(motion.size + int(600 / step_s), real=True)
-        frequency = np.fft.rfftfreq(length, step_s)
+        frequency = np.asarray(np.fft.rfftfreq(length, step_s), np.float64)
         spectrum = np.fft.rfft(motion, length)
         spectrum[1:] *= response.shape(frequency[1:]) / (2j * np.pi * frequency[1:])
         spectrum[0] = 0.0

@@ -3,6 +3,7 @@
 from __future__ import annotations
 
 import json
+import zlib
 from dataclasses import asdict, dataclass
 from datetime import timedelta
 from pathlib import Path
@@ -99,7 +100,7 @@ def ground_motion(scenario: Scenario, progress: Progress | None = None) -> Groun
     return GroundMotion(stations, sources, sampling, records)
 
 
-def noise_at(station: Station, scenario: Scenario, samples: int, step_s: float, number: int) -> NDArray[np.float64]:
+def noise_at(station: Station, scenario: Scenario, samples: int, step_s: float) -> NDArray[np.float64]:
     """Return noise of ground and sensors of one station, shape (6, samples); zero when the scenario's noise is off.
 
     Parameters
@@ -108,8 +109,6 @@ def noise_at(station: Station, scenario: Scenario, samples: int, step_s: float, 
         Where, and how much.
     samples, step_s
         Length and sampling interval.
-    number
-        Number of the station, which goes into the seed.
     """
     out = np.zeros((len(COMPONENTS), samples))
     if not scenario.noise.on:
@@ -117,14 +116,16 @@ def noise_at(station: Station, scenario: Scenario, samples: int, step_s: float, 
     level = scenario.noise.ground_level
     site = station.site
     for row in range(len(COMPONENTS)):
-        rng = np.random.default_rng((scenario.seed, 1, number, row))
         ground = ground_acceleration(level) if row < ROT_E else ground_rotation(level)
         own = (
             translation_self_noise(site.translation_sensor)
             if row < ROT_E
             else rotation_self_noise(site.rotation_sensor)
         )
-        out[row] = coloured_noise(lambda f, g=ground, o=own: g(f) + o(f), samples, step_s, rng)  # type: ignore[misc]
+        # Ambient noise has wavelengths far beyond an array's aperture: its sensors share it, self-noise is each one's own.
+        place, vault = (zlib.crc32(text.encode()) for text in (site.code, station.code))
+        out[row] = coloured_noise(ground, samples, step_s, np.random.default_rng((scenario.seed, 1, place, row)))
+        out[row] += coloured_noise(own, samples, step_s, np.random.default_rng((scenario.seed, 2, vault, row)))
     return out
 
 
@@ -184,11 +185,16 @@ def simulate(
         names = []
         with progress.stage("miniSEED, StationXML, QuakeML") as report:
             for number, (station, motion) in enumerate(zip(ground.stations, ground.records, strict=True)):
-                noise = noise_at(station, scenario, sampling.samples, sampling.step_s, number)
+                noise = noise_at(station, scenario, sampling.samples, sampling.step_s)
                 counts = station_counts(station, motion, noise, sampling.step_s)
                 names.append(f"{station.network}.{station.code}.mseed")
                 write_records(
-                    scratch / "records" / names[-1], station, counts, event.origin_time, sampling.start_s, sampling.step_s
+                    scratch / "records" / names[-1],
+                    station,
+                    counts,
+                    event.origin_time,
+                    sampling.start_s,
+                    sampling.step_s,
                 )
                 report(number + 1, len(ground.stations))
             day = timedelta(days=1)

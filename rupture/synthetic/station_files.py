@@ -11,6 +11,7 @@ import numpy as np
 from numpy.typing import NDArray
 
 from rupture import __version__
+from rupture.errors import InputError
 from rupture.event import Event
 from rupture.synthetic.faults import delay_s, gaps_s
 from rupture.synthetic.scaling import moment_from_magnitude
@@ -98,9 +99,18 @@ def write_inventory(path: Path, stations: Sequence[Station], rate_hz: float, sta
             )
             channels.append(channel)
         members.append(
-            XmlStation(station.code, site=Site(name=station.name), channels=channels, creation_date=span["start_date"], **place, **span)
+            XmlStation(
+                station.code,
+                site=Site(name=station.name),
+                channels=channels,
+                creation_date=span["start_date"],
+                **place,
+                **span,
+            )
         )
-    network = Network(stations[0].network, stations=members, description="invented network of a synthetic earthquake", **span)
+    network = Network(
+        stations[0].network, stations=members, description="invented network of a synthetic earthquake", **span
+    )
     inventory = Inventory([network], source=f"rupture-backtrack {__version__}", created=UTCDateTime(start))
     inventory.write(str(path), format="STATIONXML", validate=True)
 
@@ -132,7 +142,8 @@ def write_event(path: Path, event: Event, tensor: NDArray[np.float64]) -> None:
     )
     from obspy.core.event import Event as XmlEvent
 
-    assert event.magnitude is not None and event.mechanism_deg is not None  # a scenario always has both
+    if event.magnitude is None or event.mechanism_deg is None:
+        raise InputError("an event without magnitude or mechanism cannot be written as a synthetic one")
     moment = moment_from_magnitude(event.magnitude)
     stamp = f"{event.origin_time:%Y%m%dT%H%M%S}"
     origin = Origin(
@@ -140,7 +151,10 @@ def write_event(path: Path, event: Event, tensor: NDArray[np.float64]) -> None:
         longitude=event.longitude_deg, latitude=event.latitude_deg, depth=event.depth_km * 1000,
     )  # fmt: skip
     magnitude = Magnitude(
-        resource_id=_resource("magnitude", stamp), mag=event.magnitude, magnitude_type="Mw", origin_id=origin.resource_id
+        resource_id=_resource("magnitude", stamp),
+        mag=event.magnitude,
+        magnitude_type="Mw",
+        origin_id=origin.resource_id,
     )
     strike, dip, rake = event.mechanism_deg
     (nn, ne, nd), (_, ee, ed), (_, _, dd) = moment * tensor
@@ -196,5 +210,7 @@ def _response(plan: ChannelPlan) -> Any:
         decimation_input_sample_rate=1.0, decimation_factor=1, decimation_offset=0, decimation_delay=0.0,
         decimation_correction=0.0, input_units_description="volt", output_units_description="counts",
     )  # fmt: skip
-    total = InstrumentSensitivity(r.sensitivity, r.frequency_hz, r.unit, "COUNTS", input_units_description=names[r.unit])
+    total = InstrumentSensitivity(
+        r.sensitivity, r.frequency_hz, r.unit, "COUNTS", input_units_description=names[r.unit]
+    )
     return Response(instrument_sensitivity=total, response_stages=[sensor, digitiser])

@@ -6,11 +6,12 @@ from dataclasses import dataclass
 
 import numpy as np
 
-from rupture.conventions import COMPONENTS, ROT_E
+from rupture.conventions import COMPONENTS, KM, ROT_E
 from rupture.errors import InputError
 from rupture.geodesy import destination, distance_azimuth
 from rupture.synthetic.faults import Fault, of_element
-from rupture.synthetic.scenario import Scenario, SiteTable, parse_components
+from rupture.synthetic.scenario import Scenario
+from rupture.synthetic.scenario_tables import SiteTable, parse_components
 from rupture.synthetic.sensors import RESPONSES, Response, band_letter
 
 NAMED_WITHIN_DEG = 5.0
@@ -97,7 +98,9 @@ def make_stations(scenario: Scenario) -> tuple[Station, ...]:
             stations.append(_station(scenario, site, site.code, None, longitude, latitude))
             continue
         if len(site.code) > 3:
-            raise InputError(f"site {site.code}: the code of an array has at most three letters, two digits number its sensors")
+            raise InputError(
+                f"site {site.code}: the code of an array has at most three letters, two digits number its sensors"
+            )
         count = site.array.sensors
         # One sensor in the middle, the others on a ring around it.
         ring = np.concatenate([[0.0], np.full(count - 1, 0.5 * site.array.aperture_m)])
@@ -113,9 +116,9 @@ def make_stations(scenario: Scenario) -> tuple[Station, ...]:
 def _place(scenario: Scenario, site: SiteTable) -> tuple[float, float]:
     if site.longitude_deg is not None and site.latitude_deg is not None:
         return site.longitude_deg, site.latitude_deg
-    assert site.distance_km is not None and site.azimuth_deg is not None  # the scenario has checked it
+    azimuth, distance = site.azimuth_deg or 0.0, site.distance_km or 0.0  # one of the two ways is always given
     longitude, latitude = destination(
-        scenario.event.longitude_deg, scenario.event.latitude_deg, np.radians(site.azimuth_deg), site.distance_km * 1000
+        scenario.event.longitude_deg, scenario.event.latitude_deg, np.radians(azimuth), distance * KM
     )
     return float(longitude), float(latitude)
 
