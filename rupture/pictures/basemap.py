@@ -17,7 +17,7 @@ from rupture.pictures.coastlines import LocalLand, local_land
 
 Array = NDArray[np.float64]
 KM = 1e3
-_STEPS_DEG = (0.01, 0.02, 0.05, 0.1, 0.2, 0.25, 0.5, 1.0, 2.0, 5.0, 10.0, 15.0, 30.0, 45.0)
+_STEPS_DEG = (0.001, 0.002, 0.005, 0.01, 0.02, 0.05, 0.1, 0.2, 0.25, 0.5, 1.0, 2.0, 5.0, 10.0, 15.0, 30.0, 45.0)
 _LABEL_MM = 9.0  # length of the longest usual label of the graticule
 
 
@@ -216,7 +216,7 @@ def _clipped(plane: LocalPlane, extent: Extent, longitude: Any, latitude: Any) -
 
 
 def _degrees(value: float) -> str:
-    return f"{value:.2f}".rstrip("0").rstrip(".")
+    return f"{value:.3f}".rstrip("0").rstrip(".")
 
 
 def longitude_label(longitude_deg: float) -> str:

@@ -59,9 +59,19 @@ def sheets(result: Result) -> list[Sheet]:
     shown = [s for s in range(len(scene.codes)) if np.isfinite(share[s]).any()]
     if len(shown) > 1:
         out.append(Sheet("directions", partial(directions_figure, result), list))
+    taken: set[str] = set()
     for s in shown:
-        name = f"direction_{file_name(scene.codes[s])}"
-        out.append(Sheet(name, partial(direction_figure, result, scene.codes[s]), partial(direction_tables, scene, s)))
+        name = file_name(scene.codes[s])
+        while name.lower() in taken:
+            name += "_"
+        taken.add(name.lower())
+        out.append(
+            Sheet(
+                f"direction_{name}",
+                partial(direction_figure, result, scene.codes[s]),
+                partial(direction_tables, scene, s),
+            )
+        )
     if result.map is not None:
         out.append(Sheet("frames", partial(frames_figure, result), partial(frames_tables, scene, "location")))
         out.append(Sheet("energy", partial(energy_figure, result), partial(energy_tables, scene)))

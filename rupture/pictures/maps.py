@@ -56,13 +56,16 @@ def map_figure(
         picture, scene.plane, extent,
         (10 + corner[0] * (main - inset), foot + corner[1] * (main - inset), inset, inset),
     )  # fmt: skip
-    if wide and result.map is not None:
+    if wide:
         left = 10 + main + 12
         bottom = foot + main - side
-        handles += _source_panel(picture, scene, field, frames, (left, bottom, side, side))
-        _legend(picture, scene, handles, frames, (left - 6, 5, side + 10, bottom - 11))
+        if result.map is not None:
+            handles += _source_panel(picture, scene, field, frames, (left, bottom, side, side))
+        else:
+            bottom = foot + main
+        _legend(picture, handles, frames, (left - 6, 5, side + 10, bottom - 11))
     else:
-        _legend(picture, scene, handles, frames, (6, 17, width_mm - 12, foot - 22))
+        _legend(picture, handles, frames, (6, 17, width_mm - 12, foot - 22))
     if frames:
         bar_left, bar_width = (10 + main * 0.15, main * 0.7) if wide else (14.0, width_mm - 28)
         _time_bar(picture, scene, scale, frames, (bar_left, 10.5, bar_width, 2.2))
@@ -122,7 +125,6 @@ def _emptiest_corner(scene: Scene, extent: Extent) -> tuple[int, int]:
 
 def _legend(
     picture: style.Picture,
-    scene: Scene,
     handles: list[Any],
     frames: list[int],
     place: tuple[float, float, float, float],

@@ -126,7 +126,11 @@ class Animation:
             [0, 0], [0, 1], transform=self.line.get_xaxis_transform(), color=look.INK, linewidth=1.2
         )
         self.clock = self.picture.text(*self.clock_place, "", fontsize=9.0, va="bottom", family="DejaVu Sans Mono")
-        return [self.wedges, self.rays, self.cells, self.areas, self.trail, self.front, star, self.cursor, self.clock]
+        moving = [self.wedges, self.rays, self.cells, self.areas, self.trail, self.front, star, self.cursor, self.clock]
+        for order, artist in enumerate(moving):
+            # Above all that stays, as blitting draws them, so that both ways of drawing give the same picture.
+            artist.set_zorder(20 + order)
+        return moving
 
     def set_frame(self, frame: int) -> None:
         """Move every artist to one frame."""

@@ -230,7 +230,8 @@ class Scene:
     def rays(self) -> Array:
         """Shape (sites, frames, 4): best back-azimuth, both edges of the ray and the probability of a wave.
 
-        Degrees, unwrapped so that low <= best <= high; NaN where the site has no window then.
+        Degrees, unwrapped so that low <= best <= high; NaN where the site has no window then, and before the origin,
+        when nothing had been sent yet and the windows hold P.
         """
         direction = self.result.direction
         time = direction["time"].values.astype(float)
@@ -243,7 +244,7 @@ class Scene:
         for s in range(len(self.codes)):
             at = np.round((self.s_arrival[s] - time[0]) / step)
             for f, index in enumerate(at):
-                if np.isfinite(index) and 0 <= index < time.size:
+                if self.source_time[f] >= -step and np.isfinite(index) and 0 <= index < time.size:
                     t = int(index)
                     interval = circular_interval(axis, share[s, t], RAY_WIDTH)
                     if interval is not None:

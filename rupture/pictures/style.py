@@ -146,6 +146,24 @@ class Picture(Figure):
         return buffer.getvalue()
 
 
+def _read_style(path: Path) -> dict[str, Any]:
+    try:
+        lines = path.read_text(encoding="utf-8").splitlines()
+    except (OSError, UnicodeDecodeError) as error:
+        raise InputError(f"{path}: no such Matplotlib style file, or not a text file ({error})") from error
+    for number, line in enumerate(lines, start=1):
+        # Matplotlib only logs an unknown key and goes on without it.
+        key = line.split("#")[0].split(":")[0].strip()
+        if key and key not in mpl.rcParams:
+            raise InputError(f"{path}, line {number}: Matplotlib has no style setting '{key}'")
+    try:
+        return {
+            str(k): v for k, v in mpl.rc_params_from_file(path, fail_on_error=True, use_default_template=False).items()
+        }
+    except ValueError as error:
+        raise InputError(f"{path}: not a Matplotlib style file ({str(error).strip()})") from error
+
+
 @contextmanager
 def style_context(style: str | Path | None = None) -> Iterator[None]:
     """Draw in the house look, with a Matplotlib style file on top if one is given.
@@ -155,18 +173,7 @@ def style_context(style: str | Path | None = None) -> Iterator[None]:
     InputError
         When the style file is missing or holds a key that Matplotlib does not know.
     """
-    user: dict[str, Any] = {}
-    if style is not None:
-        path = Path(style)
-        if not path.is_file():
-            raise InputError(f"{path}: no such Matplotlib style file")
-        try:
-            user = {
-                str(k): v
-                for k, v in mpl.rc_params_from_file(path, fail_on_error=True, use_default_template=False).items()
-            }
-        except (OSError, ValueError, KeyError, UnicodeDecodeError) as error:
-            raise InputError(f"{path}: not a Matplotlib style file ({str(error).strip()})") from error
+    user = {} if style is None else _read_style(Path(style))
     keep = {"backend", "backend_fallback", "interactive", "toolbar", "webagg.port", "webagg.address"}
     # From Matplotlib's own defaults, so that a figure does not depend on whose machine draws it.
     look: dict[Any, Any] = {key: value for key, value in mpl.rcParamsDefault.items() if key not in keep}
