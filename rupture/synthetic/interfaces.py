@@ -104,3 +104,12 @@ def free_surface_sv(p: float, alpha: float, beta: float) -> tuple[complex, compl
     curve = 1.0 / (beta * beta) - 2 * p * p
     det = curve * curve + 4 * p * p * xi * eta
     return 2 * eta * curve / beta / det, -4 * p * xi * eta / beta / det
+
+
+@njit(cache=True, error_model="numpy")
+def surface_reflection(p: float, alpha: float, beta: float) -> tuple[complex, complex]:
+    """Return reflection coefficients of P to P and SV to SV at the free surface (Aki & Richards 2002, eq. 5.27 and 5.31)."""
+    xi, eta = vertical_slowness(p, alpha), vertical_slowness(p, beta)
+    curve = 1.0 / (beta * beta) - 2 * p * p
+    cross = 4 * p * p * xi * eta
+    return (cross - curve * curve) / (cross + curve * curve), (curve * curve - cross) / (cross + curve * curve)

@@ -1,7 +1,8 @@
 """Ray engine: direct, reflected and head waves of P and S in layers, six components, milliseconds per record.
 
 An independent forward model: it solves its own rays and shares nothing with the estimators but the free-surface
-physics. Far field only; distances are geodesic, the Earth between source and receiver is flat (fine to some 400 km).
+physics. Distances are geodesic, the Earth between source and receiver is flat (fine to some 400 km). Left out: near
+field, surface waves, conversions between P and S on the way, further multiples; the wavefield engine has them all.
 """
 
 from __future__ import annotations
@@ -38,7 +39,7 @@ class Rays:
     Attributes
     ----------
     name
-        Names of the rays in order: P, S, then for each reflecting interface P and S reflected and P and S head wave.
+        Names of the rays in order: P, S, then for each mirror P and S reflected, along it (head wave), reflected by surface and mirror.
     time_s, loss_s, slowness_s_m
         Travel time in s, t* in s, horizontal slowness in s/m; zero where the ray does not exist.
     motion
@@ -73,7 +74,7 @@ class RayEngine:
     Attributes
     ----------
     reflections
-        Whether waves reflected from below (PmP, SmS and the like) are added to the direct ones.
+        Whether waves reflected from below (PmP, SmS and the like, also by way of the surface: pPmP, sSmS) are added.
     head_waves
         Whether waves refracted along those interfaces (Pn, Sn and the like) are added.
     least_contrast
@@ -118,7 +119,11 @@ class RayEngine:
         names = ["P", "S"]
         for mirror in mirrors:
             depth = f"{model.top_km[mirror + 1]:g} km"
-            names += [f"P reflected at {depth}", f"S reflected at {depth}", f"P along {depth}", f"S along {depth}"]
+            names += [
+                f"{wave} {way} {depth}"
+                for way in ("reflected at", "along", "reflected at surface and")
+                for wave in "PS"
+            ]
         head = np.array([" along " in name for name in names])
         return Rays(tuple(names), time, loss, slowness, motion, head, distance, azimuth, back_azimuth)
 

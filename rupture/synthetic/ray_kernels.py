@@ -6,23 +6,31 @@ import numpy as np
 from numba import njit, prange
 from numpy.typing import NDArray
 
-from rupture.synthetic.interfaces import free_surface_p, free_surface_sv
+from rupture.synthetic.interfaces import free_surface_p, free_surface_sv, surface_reflection
 from rupture.synthetic.ray_paths import head_derivative, path_sums, reflection, solve_slowness, transmission
 
 Floats = NDArray[np.float64]
 Integers = NDArray[np.int64]
+
+RAYS_OF_MIRROR = 6
+"""P and S of: reflected, head wave, and reflected after the surface."""
 
 HEAD_LIMIT_HZ = 1.0
 """Frequency at which a head wave stops growing toward its critical distance, where it is one with the reflection."""
 
 
 @njit(cache=True, error_model="numpy")
-def _fill_path(path_m: Floats, top_m: Floats, source: int, depth_m: float, mirror: int) -> None:
-    """Write the vertical metres of a ray: straight up, or down to the interface under layer `mirror` and up."""
+def _fill_path(path_m: Floats, top_m: Floats, source: int, depth_m: float, mirror: int, first_up: bool) -> None:
+    """Write the vertical metres of a ray.
+
+    Straight up; or, with a mirror (the interface under that layer), down to it and up; or first up to the surface,
+    then down to the mirror and up.
+    """
     path_m[:] = 0.0
+    legs = 3 if first_up else 1
     for k in range(source):
-        path_m[k] = top_m[k + 1] - top_m[k]
-    path_m[source] = depth_m - top_m[source]
+        path_m[k] = legs * (top_m[k + 1] - top_m[k])
+    path_m[source] = legs * (depth_m - top_m[source])
     if mirror >= 0:
         path_m[source] += 2 * (top_m[source + 1] - depth_m)
         for k in range(source + 1, mirror + 1):
@@ -31,13 +39,17 @@ def _fill_path(path_m: Floats, top_m: Floats, source: int, depth_m: float, mirro
 
 @njit(cache=True, error_model="numpy")
 def _crossings(
-    p: float, source: int, mirror: int, vp: Floats, vs: Floats, rho: Floats
+    p: float, source: int, mirror: int, first_up: bool, vp: Floats, vs: Floats, rho: Floats
 ) -> tuple[complex, complex, complex]:
-    """Return the product of transmissions of P, SV and SH along a ray."""
+    """Return the product of transmissions (and of the surface's reflection) of P, SV and SH along a ray."""
     out_p, out_sv, out_sh = complex(1.0, 0.0), complex(1.0, 0.0), complex(1.0, 0.0)
     for k in range(source):
         t_p, t_sv, t_sh = transmission(p, k, vp, vs, rho)
-        out_p, out_sv, out_sh = out_p * t_p, out_sv * t_sv, out_sh * t_sh
+        for _ in range(3 if first_up else 1):
+            out_p, out_sv, out_sh = out_p * t_p, out_sv * t_sv, out_sh * t_sh
+    if first_up:
+        s_p, s_sv = surface_reflection(p, vp[0], vs[0])
+        out_p, out_sv = out_p * s_p, out_sv * s_sv
     for k in range(source, mirror):
         t_p, t_sv, t_sh = transmission(p, k, vp, vs, rho)
         out_p, out_sv, out_sh = out_p * t_p * t_p, out_sv * t_sv * t_sv, out_sh * t_sh * t_sh
@@ -101,14 +113,14 @@ def trace_rays(
     -------
     time_s, loss_s, slowness
         Shape (receivers, sources, rays): travel time, t* and horizontal slowness. Rays are P and S of: direct, then for each
-        mirror reflected and head wave.
+        mirror reflected, head wave, and reflected by surface and mirror.
     motion
         Shape (receivers, sources, rays, 3), complex, time dependence exp(+i omega t): surface displacement toward R,
         toward growing azimuth and up, for a moment rate of 1 N m/s at all frequencies; zero where there is no such ray. For head
         waves it is still to be divided by omega.
     """
     receivers, sources = distance_m.shape
-    rays = 2 + 4 * mirrors.size
+    rays = 2 + RAYS_OF_MIRROR * mirrors.size
     time_s = np.zeros((receivers, sources, rays))
     loss_s = np.zeros((receivers, sources, rays))
     slowness = np.zeros((receivers, sources, rays))
@@ -123,13 +135,14 @@ def trace_rays(
                 speed = vs if shear else vp
                 quality = qs if shear else qp
                 mirror = -1
-                is_head = False
+                is_head, first_up = False, False
                 if ray >= 2:
-                    mirror = mirrors[(ray - 2) // 4]
-                    is_head = ((ray - 2) // 2) % 2 == 1
+                    mirror = mirrors[(ray - 2) // RAYS_OF_MIRROR]
+                    kind = (ray - 2) % RAYS_OF_MIRROR // 2
+                    is_head, first_up = kind == 1, kind == 2
                     if mirror < layer or (is_head and not heads):
                         continue
-                _fill_path(path_m, top_m, layer, depth_m[s], mirror)
+                _fill_path(path_m, top_m, layer, depth_m[s], mirror, first_up)
                 if is_head:
                     refractor = speed[mirror + 1]
                     if np.max(speed[: mirror + 1]) >= refractor:
@@ -155,7 +168,7 @@ def trace_rays(
                     level /= np.sqrt(refractor) * reduced**1.5
                 else:
                     level /= np.sqrt(reach * cos_source * cos_surface * derivative / (p * speed[layer] ** 2))
-                c_p, c_sv, c_sh = _crossings(p, layer, mirror, vp, vs, rho)
+                c_p, c_sv, c_sh = _crossings(p, layer, mirror, first_up, vp, vs, rho)
                 if is_head:
                     b_p, b_sv, b_sh = head_derivative(p, mirror, vp, vs, rho, shear)
                     # exp(-i omega t): minus the integral of the pulse is -i / omega; omega is divided by later.
@@ -164,7 +177,7 @@ def trace_rays(
                     b_p, b_sv, b_sh = reflection(p, mirror, vp, vs, rho)
                 else:
                     b_p, b_sv, b_sh = complex(1.0, 0.0), complex(1.0, 0.0), complex(1.0, 0.0)
-                f_p, f_sv, f_sh = _radiate(tensor[s], azimuth_rad[r, s], p, speed[layer], mirror >= 0)
+                f_p, f_sv, f_sh = _radiate(tensor[s], azimuth_rad[r, s], p, speed[layer], mirror >= 0 and not first_up)
                 if shear:
                     onward, up = free_surface_sv(p, vp[0], vs[0])
                     sv = level * f_sv * c_sv * b_sv
