@@ -55,7 +55,7 @@ def sheets(result: Result) -> list[Sheet]:
     """Return the figures that can be drawn of a result: directions always, the rest where the stage ran."""
     scene = Scene.of(result)
     out = [Sheet("map", partial(map_figure, result), partial(map_tables, scene))]
-    share = result.direction["probability"].values
+    share = scene.direction["probability"].values
     shown = [s for s in range(len(scene.codes)) if np.isfinite(share[s]).any()]
     if len(shown) > 1:
         out.append(Sheet("directions", partial(directions_figure, result), list))

@@ -144,7 +144,7 @@ def _site(scene: Scene, s: int) -> dict[str, Any]:
 
 
 def _panel(scene: Scene, s: int) -> dict[str, Any] | None:
-    direction = scene.result.direction
+    direction = scene.direction
     share = np.asarray(direction["probability"].values[s], float)
     known = np.isfinite(share).all(axis=1)
     if not known.any():

@@ -74,7 +74,7 @@ def direction_figure(result: Result, style_file: str | Path | None, width_mm: fl
 def directions_figure(result: Result, style_file: str | Path | None, width_mm: float) -> style.Picture:
     """Draw all sites that have directions, in the order of their azimuth seen from the epicentre."""
     scene = Scene.of(result)
-    share = result.direction["probability"].values
+    share = scene.direction["probability"].values
     order = np.argsort(result.sites["azimuth"].values)
     shown = [int(s) for s in order if np.isfinite(share[s]).any()]
     if not shown:
@@ -120,7 +120,7 @@ def directions_figure(result: Result, style_file: str | Path | None, width_mm: f
 def window_of_interest(scene: Scene) -> tuple[float, float]:
     """Return the span of time, s after origin, from before the first P to after the last predicted S."""
     sites = scene.result.sites
-    time = scene.result.direction["time"].values.astype(float)
+    time = scene.direction["time"].values.astype(float)
     used = scene.used if scene.used.any() else np.ones_like(scene.used)
     first = float(np.nanmin(sites["p_arrival"].values[used], initial=np.inf))
     last = float(np.nanmax(sites["s_arrival"].values[used], initial=-np.inf))
@@ -137,10 +137,12 @@ def predicted_curves(scene: Scene) -> Array:
     """Shape (arms, sites, time): back-azimuth in degrees of the fitted model; no arm when none was fitted."""
     track = scene.result.track
     if track is None or "predicted_back_azimuth" not in track:
-        return np.empty((0, len(scene.codes), scene.result.direction["time"].size))
+        return np.empty((0, len(scene.codes), scene.direction["time"].size))
     curves = track["predicted_back_azimuth"]
+    if "site" in curves.coords:
+        curves = curves.reindex(site=scene.result.sites["site"].values)
     if "time" in curves.coords:
-        curves = curves.reindex(time=scene.result.direction["time"].values, method="nearest", tolerance=1e-6)
+        curves = curves.reindex(time=scene.direction["time"].values, method="nearest", tolerance=1e-6)
     return np.asarray(curves.values, float)
 
 
@@ -160,7 +162,7 @@ def centred(angle_deg: Any, centre_deg: float) -> Array:
 
 def draw_posterior(axes: Any, scene: Scene, index: int, span: tuple[float, float]) -> Any:
     """Draw one site's posterior through time as an image around the back-azimuth of the epicentre; return it."""
-    direction = scene.result.direction
+    direction = scene.direction
     time = direction["time"].values.astype(float)
     axis = direction["back_azimuth"].values.astype(float)
     bin_deg = 360.0 / axis.size
@@ -212,7 +214,7 @@ def used_spans(scene: Scene, index: int) -> list[tuple[float, float]]:
     """Return first and last time of each run of windows that speak: a wave in them is more likely than none."""
     if not scene.used[index]:
         return []
-    time = scene.result.direction["time"].values.astype(float)
+    time = scene.direction["time"].values.astype(float)
     coherent = coherence(scene, index)
     speaks = np.nan_to_num(coherent) >= RAY_PROBABILITY
     edge = np.diff(np.concatenate([[False], speaks, [False]]).astype(int))
@@ -224,13 +226,13 @@ def used_spans(scene: Scene, index: int) -> list[tuple[float, float]]:
 
 def coherence(scene: Scene, index: int) -> Array:
     """Shape (time,): probability of a coherent wave in the best band, NaN where there is no window."""
-    bands = np.asarray(scene.result.direction["probability_coherent"].values[index], float)
+    bands = np.asarray(scene.direction["probability_coherent"].values[index], float)
     missing = np.isnan(bands).all(axis=0)
     return np.where(missing, np.nan, np.nan_to_num(bands, nan=0.0).max(axis=0))
 
 
 def _draw_coherence(axes: Any, scene: Scene, index: int) -> None:
-    direction = scene.result.direction
+    direction = scene.direction
     time = direction["time"].values.astype(float)
     axes.fill_between(time, coherence(scene, index), step="mid", color=style.FAINT, linewidth=0)
     axes.set_ylim(0, 1.05)
@@ -267,7 +269,7 @@ def curve_handles(scene: Scene) -> list[Any]:
 
 def posterior_interval(scene: Scene, index: int) -> Array:
     """Shape (time, 3): best, p05, p95 back-azimuth in degrees of all bands together; NaN without a window."""
-    direction = scene.result.direction
+    direction = scene.direction
     axis = direction["back_azimuth"].values.astype(float)
     rows = [circular_interval(axis, row) for row in np.asarray(direction["probability"].values[index], float)]
     return np.array([(np.nan, np.nan, np.nan) if row is None else row for row in rows])

@@ -81,6 +81,11 @@ class Scene:
         return [str(code) for code in self.result.sites["site"].values]
 
     @cached_property
+    def direction(self) -> Any:
+        """The direction group in the order of the sites; sites without directions hold NaN."""
+        return self.result.direction.reindex(site=self.result.sites["site"].values)
+
+    @cached_property
     def used(self) -> NDArray[np.bool_]:
         """Shape (sites,): which sites took part."""
         return self.result.sites["used"].values.astype(bool)
@@ -233,7 +238,7 @@ class Scene:
         Degrees, unwrapped so that low <= best <= high; NaN where the site has no window then, and before the origin,
         when nothing had been sent yet and the windows hold P.
         """
-        direction = self.result.direction
+        direction = self.direction
         time = direction["time"].values.astype(float)
         axis = direction["back_azimuth"].values.astype(float)
         share = np.asarray(direction["probability"].values, float)

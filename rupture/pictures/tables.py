@@ -124,7 +124,7 @@ def _area_table(scene: Scene, total: Any) -> list[Table]:
 
 def direction_tables(scene: Scene, index: int) -> list[Table]:
     """Posterior image and curves of one site."""
-    direction = scene.result.direction
+    direction = scene.direction
     time = direction["time"].values.astype(float)
     axis = direction["back_azimuth"].values.astype(float)
     share = np.asarray(direction["probability"].values[index], float)

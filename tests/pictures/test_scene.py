@@ -168,3 +168,29 @@ def test_beachball_of_thrust_and_normal_faults() -> None:
     # Centre of the ball: straight down. A 45 deg thrust pushes up and down, a normal fault pulls.
     assert layers.p_radiation(20.0, 45.0, 90.0, np.array(0.0), np.array(0.0)) == pytest.approx(1.0)
     assert layers.p_radiation(20.0, 45.0, -90.0, np.array(0.0), np.array(0.0)) == pytest.approx(-1.0)
+
+
+def test_directions_of_fewer_sites_in_another_order_find_their_site(unilateral: Result) -> None:
+    from rupture.pictures.panels import coherence, predicted_curves
+
+    whole = Scene.of(unilateral)
+    picked = ["ZX.R07", "ZX.R02", "ZX.R03"]
+    assert unilateral.track is not None
+    fewer = Result(
+        unilateral.summary,
+        unilateral.sites,
+        unilateral.direction.sel(site=picked),
+        unilateral.map,
+        None,
+        unilateral.track.sel(site=picked),
+    )
+    scene = Scene.of(fewer)
+    frame = scene.ray_frames(3)[1]
+    for s, code in enumerate(scene.codes):
+        if code in picked:
+            assert scene.rays[s, frame] == pytest.approx(whole.rays[s, frame], nan_ok=True)
+            assert coherence(scene, s) == pytest.approx(coherence(whole, s), nan_ok=True)
+            assert predicted_curves(scene)[0, s] == pytest.approx(predicted_curves(whole)[0, s], nan_ok=True)
+        else:
+            assert np.isnan(scene.rays[s]).all()
+            assert np.isnan(predicted_curves(scene)[:, s]).all()
