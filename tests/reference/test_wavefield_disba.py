@@ -26,7 +26,9 @@ def records():
     """Six components due north of two shallow sources: strike-slip for Love waves, and for Rayleigh waves an explosion,
     which unlike strike-slip has no spectral node in the band."""
     lossless = np.full(5, np.inf)
-    model = LayeredModel("crust", np.concatenate([[0.0], np.cumsum(THICKNESS[:-1])]), VP, VS, DENSITY, lossless, lossless)
+    model = LayeredModel(
+        "crust", np.concatenate([[0.0], np.cumsum(THICKNESS[:-1])]), VP, VS, DENSITY, lossless, lossless
+    )
     plan = FrequencyPlan(step_s=0.5, samples=840, high_hz=0.6)
     table = greens(model, 2.0, [DISTANCE], plan)
     slip = double_couple(np.radians(25.0), np.radians(80.0), np.radians(20.0))

@@ -68,7 +68,9 @@ def test_vertical_rotation_is_exactly_twice_that_of_the_full_space(quality, dept
     beta = np.sqrt(constant_q_speed2(np.array([VS]), np.array([quality]), PLAN.omega))[:, 0]
     for i, r in enumerate(distance):
         place = np.array([r * np.cos(azimuth), r * np.sin(azimuth), -depth_km * 1e3])
-        theirs = np.array([-2 * full_space(MOMENT, place, w, VP, b)[1][2] for w, b in zip(PLAN.omega, beta, strict=True)])
+        theirs = np.array(
+            [-2 * full_space(MOMENT, place, w, VP, b)[1][2] for w, b in zip(PLAN.omega, beta, strict=True)]
+        )
         assert np.abs(ours[i] - theirs).max() < 1e-3 * np.abs(theirs).max()
 
 
@@ -100,6 +102,7 @@ def plane_wave_sum(omega, depth, north, east, alpha, beta, free_surface):
 
     field = [(green("p"), gradient("p", -1)), (green("s"), gradient("s", -1))]
     if free_surface:
+
         def traction(u, d):
             strain = d[:, None] * u[None, :] + d[None, :] * u[:, None]
             stress = mu * strain[2]
@@ -140,7 +143,13 @@ def test_the_plane_wave_sum_with_its_reflections_is_ours():
     ours = to_east_north(ours[None].view(float), AZIMUTH + np.pi).view(complex)[0]
     for f in FREQUENCIES:
         u, rotation = plane_wave_sum(
-            PLAN.omega[f], DEPTH, DISTANCE * np.cos(AZIMUTH), DISTANCE * np.sin(AZIMUTH), VP + 0j, VS + 0j, free_surface=True
+            PLAN.omega[f],
+            DEPTH,
+            DISTANCE * np.cos(AZIMUTH),
+            DISTANCE * np.sin(AZIMUTH),
+            VP + 0j,
+            VS + 0j,
+            free_surface=True,
         )
         for three, rows in ((u, slice(0, 3)), (rotation, slice(3, 6))):
             north, east, down = three

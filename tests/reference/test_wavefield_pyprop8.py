@@ -123,7 +123,10 @@ def test_moment_response_is_the_gradient_of_the_force_response():
         moment[p, q] = moment[q, p] = 1.0
         turned = TO_EAST_NORTH_UP @ moment @ TO_EAST_NORTH_UP.T
         mine = np.stack(
-            [(table.spectra[0] * element_weights(turned, azimuth)[:, None])[part].sum(axis=0) for part in COMPONENT_SLICES[:3]]
+            [
+                (table.spectra[0] * element_weights(turned, azimuth)[:, None])[part].sum(axis=0)
+                for part in COMPONENT_SLICES[:3]
+            ]
         )[:, some] * (1j * plan.omega[some])
         theirs_pq = gradient[p, q] if p == q else gradient[p, q] + gradient[q, p]
         theirs_pq = theirs_pq * np.array([1.0, -1.0, 1.0])[:, None] * PYPROP8_UNIT

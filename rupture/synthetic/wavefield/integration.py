@@ -102,7 +102,7 @@ def integrate(
                     _product(table[:, :rows], kernel[:rows, own])
                     for table, kernel in zip(tables[id(distance_m[depth]), part.start], kernels, strict=True)
                 ]
-                spectra = _assemble(*sums, distance_m[depth][part]) / (1j * omega[some])
+                spectra = _assemble(sums, distance_m[depth][part]) / (1j * omega[some])
                 yield Block(depth, part, some, spectra)
             if report is not None:
                 report(number * len(starts) + done + 1, len(batches) * len(starts))
@@ -111,7 +111,9 @@ def integrate(
 def _batches(distance_m: Sequence[NDArray[np.float64]], limit: int) -> list[list[tuple[int, slice]]]:
     """Split (depth, distances) into batches whose Bessel tables fit; distances shared between depths count once."""
     pieces = [
-        (depth, slice(lo, min(lo + limit, d.size))) for depth, d in enumerate(distance_m) for lo in range(0, d.size, limit)
+        (depth, slice(lo, min(lo + limit, d.size)))
+        for depth, d in enumerate(distance_m)
+        for lo in range(0, d.size, limit)
     ]
     pieces.sort(key=lambda piece: (piece[1].start, piece[0]))
     batches: list[list[tuple[int, slice]]] = []
@@ -133,13 +135,12 @@ def _product(table: NDArray[np.float64], kernel: NDArray[np.complex128]) -> NDAr
     return (table @ flat).view(complex).reshape(table.shape[0], *kernel.shape[1:])
 
 
-def _assemble(
-    zero: NDArray[np.complex128], one: NDArray[np.complex128], two: NDArray[np.complex128], distance_m: NDArray[np.float64]
-) -> NDArray[np.complex128]:
+def _assemble(sums: Sequence[NDArray[np.complex128]], distance_m: NDArray[np.float64]) -> NDArray[np.complex128]:
     """Combine sums over J0, J1 and J2 (distances, frequencies, columns) into elements (distances, 18, frequencies).
 
     Derivatives of Bessel functions and the near-field terms J_m / (k r) come from J1' = J0 - J1/x, J2' = J1 - 2 J2/x.
     """
+    zero, one, two = sums
     b1_0, b3_0, a2_0, c2_0, kb2_0 = np.moveaxis(zero, -1, 0)
     a1_1, a3_1, b2_1, kc2_1, kb1_1, kb3_1, a2_k1, c2_k1, c1_1 = np.moveaxis(one, -1, 0)
     b1_2, kc1_2, a1_k2, c1_k2 = np.moveaxis(two, -1, 0)

@@ -2,8 +2,8 @@
 
 from __future__ import annotations
 
-from collections.abc import Callable
-from dataclasses import dataclass
+from collections.abc import Callable, Iterable, Iterator
+from dataclasses import dataclass, fields
 
 import numpy as np
 from numpy.typing import NDArray
@@ -13,11 +13,17 @@ from rupture.errors import InputError
 from rupture.geodesy import distance_azimuth
 from rupture.synthetic.engine import Engine, Receivers, Sampling, SubEvents
 from rupture.synthetic.wavefield.gather import NODES, add_block, lagrange
-from rupture.synthetic.wavefield.tables import Motion
 from rupture.synthetic.wavefield.integration import Block, Report, integrate
 from rupture.synthetic.wavefield.mechanism import double_couple, element_weights
-from rupture.synthetic.wavefield.sampling import FrequencyPlan, medium, wavenumber_counts, wavenumber_step
+from rupture.synthetic.wavefield.sampling import FrequencyPlan, medium, wavenumber_counts
 from rupture.synthetic.wavefield.store import GreensStore
+from rupture.synthetic.wavefield.tables import Motion
+
+TABLE_GAIN = 1.5
+"""Distances are interpolated from a table when they outnumber its nodes by this factor."""
+
+NODE_SHARE = 32
+"""Tables start and end at multiples of this many nodes, so that another job of the same region finds them in the store."""
 
 NODE_PHASE = 0.9
 """Largest phase in rad between neighbouring nodes of the distance table after the mean slowness is taken out:
@@ -50,7 +56,9 @@ def wavefield_records(
         When a sub-event is not below the surface, lies on an interface or right below a receiver, or the band
         reaches half the sampling rate.
     """
-    return _records(sources, receivers, model, sampling, lambda job: integrate(model, job.depth_km, job.node_m, job.plan))
+    return _records(
+        sources, receivers, model, sampling, lambda job: integrate(model, job.depth_km, job.node_m, job.plan)
+    )
 
 
 def stored_wavefield(store: GreensStore, report: Report | None = None) -> Engine:
@@ -67,7 +75,7 @@ def stored_wavefield(store: GreensStore, report: Report | None = None) -> Engine
     def engine(
         sources: SubEvents, receivers: Receivers, model: LayeredModel, sampling: Sampling
     ) -> NDArray[np.float64]:
-        def blocks(job: _Job):
+        def blocks(job: _Job) -> Iterator[Block]:
             for d, depth in enumerate(job.depth_km):
                 table = store.fetch(model, float(depth), job.node_m[d], job.plan)
                 yield Block(d, slice(0, table.distance_m.size), slice(0, job.plan.omega.size), table.spectra)
@@ -122,8 +130,9 @@ def _records(
     receivers: Receivers,
     model: LayeredModel,
     sampling: Sampling,
-    blocks_of: Callable,
+    blocks_of: Callable[[_Job], Iterable[Block]],
 ) -> NDArray[np.float64]:
+    _check(sources)
     origin = min(sampling.start_s, float(np.min(sources.time_s)))
     lead = int(np.ceil((sampling.start_s - origin) / sampling.step_s - 1e-9))
     origin = sampling.start_s - lead * sampling.step_s
@@ -134,7 +143,9 @@ def _records(
     source = raised_cosine_spectrum(np.asarray(sources.rise_time_s, float), omega)
     source *= np.exp(-1j * omega * (np.asarray(sources.time_s, float)[:, None] - origin))
     depth_km, level = np.unique(np.round(np.asarray(sources.depth_km, float)[events], 6), return_inverse=True)
-    shapes = [_pairs(sources, receivers, events[level == d], model, float(depth_km[d]), plan) for d in range(depth_km.size)]
+    shapes = [
+        _pairs(sources, receivers, events[level == d], model, float(depth_km[d]), plan) for d in range(depth_km.size)
+    ]
     job = _Job(plan, depth_km, [node for node, _ in shapes])
     spectra = np.zeros((np.size(receivers.longitude_deg), 6, omega.size), complex)
     translation, rotation = ((1j * omega) ** power for power in Motion.SENSORS.value)
@@ -148,6 +159,19 @@ def _records(
     return plan.series(spectra)[..., lead:]
 
 
+def _check(sources: SubEvents) -> None:
+    """Raise InputError for arrays of unequal length, numbers that are not finite, or a negative rise time."""
+    count = np.size(sources.time_s)
+    if not count:
+        raise InputError("A rupture needs at least one sub-event")
+    for field in fields(sources):
+        value = np.asarray(getattr(sources, field.name), float)
+        if value.shape != (count,) or not np.isfinite(value).all():
+            raise InputError(f"Sub-events: {field.name} must hold one finite number for each of the {count} sub-events")
+    if (np.asarray(sources.rise_time_s) < 0).any():
+        raise InputError("Sub-events: a rise time is negative; give 0 s or more")
+
+
 def _pairs(
     sources: SubEvents,
     receivers: Receivers,
@@ -157,7 +181,9 @@ def _pairs(
     plan: FrequencyPlan,
 ) -> tuple[NDArray[np.float64], _Pairs]:
     """Return the nodes of one depth and how each pair of receiver and sub-event is made from them."""
-    longitude, latitude = (np.atleast_1d(np.asarray(v, float)) for v in (receivers.longitude_deg, receivers.latitude_deg))
+    longitude, latitude = (
+        np.atleast_1d(np.asarray(v, float)) for v in (receivers.longitude_deg, receivers.latitude_deg)
+    )
     distance, azimuth, back_azimuth = (
         a.ravel()
         for a in distance_azimuth(
@@ -201,15 +227,16 @@ def _nodes(
     job finds them in the store, and in front of them the distances that are too short for them.
     """
     omega = plan.omega[-1:]
-    wavenumber_unit = wavenumber_step(model, plan, float(distance_m.max()))
-    layers = medium(model, np.array([depth_km]), omega)
-    k_largest = float(wavenumber_counts(layers, omega, wavenumber_unit)[0, 0] * wavenumber_unit)
+    # A fine unit, so that the node step depends on model, depth and band alone.
+    unit = 1e-8
+    k_largest = float(wavenumber_counts(medium(model, np.array([depth_km]), omega), omega, unit)[0, 0] * unit)
     step = 2 * NODE_PHASE / k_largest
     own, place = np.unique(distance_m, return_inverse=True)
-    lowest = int(max(own[0] // step - NODES // 2 + 1, 1))
-    table = np.arange(lowest, int(own[-1] // step) + NODES // 2 + 1) * step
+    lowest = max((int(own[0] / step) - NODES // 2) // NODE_SHARE * NODE_SHARE, 1)
+    highest = -(-(int(own[-1] / step) + NODES // 2) // NODE_SHARE) * NODE_SHARE
+    table = np.arange(lowest, highest + 1) * step
     stencil = np.zeros((distance_m.size, NODES))
-    if own.size <= 1.5 * table.size:
+    if own.size <= TABLE_GAIN * table.size:
         stencil[:, 0] = 1.0
         return own, place, stencil, 0.0, 0.0
     exact = own[own < table[NODES // 2 - 1]]

@@ -95,13 +95,17 @@ class FrequencyPlan:
     @property
     def omega(self) -> NDArray[np.complex128]:
         """Complex angular frequencies in rad/s, shape (frequencies,)."""
-        return 2 * np.pi * self.frequency_hz - 1j * self.damping
+        return np.asarray(2 * np.pi * self.frequency_hz - 1j * self.damping, np.complex128)
 
     @property
-    def window(self) -> NDArray[np.float64]:
-        """Pass band: 1 up to 0.8 high_hz, then a smooth fall to 0 at high_hz; shape (frequencies,)."""
-        share = (self.frequency_hz / self.high_hz - PASS_SHARE) / (1 - PASS_SHARE)
-        return 0.5 * erfc(6 * share - 3)
+    def window(self) -> NDArray[np.complex128]:
+        """Pass band at the complex frequencies: 1 up to 0.8 high_hz, then an error-function fall to 0 at high_hz.
+
+        Evaluated off the real axis, so that with the damping undone it is the same zero-phase filter for every period;
+        shape (frequencies,).
+        """
+        share = (self.omega / (2 * np.pi * self.high_hz) - PASS_SHARE) / (1 - PASS_SHARE)
+        return np.asarray(0.5 * erfc(6 * share - 3), np.complex128)
 
     def series(self, spectra: NDArray[np.complex128]) -> NDArray[np.float64]:
         """Turn spectra (..., frequencies) into band-limited time series (..., samples)."""
@@ -150,7 +154,7 @@ def constant_q_speed2(
     """
     gamma = np.arctan(1.0 / quality) / np.pi
     power = np.exp(2 * gamma * np.log(1j * omega / (2 * np.pi * REFERENCE_HZ))[:, None])
-    return (speed * np.cos(0.5 * np.pi * gamma)) ** 2 * power
+    return np.asarray((speed * np.cos(0.5 * np.pi * gamma)) ** 2 * power, np.complex128)
 
 
 def medium(model: LayeredModel, depth_km: NDArray[np.float64], omega: NDArray[np.complex128]) -> Medium:
@@ -224,7 +228,7 @@ def wavenumber_weights(step: float, count: int) -> tuple[NDArray[np.float64], ND
     All integrands are odd functions of k, so a plain sum has the Euler-Maclaurin end error of an odd function at k = 0. Weights of
     the first wavenumbers take its leading terms away: sum c_n n^(2j+1) = B_(2j+2) / (2j+2) for j = 0, 1, ...
     """
-    n = np.arange(1, count + 1)
+    n = np.arange(1, count + 1, dtype=float)
     order = np.arange(END_TERMS)
     bernoulli = np.array([1 / 6, -1 / 30, 1 / 42, -1 / 30, 5 / 66])
     nodes = np.arange(1, END_TERMS + 1)

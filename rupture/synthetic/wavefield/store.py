@@ -13,9 +13,9 @@ from numpy.typing import ArrayLike, NDArray
 
 from rupture.earth.layers import LayeredModel
 from rupture.errors import InputError
-from rupture.synthetic.wavefield.tables import CODE_VERSION, GreensTable, checked_distances, greens
 from rupture.synthetic.wavefield.integration import Report
 from rupture.synthetic.wavefield.sampling import FrequencyPlan
+from rupture.synthetic.wavefield.tables import CODE_VERSION, GreensTable, checked_distances, greens
 
 LOCKS = 64
 """Lock files are shared by keys, so that their number stays bounded."""
@@ -179,7 +179,9 @@ class GreensStore:
                 file.attrs["code_version"] = CODE_VERSION
                 file["distance_m"] = table.distance_m
                 file["spectra"] = table.spectra
-                file["spectra"].attrs["meaning"] = "distance, element, complex frequency; displacement (m s), rotation (rad s)"
+                file["spectra"].attrs["meaning"] = (
+                    "distance, element, complex frequency; displacement (m s), rotation (rad s)"
+                )
             part.replace(self.folder / f"{key}.h5")
         finally:
             part.unlink(missing_ok=True)

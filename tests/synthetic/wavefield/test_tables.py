@@ -12,7 +12,13 @@ from rupture.synthetic.wavefield.tables import Motion, greens, greens_at_depths
 
 INF = np.full(4, np.inf)
 CRUST = LayeredModel(
-    "crust", [0.0, 2.0, 15.0, 35.0], [4.5, 6.0, 6.6, 8.0], [2.5, 3.46, 3.8, 4.5], [2400.0, 2700.0, 2900.0, 3300.0], INF, INF
+    "crust",
+    [0.0, 2.0, 15.0, 35.0],
+    [4.5, 6.0, 6.6, 8.0],
+    [2.5, 3.46, 3.8, 4.5],
+    [2400.0, 2700.0, 2900.0, 3300.0],
+    INF,
+    INF,
 )
 PLAN = FrequencyPlan(step_s=0.25, samples=240, high_hz=1.0)
 MOMENT = 1e16 * np.array([[1.0, 0.4, -0.7], [0.4, -0.3, 0.6], [-0.7, 0.6, 0.5]])
@@ -42,7 +48,9 @@ def test_rotation_is_half_the_curl_of_five_receivers_50_m_apart():
 def test_layer_split_in_two_changes_nothing():
     rows = [0, 0, 1, 1, 1, 2, 3, 3]
     top = [0.0, 0.7, 2.0, 6.3, 11.0, 15.0, 35.0, 61.0]
-    split = LayeredModel("split", top, *(np.asarray(v)[rows] for v in (CRUST.vp_km_s, CRUST.vs_km_s, CRUST.density_kg_m3, INF, INF)))
+    split = LayeredModel(
+        "split", top, *(np.asarray(v)[rows] for v in (CRUST.vp_km_s, CRUST.vs_km_s, CRUST.density_kg_m3, INF, INF))
+    )
     distance = [10e3, 90e3]
     a, b = (greens(m, 10.0, distance, PLAN).spectra for m in (CRUST, split))
     assert np.abs(a - b).max(axis=(0, 2)) == pytest.approx(0.0, abs=1e-9 * np.abs(a).max())
@@ -86,7 +94,11 @@ def test_records_are_linear_in_the_moment_and_motions_are_derivatives():
     table = greens(CRUST, 10.0, [35e3], PLAN)
     stf = pulse(PLAN)
     parts = sum(
-        MOMENT[i, j] * table.records(np.outer(np.eye(3)[i], np.eye(3)[j]) + np.outer(np.eye(3)[j], np.eye(3)[i]), 0.3, Motion.SENSORS) / 2
+        MOMENT[i, j]
+        * table.records(
+            np.outer(np.eye(3)[i], np.eye(3)[j]) + np.outer(np.eye(3)[j], np.eye(3)[i]), 0.3, Motion.SENSORS
+        )
+        / 2
         for i in range(3)
         for j in range(3)
     )
@@ -94,7 +106,12 @@ def test_records_are_linear_in_the_moment_and_motions_are_derivatives():
     u, v, a, sensors = (table.records(MOMENT, 0.3, m, source_spectrum=stf)[0] for m in Motion)
     middle = slice(3, -3)
     for low, high in ((u, v), (v, a)):
-        slope = (45 * (np.roll(low, -1) - np.roll(low, 1)) - 9 * (np.roll(low, -2) - np.roll(low, 2)) + np.roll(low, -3) - np.roll(low, 3)) / 15
+        slope = (
+            45 * (np.roll(low, -1) - np.roll(low, 1))
+            - 9 * (np.roll(low, -2) - np.roll(low, 2))
+            + np.roll(low, -3)
+            - np.roll(low, 3)
+        ) / 15
         assert np.abs(slope[:, middle] - high[:, middle]).max() < 0.02 * np.abs(high).max()
     assert np.array_equal(sensors[:3], a[:3])
     assert np.array_equal(sensors[3:], v[3:])
