@@ -12,7 +12,8 @@ if TYPE_CHECKING:
     from rupture.synthetic.ray import RayEngine, ray_records
     from rupture.synthetic.scenario import Scenario, demo_scenario, read_scenario, ready_scenarios
     from rupture.synthetic.simulate import SimulatedFiles, ground_motion, simulate
-    from rupture.synthetic.source import Arm, KinematicSource, make_sub_events
+    from rupture.synthetic.source import Arm, KinematicSource
+    from rupture.synthetic.sub_events import make_sub_events
 
 _HOMES = {
     "SubEvents": "engine",
@@ -21,7 +22,7 @@ _HOMES = {
     "Engine": "engine",
     "Arm": "source",
     "KinematicSource": "source",
-    "make_sub_events": "source",
+    "make_sub_events": "sub_events",
     "RayEngine": "ray",
     "ray_records": "ray",
     "CodaSettings": "coda",

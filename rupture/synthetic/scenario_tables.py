@@ -78,7 +78,7 @@ class RuptureTable(Table):
     sub_events: int | None = Field(default=None, ge=20)
     shortest_rise_s: float = Field(default=0.4, gt=0)
     longest_rise_s: float | None = Field(default=None, gt=0)
-    stress_drop_mpa: float = Field(default=5.0, gt=0)
+    stress_drop_mpa: float = Field(default=8.0, gt=0)
     slip_spread: float = Field(default=0.4, ge=0)
     front_spread_s: float = Field(default=0.2, ge=0)
 

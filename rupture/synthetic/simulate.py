@@ -19,6 +19,7 @@ from rupture.progress import Progress
 from rupture.synthetic.coda import ScatteringEngine
 from rupture.synthetic.engine import Engine, Receivers, Sampling, SubEvents
 from rupture.synthetic.faults import spoil_motion, turn_horizontals
+from rupture.synthetic.moment_rate import moment_tensor
 from rupture.synthetic.noise import (
     coloured_noise,
     ground_acceleration,
@@ -26,13 +27,14 @@ from rupture.synthetic.noise import (
     rotation_self_noise,
     translation_self_noise,
 )
-from rupture.synthetic.ray import check_sampling, moment_tensor, ray_records
+from rupture.synthetic.ray import check_sampling, ray_records
 from rupture.synthetic.scaling import brune_stress_drop_pa
 from rupture.synthetic.scenario import Scenario
 from rupture.synthetic.sensors import to_counts
-from rupture.synthetic.source import SHEAR_SPEED_M_S, KinematicSource, level_corner_hz, make_sub_events
+from rupture.synthetic.source import KinematicSource
 from rupture.synthetic.station_files import source_identifier, write_event, write_inventory, write_records
 from rupture.synthetic.stations import Station, make_stations
+from rupture.synthetic.sub_events import SHEAR_SPEED_M_S, level_corner_hz, make_sub_events
 
 TRUTH_NAME = "truth.json"
 
