@@ -2,7 +2,9 @@
 
 from __future__ import annotations
 
+from collections import deque
 from collections.abc import Iterable
+from concurrent.futures import Future, ThreadPoolExecutor
 from fractions import Fraction
 from pathlib import Path
 from typing import Any
@@ -11,6 +13,7 @@ import numpy as np
 from numpy.typing import NDArray
 
 Frame = NDArray[np.uint8]
+_AHEAD = 4  # frames that may wait for the encoder
 
 
 def encode_h264(frames: Iterable[Frame], pixels: tuple[int, int], rate: float, path: Path) -> Path:
@@ -46,10 +49,22 @@ def encode_h264(frames: Iterable[Frame], pixels: tuple[int, int], rate: float, p
             stream.pix_fmt = "yuv420p"
             stream.options = {"crf": "20", "preset": "veryfast"}
             stream.thread_type = "AUTO"
-            for pixels_of_frame in frames:
-                frame = av.VideoFrame.from_ndarray(np.ascontiguousarray(pixels_of_frame), format="rgba")
+
+            def write(frame: Any) -> None:
                 container.mux(stream.encode(frame))
-            container.mux(stream.encode())
+
+            # One frame is encoded while the next is drawn: the encoder works outside Python's lock.
+            with ThreadPoolExecutor(1) as pool:
+                waiting: deque[Future[None]] = deque()
+                for rgba in frames:
+                    waiting.append(
+                        pool.submit(write, av.VideoFrame.from_ndarray(np.ascontiguousarray(rgba), format="rgba"))
+                    )
+                    if len(waiting) > _AHEAD:
+                        waiting.popleft().result()
+                for task in waiting:
+                    task.result()
+            write(None)
         part.replace(path)
     finally:
         part.unlink(missing_ok=True)

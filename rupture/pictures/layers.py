@@ -69,10 +69,7 @@ def ray_end(scene: Scene, site: int, frame: int, reach_km: float) -> Array | Non
 
 def convergence(scene: Scene, site: int) -> float:
     """Angle from north at the site to north on the map in rad: bearing of the centre on the map less its azimuth."""
-    east, north = scene.site_km[site]
-    if np.hypot(east, north) < 1e-6:
-        return 0.0
-    return float(np.arctan2(-east, -north) - np.radians(scene.home_back_azimuth[site]))
+    return float(scene.convergence[site])
 
 
 def draw_rays(axes: Any, scene: Scene, frames: list[int], colours: Colormap, scale: Normalize) -> None:

@@ -17,6 +17,7 @@ from rupture.pictures import layers
 from rupture.pictures import style as look
 from rupture.pictures.answers import energy_series
 from rupture.pictures.basemap import KM, Extent, draw_graticule, draw_land, draw_locator, draw_scale_bar, projected_axes
+from rupture.pictures.clock import PastedText
 from rupture.pictures.encode import encode_h264, encode_images
 from rupture.pictures.frames import field_frames
 from rupture.pictures.scene import Scene, credible_level
@@ -101,7 +102,8 @@ class Animation:
         bar.tick_params(labelsize=5.8)
         bar.locator_params(axis="x", nbins=4)
         picture.text(0.5, 1.2 / height, look.SHORT_CAUTION, ha="center", va="bottom", fontsize=5.6, color=look.MUTED)
-        self.clock_place = (left / width, 1 - 10.0 / height)
+        per_mm = self.pixels[0] / width
+        self.clock = PastedText(round(left * per_mm), round(5.4 * per_mm), 9.0, _DPI)
         self.extent: Extent = extent
 
     def _make_moving(self) -> list[Any]:
@@ -125,8 +127,7 @@ class Animation:
         (self.cursor,) = self.line.plot(
             [0, 0], [0, 1], transform=self.line.get_xaxis_transform(), color=look.INK, linewidth=1.2
         )
-        self.clock = self.picture.text(*self.clock_place, "", fontsize=9.0, va="bottom", family="DejaVu Sans Mono")
-        moving = [self.wedges, self.rays, self.cells, self.areas, self.trail, self.front, star, self.cursor, self.clock]
+        moving = [self.wedges, self.rays, self.cells, self.areas, self.trail, self.front, star, self.cursor]
         for order, artist in enumerate(moving):
             # Above all that stays, as blitting draws them, so that both ways of drawing give the same picture.
             artist.set_zorder(20 + order)
@@ -162,7 +163,7 @@ class Animation:
         fronts = scene.front_km[:, frame]
         self.front.set_data(fronts[:, 0] * KM, fronts[:, 1] * KM)
         self.cursor.set_xdata([now, now])
-        self.clock.set_text(f"{now:+6.1f} s   {scene.utc(now)} UTC")
+        self.clock.text = f"{now:+6.1f} s   {scene.utc(now)} UTC"
 
     def _set_cells(self, values: Array) -> None:
         """Show one frame's cells; of a regular grid only the rectangle in which there is something to see."""
@@ -185,6 +186,12 @@ class Animation:
         )
         self.cells.set_extent(extent)
 
+    def _finished(self) -> Frame:
+        canvas: Any = self.picture.canvas
+        frame = np.asarray(canvas.buffer_rgba())
+        self.clock.paste(frame)
+        return frame
+
     def frames(self, progress: Callable[[int, int], None] | None = None) -> Iterator[Frame]:
         """Yield every frame, (height, width, 4) RGBA; the buffer is used again by the next one."""
         canvas: Any = self.picture.canvas
@@ -203,7 +210,7 @@ class Animation:
                 for artist in self.moving:
                     artist.draw(renderer)
                 canvas.restore_region(locator)
-                yield np.asarray(canvas.buffer_rgba())
+                yield self._finished()
                 if progress is not None:
                     progress(frame + 1, count)
 
@@ -216,7 +223,7 @@ class Animation:
             for frame in range(self.scene.source_time.size):
                 self.set_frame(frame)
                 canvas.draw()
-                yield np.asarray(canvas.buffer_rgba())
+                yield self._finished()
 
 
 def make_movie(

@@ -268,6 +268,13 @@ class Scene:
         )
         return np.degrees(back)
 
+    @cached_property
+    def convergence(self) -> Array:
+        """Shape (sites,): angle in rad that turns north at the site into north on the map."""
+        east, north = self.site_km.T
+        on_map = np.arctan2(-east, -north)
+        return np.where(np.hypot(east, north) < 1e-6, 0.0, on_map - np.radians(self.home_back_azimuth))
+
     def ray_frames(self, count: int = 3) -> list[int]:
         """Frames at which rays are shown: spread over the time with a source, its ends left out a little."""
         frames = np.flatnonzero(self.active)

@@ -67,8 +67,8 @@ def test_frames_follow_the_source(short: Result) -> None:
     scene = animation.scene
     for frame in np.flatnonzero(scene.active):
         animation.set_frame(int(frame))
-        assert f"{scene.source_time[frame]:+.1f} s" in animation.clock.get_text()
-        assert scene.utc(scene.source_time[frame]) in animation.clock.get_text()
+        assert f"{scene.source_time[frame]:+.1f} s" in animation.clock.text
+        assert scene.utc(scene.source_time[frame]) in animation.clock.text
         shown = np.array(animation.front.get_data()).T / 1e3
         assert shown == pytest.approx(scene.front_km[:, frame])
         west, east, south, north = (v / 1e3 for v in animation.cells.get_extent())
@@ -138,3 +138,28 @@ def test_what_cannot_be_a_movie_is_said(short: Result, tmp_path: Path) -> None:
         make_movie(short, tmp_path / "movie.mp4", shape="round")
     with pytest.raises(InputError, match="only directions"):
         make_movie(Result(short.summary, short.sites, short.direction), tmp_path / "movie.mp4")
+
+
+def test_clock_letters_are_pasted_where_they_belong() -> None:
+    from rupture.pictures.clock import LETTERS, PastedText
+
+    with look.style_context():
+        clock = PastedText(10, 5, 9.0, 160.0)
+    frame = np.full((60, 400, 4), 255, np.uint8)
+    clock.text = "1 1:8"
+    clock.paste(frame)
+    ink = [(frame[:, 10 + k * clock.width : 10 + (k + 1) * clock.width, 0] < 128).sum() for k in range(5)]
+    assert ink[0] == ink[2] > 0
+    assert ink[1] == 0
+    assert ink[4] > ink[0] > ink[3] > 0
+    assert (frame[:, :10] == 255).all()
+    assert (frame[:, 10 + 5 * clock.width :] == 255).all()
+    for letter in LETTERS.replace(" ", ""):
+        frame[...] = 255
+        clock.text = letter
+        clock.paste(frame)
+        rows, columns = np.nonzero(frame[..., 0] < 200)
+        # The whole letter lies within its box, with the box's edge free above and below.
+        assert rows.min() > 5
+        assert rows.max() < 5 + clock.height - 1
+        assert columns.min() >= 10
