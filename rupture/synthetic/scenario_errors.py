@@ -16,6 +16,7 @@ _KINDS = {
     "bool_type": "must be true or false",
     "datetime_type": "must be a time such as 2031-05-14T03:21:07Z, without quotes",
     "tuple_type": "must be a list in brackets",
+    "string_pattern_mismatch": "may hold only capital letters and digits, and not more of them than miniSEED has room for",
     "model_type": "must be a table",
     "model_attributes_type": "must be a table",
 }
@@ -42,16 +43,30 @@ def sentences(error: ValidationError, model: type[BaseModel], where: str) -> lis
             close = difflib.get_close_matches(str(path[-1]), names, n=1)
             hint = f" (did you mean '{close[0]}'?)" if close else f" (known: {', '.join(sorted(names))})"
             text = f"{where}: unknown key '{key}'{hint}"
-        elif item["type"] == "missing":
+        elif item["type"] == "too_short" and item["input"]:
+            continue  # entries were given, each with a fault of its own that is listed
+        elif item["type"] == "union_tag_invalid":
+            known = [name.strip("' ") for name in item["ctx"]["expected_tags"].split(",")]
+            close = difflib.get_close_matches(item["ctx"]["tag"], known, n=1)
+            hint = f" (did you mean '{close[0]}'?)" if close else f" (known: {', '.join(known)})"
+            text = f"{where}: '{key}.kind' = '{item['ctx']['tag']}' is no kind of fault{hint}"
+        elif item["type"] in {"missing", "union_tag_not_found"}:
+            key = f"{key}.kind" if item["type"] == "union_tag_not_found" else key
             text = f"{where}: the key '{key}' is missing"
         elif item["type"] == "value_error":
             text = f"{where}: {key + ': ' if key else ''}{item['ctx']['error']}"
         else:
             said = _KINDS.get(item["type"], item["msg"][0].lower() + item["msg"][1:])
-            text = f"{where}: '{key}' = {item['input']!r} {said.replace('input ', '')}"
+            text = f"{where}: '{key}' = {_short(item['input'])} {said.replace('input ', '')}"
         # Unions report one fault for each branch; the first speaks for all.
         out.setdefault(f"{key} {item['type'] == 'extra_forbidden'}", text)
     return list(out.values())
+
+
+def _short(value: Any) -> str:
+    """Return a value as the file shows it, cut where it is long."""
+    text = repr(list(value) if isinstance(value, tuple) else value)
+    return text if len(text) <= 60 else text[:57] + "..."
 
 
 def _is_branch(part: str) -> bool:
