@@ -154,7 +154,8 @@ def _time_bar(
     """Draw the colour bar of source time, with marks at the times of the rays."""
     axes = picture.axes_mm(*place)
     picture.colorbar(ScalarMappable(scale, style.time_colours()), cax=axes, orientation="horizontal")
-    axes.set_xlabel("source time after origin (s), triangles: rays shown", labelpad=1.5)
+    quantity = "time after S from the hypocentre" if scene.lagged else "source time after origin"
+    axes.set_xlabel(f"{quantity} (s), triangles: rays shown", labelpad=1.5)
     axes.plot(
         scene.source_time[frames], np.full(len(frames), 1.35), transform=axes.get_xaxis_transform(), marker="v", markersize=3.6,
         color=style.INK, linestyle="none", clip_on=False,

@@ -39,6 +39,7 @@ def page_data(scene: Scene) -> dict[str, Any]:
     extent = layers.map_extent(scene, aspect=1.7)
     out: dict[str, Any] = {
         "origin": scene.origin.isoformat(),
+        "lagged": scene.lagged,
         "times": _numbers(scene.source_time, 3),
         "frame": _first_frame(scene),
         "map": _map(scene, extent),

@@ -19,6 +19,8 @@ Array = NDArray[np.float64]
 RAY_PROBABILITY = 0.5
 """A site's ray is drawn where a coherent wave is at least as likely as none."""
 
+_LONGEST_LAG_S = 120.0
+
 RAY_WIDTH = 0.68
 """Share of a site's direction posterior within the width that its ray is drawn with."""
 
@@ -112,13 +114,22 @@ class Scene:
         """Return longitude and latitude of (..., 2) km."""
         return self.plane.to_geographic(km[..., 0] * 1e3, km[..., 1] * 1e3)
 
+    @property
+    def lagged(self) -> bool:
+        """Whether only directions are known: frames then count time after S from the hypocentre at each site."""
+        return self.result.map is None and self.result.track is None
+
     @cached_property
     def source_time(self) -> Array:
-        """Frame times; empty when nothing was mapped."""
+        """Frame times in s: source time, or time after S where nothing was mapped (see `lagged`)."""
         for dataset in (self.result.map, self.result.track):
             if dataset is not None:
                 return dataset["source_time"].values.astype(float)
-        return np.empty(0)
+        time = self.direction["time"].values.astype(float)
+        coherent = np.nan_to_num(self.direction["probability_coherent"].values).max(axis=1) >= RAY_PROBABILITY
+        lag = np.where(coherent & self.used[:, None], time - self.result.sites["s_arrival"].values[:, None], 0.0)
+        step = time[1] - time[0] if time.size > 1 else 1.0
+        return np.arange(0.0, np.clip(np.nanmax(lag, initial=0.0), 5.0, _LONGEST_LAG_S) + step / 2, step)
 
     @cached_property
     def is_trace(self) -> bool:
@@ -168,7 +179,9 @@ class Scene:
 
     @cached_property
     def active(self) -> NDArray[np.bool_]:
-        """Shape (frames,): frames in which a source is more likely than none."""
+        """Shape (frames,): frames in which a source is more likely than none, or a site has a ray where none was sought."""
+        if self.lagged:
+            return np.any(np.nan_to_num(self.rays[self.used, :, 3]) >= RAY_PROBABILITY, axis=0)
         track = self.result.track
         if track is not None and "active_probability" in track:
             return np.nan_to_num(np.asarray(track["active_probability"].values, float)) >= 0.5

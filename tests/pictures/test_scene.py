@@ -194,3 +194,14 @@ def test_directions_of_fewer_sites_in_another_order_find_their_site(unilateral: 
         else:
             assert np.isnan(scene.rays[s]).all()
             assert np.isnan(predicted_curves(scene)[:, s]).all()
+
+
+def test_without_a_map_rays_are_chosen_by_time_after_s(unilateral: Result) -> None:
+    scene = Scene.of(Result(unilateral.summary, unilateral.sites, unilateral.direction))
+    assert scene.lagged
+    frames = scene.ray_frames(3)
+    assert len(frames) == 3
+    s = int(np.flatnonzero(scene.used)[0])
+    at = float(unilateral.sites["s_arrival"][s]) + scene.source_time[frames[0]]
+    share = unilateral.direction["probability"].isel(site=s).sel(time=at, method="nearest").values
+    assert scene.rays[s, frames[0], 0] == unilateral.direction["back_azimuth"].values[np.argmax(share)]

@@ -45,6 +45,7 @@
   const points = ["N", "NNE", "NE", "ENE", "E", "ESE", "SE", "SSE", "S", "SSW", "SW", "WSW", "W", "WNW", "NW", "NNW"];
   const compass = (x, y) => points[Math.round((((Math.atan2(x, y) * 180) / Math.PI + 360) % 360) / 22.5) % 16];
   const clockText = (t) => {
+    if (data.lagged) return `${t.toFixed(1)} s after S from the hypocentre`;
     const moment = new Date(Date.parse(data.origin) + Math.round(t * 10) * 100).toISOString();
     return `${t < 0 ? "−" : "+"}${Math.abs(t).toFixed(1)} s · ${moment.slice(0, 10)} ${moment.slice(11, 21)} UTC`;
   };
@@ -277,7 +278,7 @@
     if (!state.at) { output.textContent = ""; return; }
     const [x, y] = state.at, found = cellAt(x, y), field = data.fields[state.field];
     const away = `${Math.hypot(x, y).toFixed(0)} km ${compass(x, y)} of the epicentre`;
-    if (!found) { output.textContent = `${away}: no cell here`; return; }
+    if (!found) { output.textContent = field ? `${away}: no cell here` : away; return; }
     const lon = data.cells.longitude[found.place] / 1e4, lat = data.cells.latitude[found.place] / 1e4;
     const mean = field.block > 1 ? `, mean of ${field.block} × ${field.block} cells` : "";
     output.textContent = `${degrees(lat, "N", "S")} ${degrees(lon, "E", "W")}, ${away}: ${field.label} ${digits(value(field, state.frame, found.cell))}${mean}`;
@@ -461,6 +462,7 @@
     slider.setAttribute("aria-valuetext", text);
     $("clock").textContent = text;
     const field = data.fields[state.field];
+    if (spoken && !field) canvas.setAttribute("aria-label", `Map of ${data.sites.length} sites and the epicentre, rays at ${text}.`);
     if (field && spoken) {
       const [x, y, radius] = field.summary[state.frame];
       const place = Math.hypot(x, y) < 1 ? "at the epicentre" : `${Math.hypot(x, y).toFixed(0)} km ${compass(x, y)} of the epicentre`;
@@ -534,12 +536,7 @@
 
   applyTheme();
   slider.max = String(Math.max(0, times.length - 1));
-  const mapped = times.length > 0;
-  if (!mapped) {
-    $("no-map").hidden = false;
-    document.querySelectorAll(".player, #energy").forEach((node) => { node.hidden = true; });
-    times.push(0);
-  }
+  if (data.lagged) { $("no-map").hidden = false; $("time").setAttribute("aria-label", "Time after S"); $("energy").hidden = true; }
   if (data.fields.length) { chooseField(); drawEnergy(); } else { $("field-choice").hidden = true; }
   if (data.along) alongChart = drawAlong();
   if (data.posterior) drawPosteriors();
