@@ -1,0 +1,234 @@
+"""Fit of line sources to all windows at once: kind, direction, speed, length, with intervals."""
+
+from __future__ import annotations
+
+from collections.abc import Callable, Sequence
+from dataclasses import dataclass, replace
+
+import numpy as np
+from numpy.typing import NDArray
+
+from rupture.direction import SiteDirection
+from rupture.earth import Earth
+from rupture.errors import InputError
+from rupture.event import Event
+from rupture.front.lines import KINDS, PARAMETERS, LinePrior, to_parameters
+from rupture.front.sampler import temper
+from rupture.front.windows import Windows, lay_out
+from rupture.mapping.grid import subsurface_length_km
+
+Array = NDArray[np.float64]
+
+ANGLES = ("azimuth_rad", "second_azimuth_rad")
+
+
+@dataclass(frozen=True)
+class FitSettings:
+    """How line sources are fitted.
+
+    Attributes
+    ----------
+    particles, moves
+        Size of the population and moves of each at each temperature; errors of the answer fall with their root.
+    hop_s
+        Distance between the windows used, s.
+    slowness_spread
+        Standard deviation of the log of true over predicted apparent slowness.
+    power_sigma
+        Log-scatter of window power about a line of even strength.
+    power_share
+        Weight of the power term relative to the directions; 0 fits directions alone.
+    trust
+        Share of the windows' log-likelihood that counts: what one model of rays does not know makes windows less
+        independent than their noise says.
+    kind_threshold
+        Probability from which a kind is named; below it the answer is "undetermined".
+    widest_direction_deg
+        A moving rupture whose 90 % interval of direction is wider than this is "undetermined".
+    """
+
+    particles: int = 600
+    moves: int = 2
+    hop_s: float = 1.0
+    slowness_spread: float = 0.25
+    power_sigma: float = 0.8
+    power_share: float = 1.0
+    trust: float = 0.5
+    kind_threshold: float = 0.8
+    widest_direction_deg: float = 90.0
+
+    def __post_init__(self) -> None:
+        if self.particles < 50 or self.moves < 1:
+            raise InputError("particles must be at least 50 and moves at least 1")
+        if not self.hop_s > 0 or not self.slowness_spread > 0 or not self.power_sigma > 0:
+            raise InputError("hop_s, slowness_spread and power_sigma must be positive")
+        if not 0 < self.trust <= 1 or not self.power_share >= 0 or not 0.34 <= self.kind_threshold < 1:
+            raise InputError("trust must lie in (0, 1], power_share be at least 0, kind_threshold lie in [0.34, 1)")
+
+
+@dataclass(frozen=True)
+class RuptureFit:
+    """Posterior of the line-source fit.
+
+    Attributes
+    ----------
+    kind
+        stationary, unilateral, bilateral or undetermined.
+    kind_probability
+        Probability of each kind; kinds are equally likely beforehand.
+    reason
+        Why it is undetermined; empty otherwise.
+    samples
+        SI parameters per kind in the order of `parameters`, shape (draws, 14) each.
+    parameters
+        Names of the columns.
+    likelihood
+        Log-likelihood per draw and site of each kind, for resampling without a new fit.
+    """
+
+    kind: str
+    kind_probability: dict[str, float]
+    reason: str
+    samples: dict[str, Array]
+    likelihood: dict[str, Array]
+    parameters: tuple[str, ...] = PARAMETERS
+
+    @property
+    def likeliest(self) -> str:
+        """The kind of highest probability, named or not."""
+        return max(self.kind_probability, key=lambda kind: self.kind_probability[kind])
+
+    def column(self, name: str, kind: str | None = None) -> Array:
+        """Return the draws of a parameter for a kind, by default the likeliest."""
+        return self.samples[kind or self.likeliest][:, self.parameters.index(name)]
+
+    def interval(self, name: str, kind: str | None = None) -> tuple[float, float, float]:
+        """Return best (median), p05 and p95 of a parameter; angles on the circle, in [0, 2 pi)."""
+        return interval(self.column(name, kind), circular=name in ANGLES)
+
+    def best(self, kind: str | None = None) -> Array:
+        """Return the draw nearest to the medians of azimuth, speed, length and duration, shape (14,)."""
+        draws = self.samples[kind or self.likeliest]
+        distance = np.zeros(draws.shape[0])
+        for k, name in enumerate(self.parameters):
+            middle, low, high = interval(draws[:, k], circular=name in ANGLES)
+            width = (high - low) % (2 * np.pi) if name in ANGLES else high - low
+            offset = (draws[:, k] - middle + np.pi) % (2 * np.pi) - np.pi if name in ANGLES else draws[:, k] - middle
+            distance += (offset / width) ** 2 if width > 0 else 0.0
+        best: Array = draws[int(np.argmin(distance))]
+        return best
+
+
+def interval(values: Array, circular: bool = False, weights: Array | None = None) -> tuple[float, float, float]:
+    """Return median, p05 and p95 of draws; a circle is cut opposite the mean direction.
+
+    Examples
+    --------
+    >>> interval(np.array([1.0, 2.0, 3.0]))[0]
+    2.0
+    """
+    weights = np.full(values.size, 1.0 / values.size) if weights is None else weights / weights.sum()
+    turn = 0.0
+    if circular:
+        turn = float(np.angle(np.sum(weights * np.exp(1j * values))))
+        values = (values - turn + np.pi) % (2 * np.pi) - np.pi
+    order = np.argsort(values)
+    reach = np.cumsum(weights[order]) - 0.5 * weights[order]
+    low, middle, high = np.interp([0.05, 0.5, 0.95], reach, values[order]) + turn
+    if circular:
+        low, middle, high = (float(v % (2 * np.pi)) for v in (low, middle, high))
+    return float(middle), float(low), float(high)
+
+
+def prior_for(event: Event, longest_m: float | None = None) -> LinePrior:
+    """Return priors scaled to the event's magnitude (Wells & Coppersmith 1994), or wide ones when it has none."""
+    if event.magnitude is None:
+        return LinePrior(length_log_width=1.2)
+    length = subsurface_length_km(event.magnitude) * 1e3
+    if longest_m is not None:
+        length = min(length, longest_m)
+    return LinePrior(length_m=length, duration_s=max(2.0, 0.75 * length / 2800.0))
+
+
+def fit_rupture(
+    directions: Sequence[SiteDirection],
+    site_longitude_deg: Sequence[float],
+    site_latitude_deg: Sequence[float],
+    event: Event,
+    earth: Earth,
+    settings: FitSettings,
+    seed: int,
+    progress: Callable[[int, int], None] | None = None,
+    prior: LinePrior | None = None,
+) -> RuptureFit:
+    """Fit stationary, unilateral and bilateral line sources.
+
+    Parameters
+    ----------
+    directions, site_longitude_deg, site_latitude_deg
+        Per site; at least one.
+    event, earth
+        Hypocentre and travel times.
+    settings, seed
+        How, and the random numbers.
+    progress
+        Called with (kinds done, kinds).
+    prior
+        By default from the magnitude.
+
+    Raises
+    ------
+    DataError
+        When no site has a usable window.
+    """
+    prior = prior or prior_for(event)
+    longest_s = 3.0 * prior.length_m / 2800.0 + 20.0
+    windows = lay_out(
+        directions, site_longitude_deg, site_latitude_deg, event, earth, longest_s,
+        settings.slowness_spread, settings.hop_s, settings.power_sigma, settings.power_share,
+    )  # fmt: skip
+    return fit_windows(windows, prior, settings, seed, progress)
+
+
+def fit_windows(
+    windows: Windows, prior: LinePrior, settings: FitSettings, seed: int, progress: Callable[[int, int], None] | None = None
+) -> RuptureFit:
+    """Fit line sources to windows that are laid out already; see `fit_rupture`."""
+    samples, likelihood, evidence = {}, {}, {}
+    for number, kind in enumerate(KINDS):
+        rng = np.random.default_rng((seed, number))
+
+        def log_likelihood(draws: Array, kind: str = kind) -> Array:
+            total: Array = settings.trust * windows.log_likelihood(to_parameters(kind, draws)).sum(axis=1)
+            return total
+
+        found = temper(
+            lambda r, n, kind=kind: prior.draw(kind, r, n),
+            lambda d, kind=kind: prior.log_density(kind, d),
+            log_likelihood,
+            settings.particles,
+            settings.moves,
+            rng,
+        )
+        samples[kind] = to_parameters(kind, found.draws)
+        likelihood[kind] = settings.trust * windows.log_likelihood(samples[kind])
+        evidence[kind] = found.log_evidence
+        if progress is not None:
+            progress(number + 1, len(KINDS))
+    largest = max(evidence.values())
+    weight = {kind: float(np.exp(value - largest)) for kind, value in evidence.items()}
+    share = {kind: value / sum(weight.values()) for kind, value in weight.items()}
+    fit = RuptureFit(max(share, key=lambda kind: share[kind]), share, "", samples, likelihood)
+    return _judge(fit, settings)
+
+
+def _judge(fit: RuptureFit, settings: FitSettings) -> RuptureFit:
+    kind = fit.kind
+    if fit.kind_probability[kind] < settings.kind_threshold:
+        return replace(fit, kind="undetermined", reason="no kind of rupture is likely enough to be named")
+    if kind != "stationary":
+        _, low, high = fit.interval("azimuth_rad")
+        width = np.degrees((high - low) % (2 * np.pi))
+        if width > settings.widest_direction_deg:
+            return replace(fit, kind="undetermined", reason=f"the direction is open by {width:.0f} degrees")
+    return fit

@@ -1,0 +1,175 @@
+"""Likelihood of line sources: every window of every site as a mixture over the fronts that can be heard in it."""
+
+from __future__ import annotations
+
+import numba
+import numpy as np
+
+# Columns of a parameter table (the order of rupture.front.lines.PARAMETERS).
+EAST, NORTH, START, AZIMUTH, SPEED, LENGTH, AZIMUTH_2, SPEED_2, LENGTH_2, DURATION, CODA, CODA_TIME, STRAY, P_SHARE = range(14)
+
+NODES = 24
+"""Points that stand for one arm: a front of 100 km is then sampled every 4 km, finer than any window resolves."""
+
+CODA_STRIDE = 3
+"""Scattered waves come from every third node: they are too diffuse to need more."""
+
+ISOTROPIC_CODA = 0.5
+"""Share of scattered waves that come from anywhere rather than from the place that radiated them."""
+
+
+@numba.njit(cache=True)
+def place_nodes(theta, east, north, time, weight):  # pragma: no cover - compiled
+    """Fill the nodes of both arms; returns how many there are. Weights add up to one (power by arm length or time)."""
+    x0, y0, t0 = theta[EAST], theta[NORTH], theta[START]
+    if theta[LENGTH] <= 0.0:
+        for j in range(NODES):
+            east[j], north[j] = x0, y0
+            time[j] = t0 + theta[DURATION] * (j + 0.5) / NODES
+            weight[j] = 1.0 / NODES
+        return NODES
+    total = theta[LENGTH] + theta[LENGTH_2]
+    count = 0
+    for arm in range(2):
+        length = theta[LENGTH] if arm == 0 else theta[LENGTH_2]
+        if length <= 0.0:
+            continue
+        azimuth = theta[AZIMUTH] if arm == 0 else theta[AZIMUTH_2]
+        speed = theta[SPEED] if arm == 0 else theta[SPEED_2]
+        for j in range(NODES):
+            reach = length * (j + 0.5) / NODES
+            east[count] = x0 + reach * np.sin(azimuth)
+            north[count] = y0 + reach * np.cos(azimuth)
+            time[count] = t0 + reach / speed
+            weight[count] = length / total / NODES
+            count += 1
+    return count
+
+
+@numba.njit(cache=True)
+def _hann(x):  # pragma: no cover - compiled
+    return 0.5 * (1.0 + np.cos(2.0 * np.pi * x)) if abs(x) < 0.5 else 0.0
+
+
+@numba.njit(cache=True)
+def _site_log_likelihood(
+    theta, count, east, north, time, weight, ratio, log_power, window_time, window_s, share, place, tables, grid, direct, coda
+):  # pragma: no cover - compiled
+    """One site. `ratio` is (T, A, P); `tables` is (2, 2, D): time and log slowness of P, then S, at grid[0] m steps."""
+    windows, angles, nodes_p = ratio.shape
+    step_m, log_p0, log_step = grid
+    hop = window_time[1] - window_time[0]
+    half = 0.5 * window_s
+    coda_time = theta[CODA_TIME]
+    for t in range(windows):
+        direct[0, t] = 0.0
+        direct[1, t] = 0.0
+        coda[0, t] = 0.0
+        coda[1, t] = 0.0
+    for j in range(count):
+        de = east[j] - place[0]
+        dn = north[j] - place[1]
+        distance = np.sqrt(de * de + dn * dn)
+        back = np.arctan2(de, dn) + place[2]
+        a = int(np.floor(back / (2.0 * np.pi) * angles + 0.5)) % angles
+        spreading = (place[3] / max(distance, 5e3)) ** 2
+        at = distance / step_m
+        k = min(int(at), tables.shape[2] - 2)
+        part = at - k
+        for phase in range(2):
+            strength = weight[j] * spreading * (theta[P_SHARE] if phase == 0 else 1.0)
+            arrival = time[j] + (1.0 - part) * tables[phase, 0, k] + part * tables[phase, 0, k + 1]
+            log_slow = (1.0 - part) * tables[phase, 1, k] + part * tables[phase, 1, k + 1]
+            b = int(np.floor((log_slow - log_p0) / log_step + 0.5))
+            b = min(max(b, 0), nodes_p - 1)
+            first = max(0, int(np.ceil((arrival - half - window_time[0]) / hop)))
+            last = min(windows - 1, int(np.floor((arrival + half - window_time[0]) / hop)))
+            for t in range(first, last + 1):
+                g = strength * _hann((window_time[t] - arrival) / window_s) * 2.0 / window_s
+                direct[0, t] += g
+                direct[1, t] += g * ratio[t, a, b]
+            if j % CODA_STRIDE == 1:
+                amount = CODA_STRIDE * theta[CODA] * strength / coda_time
+                begin = max(0, int(np.ceil((arrival - window_time[0]) / hop)))
+                decay = np.exp(-hop / coda_time)
+                g = amount * np.exp(-(window_time[begin] - arrival) / coda_time) if begin < windows else 0.0
+                for t in range(begin, windows):
+                    coda[0, t] += g
+                    coda[1, t] += g * (ISOTROPIC_CODA + (1.0 - ISOTROPIC_CODA) * ratio[t, a, b])
+                    g *= decay
+    total = 0.0
+    number = 0.0
+    mean = 0.0
+    square = 0.0
+    peak = 0.0
+    for t in range(windows):
+        peak = max(peak, direct[0, t] + coda[0, t])
+    floor = 1e-4 * peak
+    for t in range(windows):
+        power = direct[0, t] + coda[0, t] + floor
+        if np.isnan(log_power[t]):
+            continue
+        mixed = (direct[1, t] + coda[1, t] + floor) / power
+        total += share * np.log((1.0 - theta[STRAY]) * mixed + theta[STRAY])
+        misfit = log_power[t] - np.log(power)
+        number += 1.0
+        mean += misfit
+        square += misfit * misfit
+    return total, number, mean, square
+
+
+@numba.njit(parallel=True, cache=True)
+def log_likelihoods(
+    particles, first, ratio, log_power, window_time, window_s, share, places, tables, grid, power_sigma, power_share
+):  # pragma: no cover - compiled
+    """Return the log-likelihood of each row of a parameter table, shape (particles, sites).
+
+    Parameters
+    ----------
+    particles
+        Shape (N, 14), SI units.
+    first
+        First row of each site in the arrays over all windows, shape (sites + 1,).
+    ratio
+        Posterior ratios of all windows of all sites, shape (windows, A, P), slowness already blurred.
+    log_power
+        Natural log of window power, NaN where the window does not count, shape (windows,).
+    window_time
+        Window centres in s, shape (windows,).
+    window_s, share
+        Window length in s and share of an independent observation, shape (sites,).
+    places
+        East, north in m, turn from plane north to true north in rad, reference distance in m: shape (sites, 4).
+    tables, grid
+        Time and log slowness of P and S at equal distance steps; (step in m, log of first slowness, log step).
+    power_sigma
+        Standard deviation of the log of window power about the model.
+    power_share
+        Weight of the power term.
+    """
+    count = particles.shape[0]
+    sites = first.size - 1
+    longest = 0
+    for s in range(sites):
+        longest = max(longest, first[s + 1] - first[s])
+    out = np.zeros((count, sites))
+    for i in numba.prange(count):
+        east = np.empty(2 * NODES)
+        north = np.empty(2 * NODES)
+        time = np.empty(2 * NODES)
+        weight = np.empty(2 * NODES)
+        direct = np.empty((2, longest))
+        coda = np.empty((2, longest))
+        nodes = place_nodes(particles[i], east, north, time, weight)
+        for s in range(sites):
+            a, b = first[s], first[s + 1]
+            total, number, mean, square = _site_log_likelihood(
+                particles[i], nodes, east, north, time, weight, ratio[a:b], log_power[a:b], window_time[a:b],
+                window_s[s], share[s], places[s], tables, grid, direct, coda,
+            )
+            if number > 1.0:
+                # The site's amplification is unknown: its mean misfit is free.
+                spread = square - mean * mean / number
+                total -= 0.5 * power_share * share[s] * spread / power_sigma**2
+            out[i, s] = total
+    return out

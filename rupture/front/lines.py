@@ -1,0 +1,130 @@
+"""Line-source models and what is believed of them before the records are looked at."""
+
+from __future__ import annotations
+
+from dataclasses import dataclass
+
+import numpy as np
+from numpy.typing import NDArray
+
+from rupture.front.kernels import (
+    AZIMUTH, AZIMUTH_2, CODA, CODA_TIME, DURATION, EAST, LENGTH, LENGTH_2, NORTH, P_SHARE, SPEED, SPEED_2, START, STRAY,
+)  # fmt: skip
+
+Array = NDArray[np.float64]
+
+PARAMETERS = (
+    "east_m", "north_m", "start_time_s", "azimuth_rad", "speed_m_s", "length_m", "second_azimuth_rad", "second_speed_m_s",
+    "second_length_m", "duration_s", "coda_ratio", "coda_time_s", "stray_share", "p_share",
+)  # fmt: skip
+
+KINDS = ("stationary", "unilateral", "bilateral")
+
+_LOG = (SPEED, LENGTH, SPEED_2, DURATION, CODA, CODA_TIME, STRAY, P_SHARE)
+_COMMON = (EAST, NORTH, START, CODA, CODA_TIME, STRAY, P_SHARE)
+FREE = {
+    "stationary": (*_COMMON, DURATION),
+    "unilateral": (*_COMMON, AZIMUTH, SPEED, LENGTH),
+    "bilateral": (*_COMMON, AZIMUTH, SPEED, LENGTH, AZIMUTH_2, SPEED_2, LENGTH_2),
+}
+"""Parameters of each kind. In the sampler's coordinates positive ones are logarithms, the second azimuth is the bend from
+straight on, and the second length is its ratio to the first."""
+
+
+@dataclass(frozen=True)
+class LinePrior:
+    """Priors; all widths are one standard deviation.
+
+    Attributes
+    ----------
+    place_m
+        Of the hypocentre, in m, east and north each.
+    start_s
+        Of the start of radiation about the origin time, in s.
+    speed_m_s
+        Range of rupture speeds, uniform in the logarithm: published ones run from under 1 to about 6 km/s.
+    length_m, length_log_width
+        Median and log-width of the total length. The median follows Wells & Coppersmith (1994); the width of a factor of
+        two is twice their scatter.
+    shortest_ratio
+        Least ratio of the shorter to the longer arm of a bilateral rupture; below it the rupture counts as unilateral.
+    bend_rad
+        Of the angle by which the second arm departs from straight on.
+    duration_s, duration_log_width
+        Median and log-width of the duration of a stationary source: as long as a rupture of median length takes.
+    """
+
+    place_m: float = 3e3
+    start_s: float = 0.7
+    speed_m_s: tuple[float, float] = (700.0, 7000.0)
+    length_m: float = 50e3
+    length_log_width: float = 0.7
+    shortest_ratio: float = 0.2
+    bend_rad: float = 0.2
+    duration_s: float = 20.0
+    duration_log_width: float = 0.8
+
+    def draw(self, kind: str, rng: np.random.Generator, count: int) -> Array:
+        """Return draws in the sampler's coordinates, shape (count, free parameters)."""
+        return np.stack([self._draw_one(p, rng, count) for p in FREE[kind]], axis=1)
+
+    def _draw_one(self, parameter: int, rng: np.random.Generator, count: int) -> Array:
+        if parameter == AZIMUTH:
+            return rng.uniform(0, 2 * np.pi, count)
+        if parameter in (SPEED, SPEED_2):
+            return rng.uniform(*np.log(self.speed_m_s), count)
+        if parameter == LENGTH_2:
+            return rng.uniform(self.shortest_ratio, 1.0, count)
+        centre, width = self._normal(parameter)
+        return rng.normal(centre, width, count)
+
+    def _normal(self, parameter: int) -> tuple[float, float]:
+        return {
+            EAST: (0.0, self.place_m),
+            NORTH: (0.0, self.place_m),
+            START: (0.0, self.start_s),
+            LENGTH: (float(np.log(self.length_m)), self.length_log_width),
+            AZIMUTH_2: (0.0, self.bend_rad),
+            DURATION: (float(np.log(self.duration_s)), self.duration_log_width),
+            CODA: (np.log(0.5), 0.8),
+            CODA_TIME: (np.log(10.0), 0.5),
+            STRAY: (np.log(0.1), 0.6),
+            P_SHARE: (np.log(0.05), 0.7),
+        }[parameter]
+
+    def log_density(self, kind: str, draws: Array) -> Array:
+        """Return the log prior density of draws up to each kind's normalisation, shape (count,); -inf outside."""
+        total = np.zeros(draws.shape[0])
+        low, high = np.log(self.speed_m_s)
+        for column, parameter in enumerate(FREE[kind]):
+            value = draws[:, column]
+            if parameter == AZIMUTH:
+                continue
+            if parameter in (SPEED, SPEED_2):
+                total[(value < low) | (value > high)] = -np.inf
+            elif parameter == LENGTH_2:
+                total[(value < self.shortest_ratio) | (value > 1.0)] = -np.inf
+            else:
+                centre, width = self._normal(parameter)
+                total -= 0.5 * ((value - centre) / width) ** 2
+                if parameter == STRAY:
+                    total[value > np.log(0.9)] = -np.inf
+        return total
+
+
+def to_parameters(kind: str, draws: Array) -> Array:
+    """Turn the sampler's coordinates into SI parameters, shape (count, 14), in the order of `PARAMETERS`."""
+    out = np.zeros((draws.shape[0], len(PARAMETERS)))
+    for column, parameter in enumerate(FREE[kind]):
+        out[:, parameter] = np.exp(draws[:, column]) if parameter in _LOG else draws[:, column]
+    if kind == "bilateral":
+        # The first azimuth is the longer arm's; the total length is what the magnitude speaks of.
+        ratio = out[:, LENGTH_2].copy()
+        total = out[:, LENGTH].copy()
+        out[:, LENGTH], out[:, LENGTH_2] = total / (1 + ratio), total * ratio / (1 + ratio)
+        out[:, AZIMUTH_2] = (out[:, AZIMUTH] + np.pi + out[:, AZIMUTH_2]) % (2 * np.pi)
+        out[:, DURATION] = np.maximum(out[:, LENGTH] / out[:, SPEED], out[:, LENGTH_2] / out[:, SPEED_2])
+    elif kind == "unilateral":
+        out[:, DURATION] = out[:, LENGTH] / out[:, SPEED]
+    out[:, AZIMUTH] %= 2 * np.pi
+    return out
