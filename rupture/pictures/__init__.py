@@ -15,6 +15,8 @@ _PUBLIC = {
     "kinds_figure": "answers",
     "make_movie": "movie",
     "map_figure": "maps",
+    "read_overlay": "overlays",
+    "section_figure": "sections",
     "posterior_figure": "posteriors",
     "write_report": "report",
 }

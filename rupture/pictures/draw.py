@@ -3,7 +3,7 @@
 from __future__ import annotations
 
 import re
-from collections.abc import Callable
+from collections.abc import Callable, Sequence
 from dataclasses import dataclass
 from functools import partial
 from pathlib import Path
@@ -13,6 +13,8 @@ import numpy as np
 from rupture.pictures.answers import along_figure, energy_figure, kinds_figure
 from rupture.pictures.frames import frames_figure
 from rupture.pictures.maps import map_figure
+from rupture.pictures.outlines import write_areas_geojson, write_kml
+from rupture.pictures.overlays import Overlay, read_overlays
 from rupture.pictures.panels import direction_figure, directions_figure
 from rupture.pictures.posteriors import posterior_figure
 from rupture.pictures.scene import Scene
@@ -51,10 +53,11 @@ class Sheet:
     tables: Callable[[], list[Table]]
 
 
-def sheets(result: Result) -> list[Sheet]:
+def sheets(result: Result, overlays: Sequence[str | Path | Overlay] = ()) -> list[Sheet]:
     """Return the figures that can be drawn of a result: directions always, the rest where the stage ran."""
     scene = Scene.of(result)
-    out = [Sheet("map", partial(map_figure, result), partial(map_tables, scene))]
+    drawn = read_overlays(overlays)
+    out = [Sheet("map", partial(map_figure, result, overlays=drawn), partial(map_tables, scene))]
     share = scene.direction["probability"].values
     shown = [s for s in range(len(scene.codes)) if np.isfinite(share[s]).any()]
     if len(shown) > 1:
@@ -73,15 +76,23 @@ def sheets(result: Result) -> list[Sheet]:
             )
         )
     if result.map is not None:
-        out.append(Sheet("frames", partial(frames_figure, result), partial(frames_tables, scene, "location")))
+        out.append(
+            Sheet("frames", partial(frames_figure, result, overlays=drawn), partial(frames_tables, scene, "location"))
+        )
         out.append(Sheet("energy", partial(energy_figure, result), partial(energy_tables, scene)))
     if result.energy is not None and result.map is not None:
         out.append(
-            Sheet("energy_map", partial(map_figure, result, field="energy"), partial(map_tables, scene, "energy"))
+            Sheet(
+                "energy_map",
+                partial(map_figure, result, field="energy", overlays=drawn),
+                partial(map_tables, scene, "energy"),
+            )
         )
         out.append(
             Sheet(
-                "energy_frames", partial(frames_figure, result, field="energy"), partial(frames_tables, scene, "energy")
+                "energy_frames",
+                partial(frames_figure, result, field="energy", overlays=drawn),
+                partial(frames_tables, scene, "energy"),
             )
         )
     track = result.track
@@ -111,8 +122,9 @@ def draw_all(
     style: str | Path | None = None,
     progress: Callable[[int, int], None] | None = None,
     formats: tuple[str, ...] = FORMATS,
+    overlays: Sequence[str | Path | Overlay] = (),
 ) -> list[Path]:
-    """Draw every figure that the result has the data for, each with its data as CSV beside it.
+    """Draw every figure that the result has the data for, each with its data beside it as CSV, the map as KML too.
 
     Parameters
     ----------
@@ -126,6 +138,8 @@ def draw_all(
         Called with (done, total).
     formats
         File formats: png (300 dpi), pdf, svg.
+    overlays
+        GeoJSON files of fault traces or aftershocks to draw on the maps.
 
     Returns
     -------
@@ -135,11 +149,11 @@ def draw_all(
     Raises
     ------
     InputError
-        When the style file cannot be used.
+        When the style file or an overlay cannot be used.
     """
     folder = Path(out_dir)
     folder.mkdir(parents=True, exist_ok=True)
-    todo = sheets(result)
+    todo = sheets(result, overlays)
     written: list[Path] = []
     for done, sheet in enumerate(todo):
         if progress is not None:
@@ -152,6 +166,10 @@ def draw_all(
         written += [
             table.write(folder / f"{sheet.name}{'_' if table.name else ''}{table.name}.csv") for table in sheet.tables()
         ]
+    scene = Scene.of(result)
+    written.append(write_kml(scene, folder / "map.kml"))
+    if result.map is not None and not scene.is_trace:
+        written.append(write_areas_geojson(scene, folder / "map_areas.geojson"))
     if progress is not None:
         progress(len(todo), len(todo))
     return written

@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+from collections.abc import Sequence
 from pathlib import Path
 
 import numpy as np
@@ -12,6 +13,7 @@ from numpy.typing import NDArray
 from rupture.errors import InputError
 from rupture.pictures import layers, style
 from rupture.pictures.basemap import KM, draw_graticule, draw_land, draw_scale_bar, projected_axes
+from rupture.pictures.overlays import Overlay, read_overlays
 from rupture.pictures.scene import Scene
 from rupture.result import Result
 
@@ -20,7 +22,12 @@ Array = NDArray[np.float64]
 
 @style.figure_function
 def frames_figure(
-    result: Result, style_file: str | Path | None, width_mm: float, field: str = "location", count: int | None = None
+    result: Result,
+    style_file: str | Path | None,
+    width_mm: float,
+    field: str = "location",
+    count: int | None = None,
+    overlays: Sequence[str | Path | Overlay] = (),
 ) -> style.Picture:
     """Draw small maps of the source region at times spread over the rupture.
 
@@ -34,6 +41,8 @@ def frames_figure(
         'location': location probability per cell; 'energy': the energy inversion.
     count
         How many frames; by default three rows of the page's width.
+    overlays
+        GeoJSON files of fault traces or aftershocks.
 
     Raises
     ------
@@ -42,6 +51,7 @@ def frames_figure(
     """
     scene = Scene.of(result)
     values, label = field_frames(scene, field)
+    drawn = read_overlays(overlays)
     across = 4 if width_mm > 100 else 2
     shown = scene.ray_frames(count or 3 * across)
     if not shown:
@@ -62,6 +72,7 @@ def frames_figure(
         draw_land(axes, scene.plane, extent)
         draw_graticule(axes, scene.plane, extent, labels=column == 0 and row == rows - 1)
         layers.draw_cells(axes, scene, values[frame], layers.see_through(style.probability_colours()), top=top)
+        layers.draw_overlays(axes, scene, drawn, size=1.8)
         axes.plot(0, 0, marker="*", markersize=6, mfc="white", mec=style.ACCENT, mew=0.8, zorder=6)
         for place in scene.front_km[:, frame]:
             axes.plot(*(place * KM), marker="o", markersize=4.5, mfc="none", mec=style.ACCENT, mew=1.0, zorder=6.5)

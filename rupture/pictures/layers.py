@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+from collections.abc import Sequence
 from typing import Any
 
 import numpy as np
@@ -14,6 +15,7 @@ from numpy.typing import NDArray
 
 from rupture.pictures import style
 from rupture.pictures.basemap import KM, Extent
+from rupture.pictures.overlays import Overlay
 from rupture.pictures.scene import RAY_PROBABILITY, Scene, credible_level
 
 Array = NDArray[np.float64]
@@ -257,6 +259,23 @@ def draw_ellipses(axes: Any, scene: Scene, frames: list[int], colours: Colormap,
         values, vectors = np.linalg.eigh([[ee, en], [en, nn]])
         ring = centre[:, None] + (vectors * np.sqrt(np.maximum(values, 0))) @ circle
         axes.plot(*(ring * KM), color=colours(scale(scene.source_time[frame])), linewidth=0.9, zorder=5.5)
+
+
+def draw_overlays(axes: Any, scene: Scene, overlays: Sequence[Overlay], size: float = 3.0) -> list[Line2D]:
+    """Draw fault traces and aftershocks under everything else; return legend handles."""
+    handles = []
+    looks = (("-", "o"), ((0, (5, 1.5)), "s"), ((0, (1, 1)), "D"))
+    for k, overlay in enumerate(overlays):
+        dash, marker = looks[k % len(looks)]
+        line: dict[str, Any] = {"color": style.OVERLAY, "linewidth": 0.9, "linestyle": dash}
+        point: dict[str, Any] = {"marker": marker, "markersize": size, "mfc": "none", "mec": style.OVERLAY, "mew": 0.5}
+        for places in overlay.lines_km(scene):
+            axes.plot(*(places.T * KM), zorder=3.5, **line)
+        if overlay.points.size:
+            axes.plot(*(overlay.points_km(scene).T * KM), zorder=3.6, linestyle="none", **point)
+        shown = (line if overlay.lines else {"linestyle": "none"}) | (point if overlay.points.size else {})
+        handles.append(Line2D([], [], label=overlay.name, **shown))
+    return handles
 
 
 def draw_mechanism(picture: style.Picture, scene: Scene, place_mm: tuple[float, float, float, float]) -> None:

@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+from collections.abc import Sequence
 from pathlib import Path
 from typing import Any
 
@@ -11,13 +12,18 @@ from matplotlib.patches import Patch
 
 from rupture.pictures import layers, style
 from rupture.pictures.basemap import Extent, draw_graticule, draw_land, draw_locator, draw_scale_bar, projected_axes
+from rupture.pictures.overlays import Overlay, read_overlays
 from rupture.pictures.scene import RAY_WIDTH, Scene
 from rupture.result import Result
 
 
 @style.figure_function
 def map_figure(
-    result: Result, style_file: str | Path | None, width_mm: float, field: str = "location"
+    result: Result,
+    style_file: str | Path | None,
+    width_mm: float,
+    field: str = "location",
+    overlays: Sequence[str | Path | Overlay] = (),
 ) -> style.Picture:
     """Draw the map of sites, rays and track beside a close view of the source region.
 
@@ -29,8 +35,11 @@ def map_figure(
         Given by the keywords `style` and `columns` (1 or 2) of the call.
     field
         'location': the share of radiation per cell from the ray stack; 'energy': the energy inversion.
+    overlays
+        GeoJSON files of fault traces or aftershocks.
     """
     scene = Scene.of(result)
+    drawn = read_overlays(overlays)
     wide = width_mm > 100
     colours, scale = style.time_colours(), layers.time_scale(scene)
     main = 92.0 if wide else width_mm - 16
@@ -45,6 +54,7 @@ def map_figure(
     draw_land(axes, scene.plane, extent)
     draw_graticule(axes, scene.plane, extent)
     draw_scale_bar(axes, extent)
+    extra = layers.draw_overlays(axes, scene, drawn, size=1.8)
     layers.draw_rays(axes, scene, frames, colours, scale)
     handles = layers.draw_sites(axes, scene)
     handles.append(layers.draw_epicentre(axes))
@@ -56,11 +66,12 @@ def map_figure(
         picture, scene.plane, extent,
         (10 + corner[0] * (main - inset), foot + corner[1] * (main - inset), inset, inset),
     )  # fmt: skip
+    handles += extra
     if wide:
         left = 10 + main + 12
         bottom = foot + main - side
         if result.map is not None:
-            handles += _source_panel(picture, scene, field, frames, (left, bottom, side, side))
+            handles += _source_panel(picture, scene, field, frames, drawn, (left, bottom, side, side))
         else:
             bottom = foot + main
         _legend(picture, handles, frames, (left - 6, 5, side + 10, bottom - 11))
@@ -73,7 +84,12 @@ def map_figure(
 
 
 def _source_panel(
-    picture: style.Picture, scene: Scene, field: str, frames: list[int], place: tuple[float, float, float, float]
+    picture: style.Picture,
+    scene: Scene,
+    field: str,
+    frames: list[int],
+    overlays: list[Overlay],
+    place: tuple[float, float, float, float],
 ) -> list[Any]:
     """Draw the close view: probability or energy per cell, credible areas, ellipses, track."""
     colours, scale = style.time_colours(), layers.time_scale(scene)
@@ -83,6 +99,7 @@ def _source_panel(
     draw_graticule(axes, scene.plane, extent)
     values = field_total(scene, field)
     layers.draw_cells(axes, scene, values, layers.see_through(style.probability_colours()))
+    layers.draw_overlays(axes, scene, overlays)
     handles: list[Any] = layers.draw_areas(axes, scene, values)
     if field == "location":
         layers.draw_ellipses(axes, scene, frames, colours, scale)

@@ -3,7 +3,7 @@
 from __future__ import annotations
 
 import warnings
-from collections.abc import Callable, Iterator
+from collections.abc import Callable, Iterator, Sequence
 from pathlib import Path
 from typing import Any
 
@@ -20,6 +20,7 @@ from rupture.pictures.basemap import KM, Extent, draw_graticule, draw_land, draw
 from rupture.pictures.clock import PastedText
 from rupture.pictures.encode import encode_h264, encode_images
 from rupture.pictures.frames import field_frames
+from rupture.pictures.overlays import Overlay, read_overlays
 from rupture.pictures.scene import Scene, credible_level
 from rupture.result import Result
 
@@ -47,14 +48,24 @@ class Animation:
         One of `SHAPES`.
     style_file
         A Matplotlib style file, or None.
+    overlays
+        GeoJSON files of fault traces or aftershocks.
     """
 
-    def __init__(self, result: Result, field: str, shape: str, style_file: str | Path | None) -> None:
+    def __init__(
+        self,
+        result: Result,
+        field: str,
+        shape: str,
+        style_file: str | Path | None,
+        overlays: Sequence[str | Path | Overlay] = (),
+    ) -> None:
         if shape not in SHAPES:
             raise InputError(f"movie shape must be one of {', '.join(SHAPES)}, not '{shape}'")
         self.scene = Scene.of(result)
         self.values, self.label = field_frames(self.scene, field)
         self.pixels = SHAPES[shape]
+        self.overlays = read_overlays(overlays)
         self.top = float(np.quantile(self.values[self.values > 0], 0.9995)) if (self.values > 0).any() else 1.0
         self.reach = layers.wedge_reach_km(self.scene)
         self.scale = layers.time_scale(self.scene)
@@ -79,6 +90,7 @@ class Animation:
         draw_land(self.axes, scene.plane, extent)
         draw_graticule(self.axes, scene.plane, extent)
         draw_scale_bar(self.axes, extent, share=0.16)
+        layers.draw_overlays(self.axes, scene, self.overlays)
         layers.draw_sites(self.axes, scene)
         inset = 0.2 * map_height
         place = (left + map_width - inset, bottom + map_height - inset, inset, inset)
@@ -233,6 +245,7 @@ def make_movie(
     shape: str = "4:3",
     style: str | Path | None = None,
     progress: Callable[[int, int], None] | None = None,
+    overlays: Sequence[str | Path | Overlay] = (),
 ) -> Path:
     """Write the movie of location probability (or energy) with rays, track, areas and a time line.
 
@@ -250,6 +263,8 @@ def make_movie(
         A Matplotlib style file to lay over the house look.
     progress
         Called with (done, total) frames.
+    overlays
+        GeoJSON files of fault traces or aftershocks.
 
     Returns
     -------
@@ -265,7 +280,7 @@ def make_movie(
     if path.suffix not in (".mp4", ".webp", ".gif"):
         raise InputError(f"{path}: a movie is written as .mp4, .webp or .gif")
     with look.style_context(style):
-        animation = Animation(result, field, shape, style)
+        animation = Animation(result, field, shape, style, overlays)
     count = animation.scene.source_time.size
     rate = float(np.clip(count / _SECONDS, *_FRAMES_PER_S))
     if path.suffix == ".mp4":

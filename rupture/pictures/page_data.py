@@ -5,6 +5,7 @@ from __future__ import annotations
 import base64
 import math
 import zlib
+from collections.abc import Sequence
 from typing import Any
 
 import numpy as np
@@ -15,6 +16,7 @@ from rupture.pictures.answers import energy_series, s_speed_km_s
 from rupture.pictures.basemap import KM, Extent, graticule
 from rupture.pictures.coastlines import local_land
 from rupture.pictures.frames import field_frames
+from rupture.pictures.overlays import Overlay
 from rupture.pictures.panels import coherence, predicted_curves, used_spans, window_of_interest
 from rupture.pictures.posteriors import SIZES, has_sample, posterior_sample
 from rupture.pictures.scene import Scene, credible_level
@@ -27,13 +29,15 @@ IMAGE_BUDGET_BYTES = 2_800_000
 _LAND_UNIT_KM = 0.1
 
 
-def page_data(scene: Scene) -> dict[str, Any]:
+def page_data(scene: Scene, overlays: Sequence[Overlay] = ()) -> dict[str, Any]:
     """Return everything that the page's script needs, JSON-able and without NaN.
 
     Parameters
     ----------
     scene
         The result to show.
+    overlays
+        Fault traces and aftershocks for the map.
     """
     result = scene.result
     extent = layers.map_extent(scene, aspect=1.7)
@@ -42,7 +46,7 @@ def page_data(scene: Scene) -> dict[str, Any]:
         "lagged": scene.lagged,
         "times": _numbers(scene.source_time, 3),
         "frame": _first_frame(scene),
-        "map": _map(scene, extent),
+        "map": _map(scene, extent, overlays),
         "fields": [],
         "sites": [_site(scene, s) for s in range(len(scene.codes))],
         "timeScale": [layers.time_scale(scene).vmin, layers.time_scale(scene).vmax],
@@ -100,11 +104,20 @@ def _lines(lines: list[Array]) -> list[list[int]]:
     return out
 
 
-def _map(scene: Scene, extent: Extent) -> dict[str, Any]:
+def _map(scene: Scene, extent: Extent, overlays: Sequence[Overlay]) -> dict[str, Any]:
     found = local_land(scene.plane, extent.radius_km * KM)
     return {
         "extent": [round(v, 3) for v in (extent.west, extent.east, extent.south, extent.north)],
         "unit": _LAND_UNIT_KM,
+        "overlays": [
+            {
+                "name": item.name,
+                "lines": _lines([line * KM for line in item.lines_km(scene)]),
+                "x": _numbers(item.points_km(scene)[:, 0], 2),
+                "y": _numbers(item.points_km(scene)[:, 1], 2),
+            }
+            for item in overlays
+        ],
         "land": _lines(found.land),
         "coast": _lines(found.coast),
         "borders": _lines(found.borders),

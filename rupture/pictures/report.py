@@ -4,11 +4,12 @@ from __future__ import annotations
 
 import json
 import re
-from collections.abc import Callable, Iterable, Mapping
+from collections.abc import Callable, Iterable, Mapping, Sequence
 from html import escape
 from pathlib import Path
 from typing import Any
 
+from rupture.pictures.overlays import Overlay, read_overlays
 from rupture.pictures.page_data import page_data
 from rupture.pictures.scene import Scene
 from rupture.result import Result
@@ -17,7 +18,12 @@ from rupture.wording import CAUTIONS, answer_sentences
 _DATA = Path(__file__).with_name("data")
 
 
-def write_report(result: Result, path: str | Path, progress: Callable[[int, int], None] | None = None) -> Path:
+def write_report(
+    result: Result,
+    path: str | Path,
+    progress: Callable[[int, int], None] | None = None,
+    overlays: Sequence[str | Path | Overlay] = (),
+) -> Path:
     """Write the report page beside the target and move it into place.
 
     Parameters
@@ -28,6 +34,8 @@ def write_report(result: Result, path: str | Path, progress: Callable[[int, int]
         The HTML file.
     progress
         Called with (done, total).
+    overlays
+        GeoJSON files of fault traces or aftershocks to draw on the map.
 
     Returns
     -------
@@ -37,7 +45,7 @@ def write_report(result: Result, path: str | Path, progress: Callable[[int, int]
     path = Path(path)
     if progress is not None:
         progress(0, 2)
-    page = report_html(result)
+    page = report_html(result, overlays)
     if progress is not None:
         progress(1, 2)
     part = path.with_name(f".{path.name}.part")
@@ -51,7 +59,7 @@ def write_report(result: Result, path: str | Path, progress: Callable[[int, int]
     return path
 
 
-def report_html(result: Result) -> str:
+def report_html(result: Result, overlays: Sequence[str | Path | Overlay] = ()) -> str:
     """Return the report page as one string."""
     scene = Scene.of(result)
     parts = {
@@ -68,7 +76,7 @@ def report_html(result: Result) -> str:
         "STYLE": _asset("uPlot.min.css") + _asset("page.css"),
         "LIBRARY": _asset("uPlot.iife.min.js"),
         "SCRIPT": _asset("page.js"),
-        "DATA": script_safe(page_data(scene)),
+        "DATA": script_safe(page_data(scene, read_overlays(overlays))),
     }
     # One pass over the template, so that nothing inside a value is ever taken for a place to fill.
     return re.sub(r"@@([A-Z]+)@@", lambda found: parts[found[1]], _asset("page.html"))

@@ -30,6 +30,7 @@ FAINT = "#b9bfc5"
 LAND = "#e9e7e1"
 SEA = "#f3f7fa"
 COAST = "#7d8187"
+OVERLAY = "#2f6b3c"
 ACCENT = "#b3261e"
 OUTLINE = "#ffffff"
 

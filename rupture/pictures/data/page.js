@@ -116,6 +116,11 @@
     g.setLineDash([5, 3, 1, 3]);
     g.beginPath(); borders.forEach((path) => trace(g, path)); g.stroke();
     g.setLineDash([]);
+    g.strokeStyle = g.fillStyle = colour("overlay"); g.lineWidth = 1.4;
+    for (const overlay of data.map.overlays) {
+      g.beginPath(); overlay.lines.map(decode).forEach((path) => trace(g, path)); g.stroke();
+      overlay.x.forEach((x, i) => { g.beginPath(); g.arc(toX(x), toY(overlay.y[i]), 2, 0, 7); g.stroke(); });
+    }
     const target = 0.2 * (east - west), power = 10 ** Math.floor(Math.log10(target));
     const length = Math.max(...[1, 2, 5].map((k) => k * power).filter((v) => v <= target));
     const right = canvas.width / ratio - 14, foot = canvas.height / ratio - 12;
@@ -517,6 +522,7 @@
     if (data.track) add(simple(svg("circle", { cx: 13, cy: 10, r: 7, fill: "none", stroke: "var(--accent)", "stroke-width": 2.5 })), "fitted front");
     if (data.track) add(simple(svg("circle", { cx: 13, cy: 10, r: 5, fill: timeColour((data.timeScale[0] + data.timeScale[1]) / 2) })), "front so far, smoothed");
     add(simple(svg("polygon", { points: "2,10 25,2 25,18", fill: timeColour(data.timeScale[0]), opacity: 0.3 })), "ray of a site, 68 % wide");
+    for (const overlay of data.map.overlays) add(simple(svg("line", { x1: 2, x2: 24, y1: 10, y2: 10, stroke: "var(--overlay)", "stroke-width": 2.5 })), overlay.name);
     if (data.fields.length) { const [r, g, b] = probabilityTable[150]; add(simple(svg("rect", { x: 2, y: 3, width: 22, height: 14, fill: `rgb(${r},${g},${b})` })), "the darker, the more (on a dark page: the lighter)"); }
   }
   const themes = ["auto", "light", "dark"], themeNames = { auto: "as the system", light: "light", dark: "dark" };
