@@ -8,7 +8,7 @@ from dataclasses import dataclass
 import numpy as np
 from numpy.typing import NDArray
 
-from rupture.records.report import Unusable
+from rupture.records.report import UnusableError
 
 Array = NDArray[np.float64]
 Bool = NDArray[np.bool_]
@@ -60,14 +60,14 @@ def plane_weights(places_m: Array) -> Array:
 
     Raises
     ------
-    Unusable
+    UnusableError
         Fewer than three sensors, or sensors in a line.
     """
     if len(places_m) < 3:
-        raise Unusable(f"{len(places_m)} sensors: a plane needs three")
+        raise UnusableError(f"{len(places_m)} sensors: a plane needs three")
     widths = np.linalg.svd(places_m - places_m.mean(axis=0), compute_uv=False)
     if widths[1] < _FLATTEST * widths[0]:
-        raise Unusable(
+        raise UnusableError(
             f"the sensors stand in a line (width {100 * widths[1] / widths[0]:.0f} % of the length): no gradient across it"
         )
     return np.linalg.pinv(np.column_stack([np.ones(len(places_m)), places_m]))
@@ -152,13 +152,13 @@ def rotation_weights(places_m: Array, has: Bool) -> tuple[Array, Bool]:
         if whole.sum() >= 3:
             weights[:, whole] = _solver_weights(places_m[whole])
             possible[:] = True
-    except Unusable:
+    except UnusableError:
         possible[:] = False
         weights[:] = 0.0
     if vertical.sum() > whole.sum() or not possible[0]:
         try:
             _, east, north = plane_weights(places_m[vertical, :2])
-        except Unusable:
+        except UnusableError:
             return weights, possible
         weights[:2] = 0.0
         weights[0, vertical, 2], weights[1, vertical, 2] = north, -east
@@ -185,7 +185,12 @@ def _solver_weights(places_m: Array) -> Array:
 
 
 def array_motion(
-    places_m: Array, acceleration: Array, velocity: Array, valid: Bool, needed_wavenumber_rad_m: float, error_share: float
+    places_m: Array,
+    acceleration: Array,
+    velocity: Array,
+    valid: Bool,
+    needed_wavenumber_rad_m: float,
+    error_share: float,
 ) -> tuple[Array, Bool]:
     """Return the six components at the centre of an array.
 
@@ -212,9 +217,11 @@ def array_motion(
         has = pattern.reshape(-1, 3)
         here = np.flatnonzero(which.ravel() == number)
         for component in range(3):
-            _plane_value(places_m, has[:, component], acceleration[:, component], here, data[component], good[component])
+            _plane_value(
+                places_m, has[:, component], acceleration[:, component], here, data[component], good[component]
+            )
         weights, possible = rotation_weights(places_m, has)
-        for component in np.flatnonzero(possible):
+        for component in np.flatnonzero(possible).tolist():
             part = has[:, 2] if component < 2 else has.all(axis=1)
             centred = places_m[part, :2] - places_m[part, :2].mean(axis=0)
             if highest_wavenumber(centred, error_share) < _SPARE * needed_wavenumber_rad_m:
@@ -224,20 +231,16 @@ def array_motion(
     return data, good
 
 
-def _plane_value(
-    places_m: Array, has: Bool, motion: Array, here: NDArray[np.intp], data: Array, good: Bool
-) -> None:
+def _plane_value(places_m: Array, has: Bool, motion: Array, here: NDArray[np.intp], data: Array, good: Bool) -> None:
     try:
         weights = plane_weights(places_m[has, :2])
-    except Unusable:
+    except UnusableError:
         return
     data[here] = weights[0] @ motion[np.ix_(has, here)]
     good[here] = True
 
 
-def compact_group(
-    places_m: Array, centre: int, error_share: float, wavenumber_rad_m: float
-) -> tuple[list[int], float]:
+def compact_group(places_m: Array, centre: int, error_share: float, wavenumber_rad_m: float) -> tuple[list[int], float]:
     """Return the best set of sensors nearest to one of them that still resolves a wavenumber.
 
     More sensors lower the noise, a wider array lowers the highest frequency: the product of number and
@@ -270,7 +273,7 @@ def compact_group(
             break
         try:
             limit = highest_wavenumber(chosen - chosen.mean(axis=0), error_share)
-        except Unusable:
+        except UnusableError:
             continue
         if limit >= wavenumber_rad_m and limit * count > best_score:
             best, best_score = [int(i) for i in order[:count]], limit * count

@@ -46,8 +46,7 @@ def first_arrivals(distance_m: float, depth_km: float) -> Arrivals:
 def _cached(hundred_metres: int, tenth_km: int) -> Arrivals:
     degrees = hundred_metres * 100.0 / _METRES_PER_DEGREE
     found = [
-        sorted(_model().get_travel_times(tenth_km / 10.0, degrees, phases), key=lambda a: a.time)
-        for phases in (_P, _S)
+        sorted(_model().get_travel_times(tenth_km / 10.0, degrees, phases), key=lambda a: a.time) for phases in (_P, _S)
     ]
     if not all(found):
         raise DataError(f"ak135 gives no first P or S at {degrees:.2f} degrees from a depth of {tenth_km / 10:.1f} km")

@@ -5,6 +5,7 @@ from __future__ import annotations
 import math
 from collections.abc import Sequence
 from dataclasses import replace
+from functools import partial
 from pathlib import Path
 from typing import Any
 
@@ -19,7 +20,7 @@ from rupture.records.building import array_site, single_site
 from rupture.records.metadata import MetadataIndex, quantity_of
 from rupture.records.pairing import Plan, plan_sites
 from rupture.records.read import RawChannel, read_channels, read_inventories, record_files
-from rupture.records.report import ChannelFound, ChannelReport, SiteSet, SiteVerdict, Unusable
+from rupture.records.report import ChannelFound, ChannelReport, SiteSet, SiteVerdict, UnusableError
 from rupture.records.sensors import Grid, Prepared, Sensor, prepare
 from rupture.records.settings import RecordSettings
 from rupture.site import Site
@@ -114,7 +115,7 @@ def _sensors(
             )
             times = first_arrivals(float(distance), event.depth_km)
             _in_time(channel, times)
-        except Unusable as reason:
+        except UnusableError as reason:
             rows.append(replace(row, reason=str(reason)))
             continue
         prepared = prepare(channel, found, settings)
@@ -139,12 +140,12 @@ def _in_time(channel: RawChannel, arrivals: Arrivals) -> None:
         return
     start, end = channel.segments[0].start_s, channel.segments[-1].end_s
     if start > arrivals.s_s:
-        raise Unusable(
+        raise UnusableError(
             f"the record starts {start:.1f} s after the origin, after S (about {arrivals.s_s:.1f} s): no wave of known"
             " kind and no noise before it"
         )
     if end < arrivals.p_s:
-        raise Unusable(f"the record ends {end:.1f} s after the origin, before P (about {arrivals.p_s:.1f} s)")
+        raise UnusableError(f"the record ends {end:.1f} s after the origin, before P (about {arrivals.p_s:.1f} s)")
 
 
 def _build(
@@ -165,16 +166,15 @@ def _build(
     sites: list[Site] = []
     rejected: list[Site] = []
     verdicts: list[SiteVerdict] = []
-    total = len(plan.singles) + len(plan.arrays)
-    jobs = [(single_site, s) for s in plan.singles] + [(array_site, a) for a in plan.arrays]
-    for number, (make, planned) in enumerate(jobs):
-        site, verdict, made = make(planned, grid, settings, arrivals, event)
+    jobs = [partial(single_site, single) for single in plan.singles] + [partial(array_site, a) for a in plan.arrays]
+    for number, job in enumerate(jobs):
+        site, verdict, made = job(grid, settings, arrivals, event)
         rows += made
         verdicts.append(verdict)
         if site is not None:
             (sites if verdict.used else rejected).append(site)
         if report is not None:
-            report(number + 1, total)
+            report(number + 1, len(jobs))
     return sites, rejected, verdicts
 
 

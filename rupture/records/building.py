@@ -14,7 +14,7 @@ from rupture.geodesy import LocalPlane
 from rupture.records.array import ArrayGeometry, array_motion, highest_wavenumber, strain_error
 from rupture.records.arrivals import Arrivals
 from rupture.records.pairing import ArrayPlan, SinglePlan
-from rupture.records.report import ChannelReport, SiteVerdict, Unusable
+from rupture.records.report import ChannelReport, SiteVerdict, UnusableError
 from rupture.records.response import Corners
 from rupture.records.sensors import Grid, Sensor, corners_of, motion_of
 from rupture.records.settings import RecordSettings
@@ -37,46 +37,60 @@ def single_site(
     data, valid = np.zeros((6, grid.number)), np.zeros((6, grid.number), bool)
     rows: list[ChannelReport] = []
     failed: list[str] = []
-    corners = None
-    usable: list[tuple[Sensor, Corners]] = []
+    corners: dict[str, Corners] = {}
     for sensor in present:
         try:
-            usable.append((sensor, corners_of(sensor, grid, settings)))
-        except Unusable as reason:
-            failed.append(f"{sensor.name}: {reason}")
-            rows += [replace(c.report, site=plan.code, reason=str(reason)) for c in sensor.channels]
-    if usable:
-        corners = _common([c for _, c in usable])
-    for sensor, _ in usable:
+            corners[sensor.name] = corners_of(sensor, grid, settings)
+        except UnusableError as error:
+            failed.append(f"{sensor.name}: {error}")
+            rows += _refused(sensor, plan.code, str(error))
+    shared, why = _shared(list(corners.values()))
+    for sensor in present:
+        if sensor.name not in corners:
+            continue
+        if shared is None:
+            # Both sensors work, but not at the same frequencies: translation alone is left.
+            shared = corners[sensor.name]
+        elif why and sensor.quantity == "rotation":
+            failed.append(f"{sensor.name}: {why}")
+            rows += _refused(sensor, plan.code, why)
+            continue
         place = slice(0, 3) if sensor.quantity == "translation" else slice(3, 6)
-        assert corners is not None  # noqa: S101 - usable sensors have corners
         try:
-            motion = motion_of(sensor, corners, grid, settings, arrivals[sensor.name])
-        except Unusable as reason:
-            failed.append(f"{sensor.name}: {reason}")
-            rows += [replace(c.report, site=plan.code, reason=str(reason)) for c in sensor.channels]
+            motion = motion_of(sensor, shared, grid, settings, arrivals[sensor.name])
+        except UnusableError as error:
+            failed.append(f"{sensor.name}: {error}")
+            rows += _refused(sensor, plan.code, str(error))
             continue
         data[place], valid[place] = motion.data, motion.valid
         rows += [replace(r, site=plan.code) for r in motion.reports]
     lon, lat, up, _ = present[0].place
-    band = (corners.low, corners.high) if corners is not None else (0.0, 0.0)
+    band = (shared.low, shared.high) if shared is not None else (0.0, 0.0)
     site = _trimmed(plan.code, lon, lat, up, grid, data, valid, band, 0.0)
-    reason = _why_not(plan, valid, failed)
-    return _verdict(site, plan.code, (lon, lat, up), reason, [plan.note, *failed], rows)
+    refused = "" if valid[:3].any() else "; ".join(failed) or plan.note or "no usable translation channel"
+    return _verdict(site, plan.code, (lon, lat, up), refused, [plan.note, *failed], rows)
+
+
+def _refused(sensor: Sensor, code: str, reason: str) -> list[ChannelReport]:
+    return [replace(c.report, site=code, reason=reason) for c in sensor.channels]
+
+
+def _shared(corners: Sequence[Corners]) -> tuple[Corners | None, str]:
+    """Return the filter that the sensors of a site share, or None and why there is none."""
+    if not corners:
+        return None, ""
+    try:
+        return _common(corners), ""
+    except UnusableError as error:
+        return None, str(error)
 
 
 def _common(corners: Sequence[Corners]) -> Corners:
     """Return one filter for all sensors of a site, so that rotation and translation stay comparable."""
     low, high = max(c.low for c in corners), min(c.high for c in corners)
     if not high > 2.0 * low:
-        raise Unusable(f"its sensors share only {low:.3g} to {high:.3g} Hz")
+        raise UnusableError(f"its sensors share only {low:.3g} to {high:.3g} Hz")
     return Corners(max(c.stop_low for c in corners), low, high, min(c.stop_high for c in corners))
-
-
-def _why_not(plan: SinglePlan, valid: NDArray[np.bool_], failed: Sequence[str]) -> str:
-    if not valid[:3].any():
-        return "; ".join(failed) or plan.note or "no usable translation channel"
-    return ""
 
 
 def array_site(
@@ -108,15 +122,15 @@ def array_site(
             f" and faster (aperture {share:.2f} of a wavelength)"
         )
         if not highest_hz > 2.0 * corners.low:
-            raise Unusable(
+            raise UnusableError(
                 f"{said}, but its records begin at {corners.low:.3g} Hz: less than an octave is left; use stations closer"
                 " together or lower frequencies"
             )
         acceleration, velocity, valid = _array_records(plan, corners, grid, settings, arrivals, rows)
         data, good = array_motion(places, acceleration, velocity, valid, limit, settings.array_error_share)
         if not good[3:].any():
-            raise Unusable(f"{said}; at no time have enough of its sensors a record")
-    except Unusable as reason:
+            raise UnusableError(f"{said}; at no time have enough of its sensors a record")
+    except UnusableError as reason:
         rows = [replace(c.report, site=plan.code, reason=str(reason)) for s in plan.sensors for c in s.channels]
         return _verdict(None, plan.code, place, str(reason), [], rows)
     band = (corners.low, min(corners.high, highest_hz))

@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+import itertools
 from collections.abc import Sequence
 from dataclasses import dataclass
 
@@ -10,7 +11,7 @@ from numpy.typing import NDArray
 from scipy.ndimage import median_filter, uniform_filter1d
 
 from rupture.records.read import RawChannel, Segment
-from rupture.records.report import Unusable
+from rupture.records.report import UnusableError
 from rupture.records.settings import RecordSettings
 
 Array = NDArray[np.float64]
@@ -20,6 +21,10 @@ _CLIP_RUN = 3
 """Equal samples in a row at an extreme that count as clipping."""
 _CLIP_STEPS = 4
 """A natural crest as flat as that leaves by about one count; a clipped one by at least this many."""
+_CLIP_COUNT, _CLIP_SPAN = 4, 1000.0
+"""So many samples at exactly the extreme of a record that spans so many counts are no chance."""
+_CLIP_MARGIN = 1e-3
+"""A clipped sensor may rest this share of its range inside the extreme."""
 _CLIP_TOGETHER_S = 5.0
 """Clipped stretches closer than this are one: the sensor has not recovered in between."""
 _SPIKE_RATIO = 15.0
@@ -64,24 +69,25 @@ def check_channel(raw: RawChannel, settings: RecordSettings) -> Checked:
 
     Raises
     ------
-    Unusable
+    UnusableError
         When the channel is dead, holds nothing, or is clipped beyond the limit.
     """
     if not raw.segments:
-        raise Unusable("the record holds no sample that is a number")
+        raise UnusableError("the record holds no sample that is a number")
     values = np.concatenate([s.samples for s in raw.segments])
     low, high = float(values.min()), float(values.max())
     if low == high:
-        raise Unusable(f"dead channel: every sample is {low:g}")
+        raise UnusableError(f"dead channel: every sample is {low:g}")
     notes = list(raw.notes)
     masked: list[Span] = []
     mended: list[Segment] = []
     clipped = spikes = 0
     flat_s = 0.0
     quantum = _quantum(raw.segments)
+    levels = _clip_levels(raw.segments, low, high, quantum)
     for segment in raw.segments:
         flat = _equal_runs(segment.samples, max(2, round(settings.flat_s * segment.rate_hz)))
-        clips = [r for r in _clipped_runs(segment.samples, low, high, quantum) if r not in flat]
+        clips = [r for r in _clipped_runs(segment.samples, levels, _CLIP_MARGIN * (high - low)) if r not in flat]
         clipped += sum(b - a for a, b in clips)
         flat_s += sum(b - a for a, b in flat) / segment.rate_hz
         masked += [_span(segment, a, b) for a, b in flat]
@@ -92,16 +98,18 @@ def check_channel(raw: RawChannel, settings: RecordSettings) -> Checked:
         mended.append(Segment(segment.start_s, segment.rate_hz, samples))
     share = clipped / values.size
     if share > settings.clip_share:
-        raise Unusable(f"clipped: {100 * share:.0f} % of the samples stand at the limit of {max(abs(low), abs(high)):g}")
+        raise UnusableError(
+            f"clipped: {100 * share:.0f} % of the samples stand at the limit of {max(abs(low), abs(high)):g}"
+        )
     if flat_s > 0.9 * values.size / raw.segments[0].rate_hz:
-        raise Unusable(f"flat channel: constant over {flat_s:.0f} s of the record")
+        raise UnusableError(f"flat channel: constant over {flat_s:.0f} s of the record")
     if clipped:
         notes.append(f"{clipped} clipped samples masked with their surroundings")
     if flat_s:
         notes.append(f"{flat_s:.1f} s without any change of the signal masked")
     if spikes:
         notes.append(f"{spikes} spikes masked")
-    holes = [(a.end_s, b.start_s) for a, b in zip(mended, mended[1:], strict=False)]
+    holes = [(a.end_s, b.start_s) for a, b in itertools.pairwise(mended)]
     gap_s = sum(b - a - 1.0 / s.rate_hz for (a, b), s in zip(holes, mended, strict=False))
     if holes:
         notes.append(f"{len(holes)} gaps of {gap_s:.2f} s in all masked")
@@ -122,22 +130,41 @@ def _quantum(segments: Sequence[Segment]) -> float:
 
 def _equal_runs(samples: Array, shortest: int) -> list[tuple[int, int]]:
     edges = np.flatnonzero(np.concatenate([[True], np.diff(samples) != 0, [True]]))
-    return [(int(a), int(b)) for a, b in zip(edges, edges[1:], strict=False) if b - a >= shortest]
+    long = np.flatnonzero(np.diff(edges) >= shortest)
+    return [(int(edges[i]), int(edges[i + 1])) for i in long]
 
 
-def _clipped_runs(samples: Array, low: float, high: float, quantum: float) -> list[tuple[int, int]]:
-    """Runs of equal samples within a thousandth of an extreme that are entered or left by a jump."""
-    found = []
-    margin = 1e-3 * (high - low)
+def _clip_levels(segments: Sequence[Segment], low: float, high: float, quantum: float) -> list[float]:
+    """Return the extremes at which the record is cut off: entered by a jump, or reached too often."""
+    levels = []
+    for level in (low, high):
+        count = sum(int(np.count_nonzero(s.samples == level)) for s in segments)
+        often = count >= _CLIP_COUNT and high - low >= _CLIP_SPAN * quantum
+        if often or any(_jumps_to(s.samples, level, quantum) for s in segments):
+            levels.append(level)
+    return levels
+
+
+def _jumps_to(samples: Array, level: float, quantum: float) -> bool:
     for first, end in _equal_runs(samples, _CLIP_RUN):
-        value = samples[first]
-        if min(high - value, value - low) > margin:
+        if samples[first] != level:
             continue
-        before = abs(value - samples[first - 1]) if first else 0.0
-        after = abs(value - samples[end]) if end < samples.size else 0.0
+        before = abs(level - samples[first - 1]) if first else 0.0
+        after = abs(level - samples[end]) if end < samples.size else 0.0
         if max(before, after) >= _CLIP_STEPS * quantum:
-            found.append((first, end))
-    return found
+            return True
+    return False
+
+
+def _clipped_runs(samples: Array, levels: Sequence[float], margin: float) -> list[tuple[int, int]]:
+    """Return stretches at a clip level, or resting within a small margin of it."""
+    at = np.zeros(samples.size, bool)
+    for level in levels:
+        at |= samples == level
+    for first, end in _equal_runs(samples, _CLIP_RUN) if levels else []:
+        at[first:end] |= min(abs(samples[first] - level) for level in levels) <= margin
+    edges = np.flatnonzero(np.diff(np.concatenate([[False], at, [False]]).astype(np.int8)))
+    return [(int(a), int(b)) for a, b in edges.reshape(-1, 2)]
 
 
 def _without_spikes(

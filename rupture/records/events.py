@@ -144,4 +144,5 @@ def event_from_origin(
         if not math.isfinite(number):
             raise InputError(f"origin {name} '{value}' is not a finite number")
         values.append(number)
-    return Event(time.astimezone(UTC), *values, magnitude, mechanism_deg)
+    longitude, latitude, depth = values
+    return Event(time.astimezone(UTC), longitude, latitude, depth, magnitude, mechanism_deg)

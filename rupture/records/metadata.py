@@ -7,7 +7,7 @@ from collections.abc import Iterator
 from dataclasses import dataclass
 from typing import Any
 
-from rupture.records.report import Unusable
+from rupture.records.report import UnusableError
 
 QUANTITY_OF_CODE = {"J": "rotation", "H": "translation", "L": "translation", "N": "translation"}
 """FDSN source identifiers: instrument codes of rotation and translation sensors."""
@@ -78,16 +78,16 @@ class MetadataIndex:
 
         Raises
         ------
-        Unusable
+        UnusableError
             No metadata, no epoch that covers the time, or no coordinates.
         """
         epochs = self._epochs.get(channel)
         if not epochs:
-            raise Unusable("no metadata for this channel; add its StationXML to --inventory")
+            raise UnusableError("no metadata for this channel; add its StationXML to --inventory")
         good = [e for e in epochs if _covers(e[1], time)]
         if not good:
             spans = ", ".join(f"{_day(c.start_date)} to {_day(c.end_date)}" for _, c in epochs)
-            raise Unusable(f"the metadata cover {spans}, but not {time.strftime('%Y-%m-%d')}")
+            raise UnusableError(f"the metadata cover {spans}, but not {time.strftime('%Y-%m-%d')}")
         good.sort(key=lambda e: e[1].start_date.timestamp if e[1].start_date else -math.inf)
         station, found = good[-1]
         notes = (f"{len(good)} metadata epochs overlap; the latest is used",) if len(good) > 1 else ()
@@ -95,7 +95,7 @@ class MetadataIndex:
         if None in place or (place == [0.0, 0.0] and (station.longitude or station.latitude)):
             place = [station.longitude, station.latitude]
         if None in place:
-            raise Unusable("the metadata give no coordinates")
+            raise UnusableError("the metadata give no coordinates")
         response = found.response
         unit = ""
         if response is not None:

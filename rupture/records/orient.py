@@ -5,7 +5,7 @@ from __future__ import annotations
 import numpy as np
 from numpy.typing import ArrayLike, NDArray
 
-from rupture.records.report import Unusable
+from rupture.records.report import UnusableError
 
 _ALIGNED = np.sin(np.radians(5.0))
 """FDSN source identifiers: E and N name axes within 5 degrees of true; what is farther off is not that component."""
@@ -52,7 +52,7 @@ def channel_axis(code: str, azimuth_deg: float | None, dip_deg: float | None) ->
 
     Raises
     ------
-    Unusable
+    UnusableError
         When angles are absent and the name does not tell.
     """
     letter = code[-1:].upper()
@@ -65,7 +65,7 @@ def channel_axis(code: str, azimuth_deg: float | None, dip_deg: float | None) ->
     by_name = {"Z": (0.0, -90.0), "N": (0.0, 0.0), "E": (90.0, 0.0)}
     if letter in by_name and letter:
         return axis_vector(*by_name[letter]), f"no orientation in the metadata, taken from the name {letter}"
-    raise Unusable(f"the metadata give no azimuth and dip, and the name {code} does not tell the orientation")
+    raise UnusableError(f"the metadata give no azimuth and dip, and the name {code} does not tell the orientation")
 
 
 def to_east_north_up(
@@ -90,17 +90,20 @@ def to_east_north_up(
 
     Raises
     ------
-    Unusable
+    UnusableError
         When three channels are given whose axes lie nearly in one plane.
     """
     rank_guard = np.linalg.svd(axes, compute_uv=False)
     if len(axes) >= 3 and rank_guard[2] < 0.2 * rank_guard[0]:
         angles = ", ".join(f"({a[0]:.2f}, {a[1]:.2f}, {a[2]:.2f})" for a in axes)
-        raise Unusable(f"the sensor axes (E, N, Up) {angles} lie nearly in one plane; check azimuth and dip")
-    weights = np.linalg.pinv(axes)
+        raise UnusableError(f"the sensor axes (E, N, Up) {angles} lie nearly in one plane; check azimuth and dip")
+    weights = np.asarray(np.linalg.pinv(axes), float)
     lost = np.linalg.norm(np.eye(3) - weights @ axes, axis=1)
     weights[lost > _ALIGNED] = 0.0
     matters = np.abs(weights) > _NEGLIGIBLE
-    turned_valid = np.array([valid[m].all(axis=0) if m.any() else np.zeros(valid.shape[1], bool) for m in matters])
-    turned = weights @ np.where(valid, data, 0.0)
+    turned_valid = np.zeros((3, valid.shape[1]), bool)
+    for component, needed in enumerate(matters):
+        if needed.any():
+            turned_valid[component] = valid[needed].all(axis=0)
+    turned = np.asarray(weights @ np.where(valid, data, 0.0))
     return np.where(turned_valid, turned, 0.0), turned_valid, weights

@@ -188,7 +188,9 @@ def _without_neighbours(
     return kept
 
 
-def slowest_velocity_m_s(sensor: Sensor, event: Event, arrivals: dict[str, Arrivals], settings: RecordSettings) -> float:
+def slowest_velocity_m_s(
+    sensor: Sensor, event: Event, arrivals: dict[str, Arrivals], settings: RecordSettings
+) -> float:
     """Return the slowest apparent velocity that an array at this place must resolve."""
     if settings.array_velocity_km_s is not None:
         return settings.array_velocity_km_s * KM

@@ -2,7 +2,6 @@
 
 from __future__ import annotations
 
-import glob
 import warnings
 from collections.abc import Iterable, Sequence
 from dataclasses import dataclass
@@ -82,13 +81,22 @@ def record_files(patterns: Iterable[str | Path]) -> list[tuple[Path, bool]]:
         elif path.is_file():
             files[path] = True
         else:
-            found = sorted(Path(p) for p in glob.glob(str(pattern), recursive=True) if Path(p).is_file())
+            found = [p for p in _matches(path) if p.is_file()]
             if not found:
                 raise InputError(f"{pattern}: no such record file, and nothing matches it as a pattern")
             files |= dict.fromkeys(found, True)
     if not files:
         raise InputError("no record files were given")
     return sorted(files.items())
+
+
+def _matches(pattern: Path) -> list[Path]:
+    """Return what a pattern stands for; `**` reaches into folders."""
+    fixed = pattern.parent
+    while any(sign in str(fixed) for sign in "*?["):
+        fixed = fixed.parent
+    relative = pattern.relative_to(fixed)
+    return sorted(fixed.glob(str(relative))) if str(relative) != "." else []
 
 
 def read_inventories(paths: Sequence[str | Path]) -> Any:
@@ -229,7 +237,9 @@ def _channel(name: str, traces: list[Any], origin: Any, notes: list[str]) -> Raw
     rates = {round(p.rate_hz, 6) for p in pieces}
     if len(rates) > 1:
         # One channel that changes its rate: the longer part is kept, mixing would need two responses.
-        length = {rate: sum(p.samples.size / p.rate_hz for p in pieces if round(p.rate_hz, 6) == rate) for rate in rates}
+        length = {
+            rate: sum(p.samples.size / p.rate_hz for p in pieces if round(p.rate_hz, 6) == rate) for rate in rates
+        }
         best = max(length, key=lambda rate: length[rate])
         notes = [*notes, f"the sampling rate changes; only the part at {best:g} Hz is used"]
         pieces = [p for p in pieces if round(p.rate_hz, 6) == best]

@@ -7,7 +7,7 @@ from dataclasses import dataclass, field
 from rupture.site import Site
 
 
-class Unusable(Exception):
+class UnusableError(Exception):
     """A channel or sensor that cannot be used; the message is the reason in the quality table."""
 
 

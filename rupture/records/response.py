@@ -13,7 +13,7 @@ from numpy.typing import NDArray
 from scipy.fft import next_fast_len, rfft, rfftfreq
 from scipy.signal import czt
 
-from rupture.records.report import Unusable
+from rupture.records.report import UnusableError
 from rupture.records.units import Unit, parse_unit
 
 Array = NDArray[np.float64]
@@ -68,11 +68,11 @@ def instrument_of(response: Any, full: bool) -> Instrument:
 
     Raises
     ------
-    Unusable
+    UnusableError
         No response, unknown unit, or a sensitivity that is zero or not a number.
     """
     if response is None:
-        raise Unusable("the metadata hold no response; give StationXML at response level")
+        raise UnusableError("the metadata hold no response; give StationXML at response level")
     overall = response.instrument_sensitivity
     stages = sorted(response.response_stages, key=lambda s: s.stage_sequence_number)
     notes: list[str] = []
@@ -91,7 +91,7 @@ def instrument_of(response: Any, full: bool) -> Instrument:
                 value *= unit.scale / other.scale
     if value is None or not math.isfinite(value) or value == 0.0:
         shown = "missing" if value is None else f"{value:g}"
-        raise Unusable(f"the sensitivity is {shown}; correct it in the StationXML")
+        raise UnusableError(f"the sensitivity is {shown}; correct it in the StationXML")
     if value < 0:
         notes.append("the sensitivity is negative: polarity turned")
     plain = Instrument(unit, str(name), value / unit.scale, None, tuple(notes))
@@ -137,6 +137,9 @@ def _evaluate(response: Any, frequency_hz: Array) -> NDArray[np.complex128]:
 def instrument_band(instrument: Instrument, rate_hz: float, floor_db: float) -> tuple[float, float]:
     """Return the frequencies in Hz around the response maximum at which the instrument answers well enough.
 
+    Displacement, velocity or acceleration: the one in which the instrument is flattest counts, whatever its
+    metadata are written in.
+
     Parameters
     ----------
     rate_hz
@@ -146,8 +149,10 @@ def instrument_band(instrument: Instrument, rate_hz: float, floor_db: float) -> 
     """
     frequency = np.geomspace(1e-3, 0.5 * rate_hz, 400)
     size = np.abs(instrument.transfer(frequency))
-    enough = size >= size.max() * 10.0 ** (-floor_db / 20.0)
-    top = int(size.argmax())
+    variants = [size * frequency ** (instrument.unit.order - order) for order in range(3)]
+    flattest = max(variants, key=lambda v: np.count_nonzero(v > 0.7 * v.max()))
+    enough = flattest >= flattest.max() * 10.0 ** (-floor_db / 20.0)
+    top = int(flattest.argmax())
     low = top - int(np.argmin(enough[top::-1])) + 1 if not enough[: top + 1].all() else 0
     high = top + int(np.argmin(enough[top:])) - 1 if not enough[top:].all() else frequency.size - 1
     return float(frequency[low]), float(frequency[high])

@@ -2,7 +2,6 @@
 
 from __future__ import annotations
 
-from collections.abc import Sequence
 from dataclasses import dataclass, replace
 
 import numpy as np
@@ -13,8 +12,16 @@ from rupture.records.checks import Checked, check_channel, mask_grid
 from rupture.records.metadata import STRONG_MOTION, ChannelMetadata, quantity_of
 from rupture.records.orient import channel_axis, to_east_north_up
 from rupture.records.read import RawChannel
-from rupture.records.report import ChannelFound, ChannelReport, Unusable
-from rupture.records.response import TARGET_ORDER, Corners, Instrument, deconvolve, edge_s, instrument_band, instrument_of
+from rupture.records.report import ChannelFound, ChannelReport, UnusableError
+from rupture.records.response import (
+    TARGET_ORDER,
+    Corners,
+    Instrument,
+    deconvolve,
+    edge_s,
+    instrument_band,
+    instrument_of,
+)
 from rupture.records.settings import RecordSettings
 
 Array = NDArray[np.float64]
@@ -39,7 +46,7 @@ class Grid:
     @property
     def times_s(self) -> Array:
         """Sample times in s after the origin time, shape (number,)."""
-        return (self.first + np.arange(self.number)) * self.step_s
+        return np.asarray((self.first + np.arange(self.number)) * self.step_s, float)
 
 
 @dataclass(frozen=True)
@@ -138,13 +145,13 @@ def prepare(raw: RawChannel, metadata: ChannelMetadata, settings: RecordSettings
         instrument = instrument_of(metadata.response, settings.response == "full")
         expected = quantity_of(raw.channel)
         if instrument.unit.quantity != expected:
-            raise Unusable(
+            raise UnusableError(
                 f"the channel code says {expected}, the input unit '{instrument.unit_name}' is one of"
                 f" {instrument.unit.quantity}; correct one of them"
             )
         axis, note = channel_axis(raw.channel, metadata.azimuth_deg, metadata.dip_deg)
         checked = check_channel(raw, settings)
-    except Unusable as reason:
+    except UnusableError as reason:
         return replace(row, reason=str(reason))
     odd = tuple(n for n in (*metadata.notes, *instrument.notes, note) if n)
     found = replace(found, gaps=checked.gaps, gap_s=round(checked.gap_s, 3))
@@ -158,7 +165,7 @@ def corners_of(sensor: Sensor, grid: Grid, settings: RecordSettings) -> Corners:
 
     Raises
     ------
-    Unusable
+    UnusableError
         When nothing is left between the lowest and the highest usable frequency.
     """
     lows = [settings.low_hz or _LOWEST_HZ]
@@ -172,7 +179,7 @@ def corners_of(sensor: Sensor, grid: Grid, settings: RecordSettings) -> Corners:
         highs.append(high)
     low, high = max(lows), min(highs)
     if not high > 2.0 * low:
-        raise Unusable(f"only {low:.3g} to {high:.3g} Hz are usable: less than an octave")
+        raise UnusableError(f"only {low:.3g} to {high:.3g} Hz are usable: less than an octave")
     return Corners(0.5 * low, low, high, min(high / _TRANSITION, _TRANSITION * stop))
 
 
@@ -203,7 +210,7 @@ def motion_of(
 
     Raises
     ------
-    Unusable
+    UnusableError
         When no piece is long enough, or the axes lie in one plane.
     """
     wanted = TARGET_ORDER[sensor.quantity] if order is None else order
@@ -219,7 +226,7 @@ def motion_of(
     axes = np.array([c.axis for c in sensor.channels])
     turned, turned_valid, _ = to_east_north_up(axes, np.array(data), np.array(valid))
     if not turned_valid.any():
-        raise Unusable("no sample is left after masking, or no channel lies along East, North or Up")
+        raise UnusableError("no sample is left after masking, or no channel lies along East, North or Up")
     pass_band = (corners.low, corners.high)
     return Motion(turned, turned_valid, pass_band, tuple(replace(r, used=True) for r in reports))
 

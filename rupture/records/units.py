@@ -6,7 +6,7 @@ import math
 import re
 from dataclasses import dataclass
 
-from rupture.records.report import Unusable
+from rupture.records.report import UnusableError
 
 
 @dataclass(frozen=True)
@@ -78,7 +78,7 @@ def parse_unit(name: str | None) -> Unit:
 
     Raises
     ------
-    Unusable
+    UnusableError
         When the unit is absent or is not one of translation or rotation.
 
     Examples
@@ -89,13 +89,15 @@ def parse_unit(name: str | None) -> Unit:
     'rotation'
     """
     if name is None or not name.strip():
-        raise Unusable("the metadata give no input unit; without it the record cannot be turned into ground motion")
+        raise UnusableError(
+            "the metadata give no input unit; without it the record cannot be turned into ground motion"
+        )
     text = name.strip().lower()
     for pattern, replacement in _SPELLINGS:
         text = re.sub(pattern, replacement, text)
     found = _PATTERN.fullmatch(text)
     if found is None or (found["base"] == "gal" and found["rate"]):
-        raise Unusable(
+        raise UnusableError(
             f"the input unit '{name}' is not known as translation (m, m/s, m/s**2) or rotation (rad, rad/s, rad/s**2);"
             " correct it in the StationXML"
         )

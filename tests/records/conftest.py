@@ -90,9 +90,7 @@ def response(unit, gain):
     stage = PolesZerosResponseStage(
         1, gain, 1.0, unit, "counts", "LAPLACE (RADIANS/SECOND)", 1.0, [], [], normalization_factor=1.0
     )
-    return Response(
-        instrument_sensitivity=InstrumentSensitivity(gain, 1.0, unit, "counts"), response_stages=[stage]
-    )
+    return Response(instrument_sensitivity=InstrumentSensitivity(gain, 1.0, unit, "counts"), response_stages=[stage])
 
 
 @dataclass
@@ -146,10 +144,19 @@ class World:
             for code, (azimuth, dip) in zip(inst.codes, inst.angles, strict=True):
                 station.channels.append(
                     Channel(
-                        code, inst.location, lat, lon, up, 0.0, azimuth, dip, sample_rate=inst.rate,
-                        start_date=obspy.UTCDateTime(start), end_date=obspy.UTCDateTime(end) if end else None,
+                        code,
+                        inst.location,
+                        lat,
+                        lon,
+                        up,
+                        0.0,
+                        azimuth,
+                        dip,
+                        sample_rate=inst.rate,
+                        start_date=obspy.UTCDateTime(start),
+                        end_date=obspy.UTCDateTime(end) if end else None,
                         response=response(inst.unit, inst.gain),
-                    )  # fmt: skip
+                    )
                 )
         return Inventory([Network("XX", list(stations.values()))], source="invented")
 

@@ -3,7 +3,7 @@ import pytest
 
 from rupture.records.checks import check_channel, mask_grid
 from rupture.records.read import RawChannel, Segment
-from rupture.records.report import Unusable
+from rupture.records.report import UnusableError
 from rupture.records.settings import RecordSettings
 
 RATE = 50.0
@@ -15,7 +15,9 @@ def wave(seconds=120.0, amplitude=5e4, seed=3):
     t = np.arange(round(seconds * RATE)) / RATE
     rng = np.random.default_rng(seed)
     shape = np.where(t > 40.0, np.exp(-(t - 40.0) / 20.0), 0.0)
-    tone = sum(np.sin(2 * np.pi * f * t + p) for f, p in zip(rng.uniform(0.2, 8.0, 20), rng.uniform(0, 6, 20), strict=True))
+    tone = sum(
+        np.sin(2 * np.pi * f * t + p) for f, p in zip(rng.uniform(0.2, 8.0, 20), rng.uniform(0, 6, 20), strict=True)
+    )
     return np.round(amplitude * shape * tone / 4.0 + 20.0 * rng.standard_normal(t.size))
 
 
@@ -42,14 +44,14 @@ def test_onsets_and_crests_are_no_faults(seed):
 
 
 def test_dead_channel():
-    with pytest.raises(Unusable, match="dead channel: every sample is 17"):
+    with pytest.raises(UnusableError, match="dead channel: every sample is 17"):
         check_channel(raw((0.0, np.full(5000, 17.0))), SETTINGS)
 
 
 def test_flat_channel():
     x = np.full(6000, 17.0)
     x[:100] = wave()[:100]
-    with pytest.raises(Unusable, match="flat channel"):
+    with pytest.raises(UnusableError, match="flat channel"):
         check_channel(raw((0.0, x)), SETTINGS)
 
 
@@ -63,7 +65,7 @@ def test_flat_stretch_is_masked():
     assert "without any change" in found.notes[0]
 
 
-@pytest.mark.parametrize("limit", [0.3, 0.6, 0.9])
+@pytest.mark.parametrize("limit", [0.3, 0.6, 0.8])
 def test_clipped_stretch_is_masked(limit):
     x = wave()
     top = round(limit * np.abs(x).max())
@@ -76,7 +78,7 @@ def test_clipped_stretch_is_masked(limit):
 
 def test_clipped_channel_is_left_out():
     x = np.clip(wave() - 10.0, -30.0, 30.0) * 1000
-    with pytest.raises(Unusable, match="clipped: .* of the samples stand at the limit of 30000"):
+    with pytest.raises(UnusableError, match=r"clipped: .* of the samples stand at the limit of 30000"):
         check_channel(raw((0.0, x)), RecordSettings(clip_share=0.1))
 
 

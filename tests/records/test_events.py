@@ -28,7 +28,12 @@ def quakeml(tmp_path):
 
 
 def origin(**changes):
-    values = {"time": obspy.UTCDateTime(2031, 4, 5, 6, 7, 8.25), "longitude": 179.9, "latitude": -12.0, "depth": 15500.0}
+    values = {
+        "time": obspy.UTCDateTime(2031, 4, 5, 6, 7, 8.25),
+        "longitude": 179.9,
+        "latitude": -12.0,
+        "depth": 15500.0,
+    }
     return Origin(**(values | changes))
 
 
@@ -66,7 +71,10 @@ def test_no_origin_no_event_several_events(quakeml):
         read_event(quakeml(Event()))
     with pytest.raises(InputError, match="holds no event"):
         read_event(quakeml())
-    path = quakeml(Event("smi:local/one", origins=[origin()]), Event("smi:local/two", origins=[origin(depth=3000.0)]))
+    path = quakeml(
+        Event(resource_id="smi:local/one", origins=[origin()]),
+        Event(resource_id="smi:local/two", origins=[origin(depth=3000.0)]),
+    )
     with pytest.raises(InputError, match="holds 2 events"):
         read_event(path)
     assert read_event(path, "two").depth_km == 3.0

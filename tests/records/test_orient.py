@@ -5,7 +5,7 @@ from hypothesis import strategies as st
 from hypothesis.extra import numpy as hnp
 
 from rupture.records.orient import axis_vector, channel_axis, to_east_north_up
-from rupture.records.report import Unusable
+from rupture.records.report import UnusableError
 
 ANGLE = st.floats(0, 360, allow_nan=False)
 TRIPLE = hnp.arrays(float, (3, 5), elements=st.floats(-1e3, 1e3))
@@ -67,7 +67,7 @@ def test_metadata_win_over_names():
 def test_names_serve_only_where_angles_are_absent():
     assert channel_axis("HHZ", None, None)[0][2] == 1.0
     assert "from the name" in channel_axis("HHE", None, None)[1]
-    with pytest.raises(Unusable, match="HH1"):
+    with pytest.raises(UnusableError, match="HH1"):
         channel_axis("HH1", None, None)
 
 
@@ -85,7 +85,7 @@ def test_one_slanted_channel_gives_nothing():
 
 
 def test_coplanar_axes_are_refused():
-    with pytest.raises(Unusable, match="one plane"):
+    with pytest.raises(UnusableError, match="one plane"):
         back([(0.0, 0.0), (90.0, 0.0), (45.0, 0.0)], np.ones((3, 2)))
 
 

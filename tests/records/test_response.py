@@ -7,7 +7,7 @@ import pytest
 from obspy.core.inventory import Response
 from obspy.core.inventory.response import InstrumentSensitivity, PolesZerosResponseStage
 
-from rupture.records.report import Unusable
+from rupture.records.report import UnusableError
 from rupture.records.response import Corners, Instrument, deconvolve, instrument_band, instrument_of
 from rupture.records.units import parse_unit
 
@@ -22,7 +22,9 @@ def sensor_response(unit, gain, zeros=(), poles=(), reference=1.0):
         1, gain, reference, unit, "V", "LAPLACE (RADIANS/SECOND)", reference, list(zeros), list(poles),
         normalization_factor=1 / abs(shape),
     )  # fmt: skip
-    return Response(instrument_sensitivity=InstrumentSensitivity(gain, reference, unit, "counts"), response_stages=[stage])
+    return Response(
+        instrument_sensitivity=InstrumentSensitivity(gain, reference, unit, "counts"), response_stages=[stage]
+    )
 
 
 @pytest.mark.parametrize("full", [True, False], ids=["full response", "sensitivity"])
@@ -111,14 +113,14 @@ def test_a_shift_of_a_hundredth_of_a_sample_is_seen(kit):
 @pytest.mark.parametrize("value", [0.0, float("nan"), float("inf")])
 def test_bad_sensitivity(value):
     response = Response(instrument_sensitivity=InstrumentSensitivity(value, 1.0, "m/s", "counts"))
-    with pytest.raises(Unusable, match="sensitivity is"):
+    with pytest.raises(UnusableError, match="sensitivity is"):
         instrument_of(response, True)
 
 
 def test_no_response_and_no_unit():
-    with pytest.raises(Unusable, match="no response"):
+    with pytest.raises(UnusableError, match="no response"):
         instrument_of(None, True)
-    with pytest.raises(Unusable, match="no input unit"):
+    with pytest.raises(UnusableError, match="no input unit"):
         instrument_of(Response(instrument_sensitivity=InstrumentSensitivity(1.0, 1.0, None, "counts")), True)
 
 

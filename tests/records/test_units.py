@@ -1,7 +1,7 @@
 import numpy as np
 import pytest
 
-from rupture.records.report import Unusable
+from rupture.records.report import UnusableError
 from rupture.records.units import parse_unit
 
 
@@ -56,11 +56,11 @@ def test_spellings(name, quantity, order, scale):
     "name", ["V", "counts", "Pa", "m/m", "degC", "C", "g", "T", "m**2/s", "strain", "m/s**3", "gal/s", "rd/s"]
 )
 def test_anything_else_is_refused_by_name(name):
-    with pytest.raises(Unusable, match=rf"'{name}'".replace("*", r"\*")):
+    with pytest.raises(UnusableError, match=rf"'{name}'".replace("*", r"\*")):
         parse_unit(name)
 
 
 @pytest.mark.parametrize("name", [None, "", "  "])
 def test_absent(name):
-    with pytest.raises(Unusable, match="no input unit"):
+    with pytest.raises(UnusableError, match="no input unit"):
         parse_unit(name)
