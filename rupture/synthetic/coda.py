@@ -12,6 +12,7 @@ from rupture.conventions import ACCELERATION, KM
 from rupture.earth.layers import LayeredModel
 from rupture.errors import InputError
 from rupture.geodesy import distance_azimuth
+from rupture.progress import Report
 from rupture.synthetic.engine import Engine, Receivers, Sampling, SubEvents
 from rupture.synthetic.interfaces import free_surface_sv
 
@@ -63,12 +64,14 @@ class ScatteringEngine:
 
     Each group of sub-events sends, besides the waves of the inner engine, scattered S waves: copies of its ground motion, delayed,
     turned to another azimuth, apparent speed and polarisation, each an exact plane SV or SH wave at the free surface with its
-    rotation. P is left out: in the coda S has some nine tenths of the energy (equipartition, Weaver 1982).
+    rotation. P is left out: in the coda S has some nine tenths of the energy (equipartition, Weaver 1982). `report` is told how many
+    groups are done.
     """
 
     engine: Engine
     settings: CodaSettings
     seed: int
+    report: Report | None = None
 
     def __call__(
         self, sources: SubEvents, receivers: Receivers, model: LayeredModel, sampling: Sampling
@@ -78,7 +81,10 @@ class ScatteringEngine:
         places = group_places(longitude, latitude)
         total = np.zeros((longitude.size, 6, sampling.samples))
         group = np.floor(sources.time_s / self.settings.group_s).astype(int)
-        for number in np.unique(group):
+        numbers = np.unique(group)
+        for done, number in enumerate(numbers):
+            if self.report is not None:
+                self.report(done, numbers.size)
             member = group == number
             part = SubEvents(*(getattr(sources, name)[member] for name in SubEvents.__dataclass_fields__))
             direct = self.engine(part, receivers, model, sampling)

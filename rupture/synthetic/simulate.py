@@ -95,9 +95,9 @@ def ground_motion(scenario: Scenario, progress: Progress | None = None) -> Groun
     check_sampling(sampling)
     sources = make_sub_events(scenario.source(), scenario.seed)
     engine = _engine(scenario)
-    if scenario.coda.energy_ratio > 0:
-        engine = ScatteringEngine(engine, scenario.coda_settings(), scenario.seed)
-    with progress.stage(f"synthetic records ({scenario.engine} engine)"):
+    with progress.stage(f"synthetic records ({scenario.engine} engine)") as report:
+        if scenario.coda.energy_ratio > 0:
+            engine = ScatteringEngine(engine, scenario.coda_settings(), scenario.seed, report)
         records = engine(sources, Receivers(longitude, latitude), scenario.model(), sampling)
     return GroundMotion(stations, sources, sampling, records)
 
