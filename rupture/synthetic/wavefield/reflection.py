@@ -24,7 +24,7 @@ NEGLIGIBLE_DEPTH = 10.0
 """Layers more than this many one-way S decay lengths below the source are not visited: their echo is exp(-20)."""
 
 
-@njit(cache=True)
+@njit(cache=True, error_model="numpy", fastmath={"contract"})
 def _root(x, y):
     """Return the square root of x + iy with positive real part; hypot is not needed at these magnitudes."""
     modulus = np.sqrt(x * x + y * y)
@@ -37,7 +37,14 @@ def _root(x, y):
     return complex(-0.5 * y / im, -im)
 
 
-@njit(cache=True)
+@njit(cache=True, error_model="numpy", fastmath={"contract"})
+def _inverse(z):
+    """Return 1 / z; the squares stay far from overflow for all that is divided here."""
+    size = z.real * z.real + z.imag * z.imag
+    return complex(z.real / size, -z.imag / size)
+
+
+@njit(cache=True, error_model="numpy", fastmath={"contract"})
 def _decay(nu, thickness):
     """Return exp(-nu thickness)."""
     size = np.exp(-nu.real * thickness)
@@ -45,33 +52,34 @@ def _decay(nu, thickness):
     return complex(size * np.cos(angle), -size * np.sin(angle))
 
 
-@njit(cache=True)
+@njit(cache=True, error_model="numpy", fastmath={"contract"})
 def _mean_decay(e_alpha, e_beta, x):
     """Return (e_alpha - e_beta) / x with x = log(e_alpha / e_beta), without cancellation for small x."""
     if x.real * x.real + x.imag * x.imag > 0.06:
-        return (e_alpha - e_beta) / x
+        return (e_alpha - e_beta) * _inverse(x)
     series = 1.0 + x / 9.0
     for n in range(8, 1, -1):
         series = 1.0 + x / n * series
     return e_beta * series
 
 
-@njit(cache=True)
+@njit(cache=True, error_model="numpy", fastmath={"contract"})
 def _impedance(k, nu_alpha, nu_beta, ratio, mu):
-    """Return q and the symmetric impedance (00, 01, 11) of downgoing P-SV waves in a homogeneous layer."""
-    q = (k * ratio) / (k + nu_alpha) + nu_alpha / (k + nu_beta)
-    scale = mu / q
-    return q, -nu_alpha * scale, k * (2.0 * mu - scale), -nu_beta * scale
+    """Return 1 / q and the symmetric impedance (00, 01, 11) of downgoing P-SV waves in a homogeneous layer."""
+    sum_alpha, sum_beta = k + nu_alpha, k + nu_beta
+    inverse_q = sum_alpha * sum_beta * _inverse(k * ratio * sum_beta + nu_alpha * sum_alpha)
+    scale = mu * inverse_q
+    return inverse_q, -nu_alpha * scale, k * (2.0 * mu - scale), -nu_beta * scale
 
 
-@njit(cache=True)
+@njit(cache=True, error_model="numpy", fastmath={"contract"})
 def _layer_psv(k, nu_alpha, nu_beta, ratio, mu, thickness, e_alpha, e_beta, z00, z01, z11, want_transfer):
     """Carry the P-SV impedance from the base of a layer to its top; also return displacement base over top."""
-    q, y00, y01, y11 = _impedance(k, nu_alpha, nu_beta, ratio, mu)
+    inverse_q, y00, y01, y11 = _impedance(k, nu_alpha, nu_beta, ratio, mu)
     # Displacement of downgoing waves across the layer; delta is (e_alpha - e_beta) / k_beta^2.
-    slope = thickness * (1.0 - ratio) / (nu_alpha + nu_beta)
+    slope = thickness * (1.0 - ratio) * _inverse(nu_alpha + nu_beta)
     delta = -slope * _mean_decay(e_alpha, e_beta, (nu_beta - nu_alpha) * thickness)
-    shared = k * delta / q
+    shared = k * delta * inverse_q
     p00 = e_beta + k * shared
     p01 = nu_beta * shared
     p10 = -nu_alpha * shared
@@ -79,7 +87,7 @@ def _layer_psv(k, nu_alpha, nu_beta, ratio, mu, thickness, e_alpha, e_beta, z00,
     # Reflection of displacement at the base: (Y_up - Z) w_up = (Z - Y_down) w_down.
     a00, a01, a11 = -y00 - z00, y01 - z01, -y11 - z11
     b00, b01, b11 = z00 - y00, z01 - y01, z11 - y11
-    inverse = 1.0 / (a00 * a11 - a01 * a01)
+    inverse = _inverse(a00 * a11 - a01 * a01)
     # Y_up has the sign of its off-diagonal kept, its diagonal turned.
     r00 = (a11 * b00 - a01 * b01) * inverse
     r01 = (a11 * b01 - a01 * b11) * inverse
@@ -94,7 +102,7 @@ def _layer_psv(k, nu_alpha, nu_beta, ratio, mu, thickness, e_alpha, e_beta, z00,
     s01 = p00 * m01 - p01 * m11
     s10 = p11 * m10 - p10 * m00
     s11 = 1.0 + p11 * m11 - p10 * m01
-    inverse = 1.0 / (s00 * s11 - s01 * s10)
+    inverse = _inverse(s00 * s11 - s01 * s10)
     top00 = -y00 + 2.0 * y00 * s11 * inverse
     top11 = -y11 + 2.0 * y11 * s00 * inverse
     top01 = y01 - 2.0 * y00 * s01 * inverse
@@ -108,16 +116,16 @@ def _layer_psv(k, nu_alpha, nu_beta, ratio, mu, thickness, e_alpha, e_beta, z00,
     return top00, top01, top11, t00, t01, t10, t11
 
 
-@njit(cache=True)
+@njit(cache=True, error_model="numpy", fastmath={"contract"})
 def _layer_sh(nu_beta, mu, e_beta, z):
     """Carry the SH impedance through a layer; also return displacement base over top."""
     y = -mu * nu_beta
-    reflection = (z - y) / (-y - z)
-    echo = 1.0 / (1.0 + e_beta * e_beta * reflection)
+    reflection = (y - z) * _inverse(y + z)
+    echo = _inverse(1.0 + e_beta * e_beta * reflection)
     return -y + 2.0 * y * echo, (1.0 + reflection) * e_beta * echo
 
 
-@njit(cache=True, parallel=True)
+@njit(cache=True, parallel=True, error_model="numpy", fastmath={"contract"})
 def surface_kernels(
     k, weight, count, omega2, alpha2, beta2, density, thickness, emit, layer_of_depth, out0, out1, out2
 ):
@@ -140,6 +148,12 @@ def surface_kernels(
     """
     layers = density.size
     depths = layer_of_depth.size
+    k_alpha2, k_beta2, ratios = np.empty_like(alpha2), np.empty_like(alpha2), np.empty_like(alpha2)
+    for f in range(omega2.size):
+        for j in range(layers):
+            k_alpha2[f, j] = omega2[f] / alpha2[f, j]
+            k_beta2[f, j] = omega2[f] / beta2[f, j]
+            ratios[f, j] = beta2[f, j] / alpha2[f, j]
     for ik in prange(k.size):
         kk = k[ik]
         k2 = kk * kk
@@ -163,17 +177,15 @@ def surface_kernels(
             bottom = layers - 1
             below = 0.0
             for j in range(layers):
-                ka2 = omega2[f] / alpha2[f, j]
-                kb2 = omega2[f] / beta2[f, j]
-                nu_a[j] = _root(k2 - ka2.real, -ka2.imag)
-                nu_b[j] = _root(k2 - kb2.real, -kb2.imag)
+                nu_a[j] = _root(k2 - k_alpha2[f, j].real, -k_alpha2[f, j].imag)
+                nu_b[j] = _root(k2 - k_beta2[f, j].real, -k_beta2[f, j].imag)
                 if j > last and j < layers - 1:
                     below += nu_b[j].real * thickness[j]
                     if below > NEGLIGIBLE_DEPTH:
                         bottom = j
                         break
             mu = density[bottom] * beta2[f, bottom]
-            _, z00, z01, z11 = _impedance(kk, nu_a[bottom], nu_b[bottom], beta2[f, bottom] / alpha2[f, bottom], mu)
+            _, z00, z01, z11 = _impedance(kk, nu_a[bottom], nu_b[bottom], ratios[f, bottom], mu)
             z_sh = -mu * nu_b[bottom]
             for j in range(bottom - 1, -1, -1):
                 d = emit[j]
@@ -185,9 +197,8 @@ def surface_kernels(
                 mu = density[j] * beta2[f, j]
                 e_a = _decay(nu_a[j], thickness[j])
                 e_b = _decay(nu_b[j], thickness[j])
-                ratio = beta2[f, j] / alpha2[f, j]
                 z00, z01, z11, t00, t01, t10, t11 = _layer_psv(
-                    kk, nu_a[j], nu_b[j], ratio, mu, thickness[j], e_a, e_b, z00, z01, z11, j <= last
+                    kk, nu_a[j], nu_b[j], ratios[f, j], mu, thickness[j], e_a, e_b, z00, z01, z11, j <= last
                 )
                 z_sh, t_sh = _layer_sh(nu_b[j], mu, e_b, z_sh)
                 if j <= last:
@@ -197,9 +208,9 @@ def surface_kernels(
                     transfer[j, 3] = t11
                     transfer[j, 4] = t_sh
             # Displacement under unit traction at the surface, carried down to each source.
-            inverse = 1.0 / (z00 * z11 - z01 * z01)
+            inverse = _inverse(z00 * z11 - z01 * z01)
             u00, u01, u10, u11 = z11 * inverse, -z01 * inverse, -z01 * inverse, z00 * inverse
-            v = -1.0 / z_sh
+            v = -_inverse(z_sh)
             for j in range(last + 1):
                 t00, t01, t10, t11 = transfer[j, 0], transfer[j, 1], transfer[j, 2], transfer[j, 3]
                 u00, u10 = t00 * u00 + t01 * u10, t10 * u00 + t11 * u10
@@ -212,15 +223,16 @@ def surface_kernels(
                 rigidity = density[j] * beta2[f, j]
                 modulus = density[j] * alpha2[f, j]
                 lame = modulus - 2.0 * rigidity
+                soft, hard = _inverse(rigidity), _inverse(modulus)
                 # Strain by reciprocity: a for radial, b for vertical, c for transverse motion of the surface.
                 a1 = kk * u00
-                a2 = -(z00 * u00 + z01 * u10) / rigidity
-                a3 = -(z01 * u00 + z11 * u10 + lame * a1) / modulus
+                a2 = -(z00 * u00 + z01 * u10) * soft
+                a3 = -(z01 * u00 + z11 * u10 + lame * a1) * hard
                 b1 = kk * u01
-                b2 = (z00 * u01 + z01 * u11) / rigidity
-                b3 = -(z01 * u01 + z11 * u11 + lame * b1) / modulus
+                b2 = (z00 * u01 + z01 * u11) * soft
+                b3 = -(z01 * u01 + z11 * u11 + lame * b1) * hard
                 c1 = -kk * v
-                c2 = at_source[d, 3] * v / rigidity
+                c2 = at_source[d, 3] * v * soft
                 wk = w * kk
                 wi = w / kk
                 o = out0[ik, d, f]
