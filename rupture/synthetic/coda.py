@@ -2,11 +2,13 @@
 
 from __future__ import annotations
 
+from concurrent.futures import ThreadPoolExecutor
 from dataclasses import dataclass
 
 import numpy as np
-from numba import njit
+from numba import config, njit
 from numpy.typing import NDArray
+from scipy.fft import next_fast_len
 
 from rupture.conventions import ACCELERATION, KM
 from rupture.earth.layers import LayeredModel
@@ -95,13 +97,32 @@ class ScatteringEngine:
             _, _, back_azimuth = distance_azimuth(
                 part.longitude_deg[heaviest], part.latitude_deg[heaviest], longitude, latitude
             )
-            for members, offset_m in places:
-                # Sensors of one array see the same scattered waves, each at its own time.
-                rng = np.random.default_rng((self.seed, int(number), int(members[0])))
-                total[members] += scatter(
-                    direct[members[0]], float(back_azimuth[members[0]]), offset_m, model, sampling, self.settings, rng
-                )
+            total += self._coda_of_group(int(number), direct, back_azimuth, places, model, sampling)
         return total
+
+    def _coda_of_group(
+        self,
+        number: int,
+        direct: NDArray[np.float64],
+        back_azimuth_rad: NDArray[np.float64],
+        places: list[tuple[NDArray[np.int64], NDArray[np.float64]]],
+        model: LayeredModel,
+        sampling: Sampling,
+    ) -> NDArray[np.float64]:
+        """Return the coda of one group of sub-events; places are shared among threads, each owns its rows."""
+        out = np.zeros_like(direct)
+
+        def one(place: tuple[NDArray[np.int64], NDArray[np.float64]]) -> None:
+            # Sensors of one array see the same scattered waves, each at its own time.
+            members, offset_m = place
+            first = int(members[0])
+            rng = np.random.default_rng((self.seed, number, first))
+            back_azimuth = float(back_azimuth_rad[first])
+            out[members] = scatter(direct[first], back_azimuth, offset_m, model, sampling, self.settings, rng)
+
+        with ThreadPoolExecutor(config.NUMBA_NUM_THREADS) as pool:
+            list(pool.map(one, places))
+        return out
 
 
 def scatter(
@@ -131,10 +152,12 @@ def scatter(
         Amount and shape of the coda; source of random numbers.
     """
     samples = direct.shape[1]
-    length = 2 * samples
+    # Nothing is scattered before the first wave has come.
+    first = int(np.argmax(direct.any(axis=0)))
+    length = next_fast_len(2 * (samples - first), real=True)
     step_hz = 1.0 / (length * sampling.step_s)
     band = min(int(sampling.high_hz / step_hz) + 1, length // 2)
-    inputs = np.fft.rfft(direct[ACCELERATION], length, axis=1)[:, :band]
+    inputs = np.fft.rfft(direct[ACCELERATION, first:], length, axis=1)[:, :band]
     count = settings.waves
     delay = rng.exponential(settings.decay_s, count)
     forward = rng.random(count) < settings.forward_share
@@ -142,44 +165,59 @@ def scatter(
     azimuth = np.where(forward, around, 2 * np.pi * rng.random(count))
     slowness, transfer = plane_s_waves(azimuth, rng.random(count), rng.standard_normal((count, 2, 3)), model)
     late = delay + offset_m @ slowness
-    spectra = _filter_waves(late, transfer, inputs, step_hz)
-    full = np.zeros((*spectra.shape[:2], length // 2 + 1), complex)
-    full[..., :band] = spectra
-    coda = np.fft.irfft(full, length, axis=-1)[..., :samples]
+    spectra = _filter_waves(late, _parts(transfer, -1), _parts(inputs, 1), step_hz)
+    full = np.zeros((len(late), 6, length // 2 + 1), complex)
+    full[..., :band] = spectra[..., 0, :] + 1j * spectra[..., 1, :]
+    coda = np.zeros((len(late), *direct.shape))
+    coda[..., first:] = np.fft.irfft(full, length, axis=-1)[..., : samples - first]
     have = np.sum(coda[0, ACCELERATION] ** 2)
     want = settings.energy_ratio * np.sum(direct[ACCELERATION] ** 2)
     return coda * np.sqrt(want / have) if have > 0 else coda
 
 
-@njit(cache=True, error_model="numpy")
+def _parts(values: NDArray[np.complex128], axis: int) -> NDArray[np.float64]:
+    return np.ascontiguousarray(np.stack([values.real, values.imag], axis=axis))
+
+
+@njit(cache=True, nogil=True, error_model="numpy")
 def _filter_waves(
     late_s: NDArray[np.float64],
-    transfer: NDArray[np.complex128],
-    inputs: NDArray[np.complex128],
+    transfer: NDArray[np.float64],
+    inputs: NDArray[np.float64],
     step_hz: float,
-) -> NDArray[np.complex128]:
-    """Add delayed waves made of three inputs: late (sensors, waves), transfer (waves, 6, 3), inputs (3, frequencies)."""
+) -> NDArray[np.float64]:
+    """Add delayed waves made of three inputs, real and imaginary parts apart on the last axis but one.
+
+    Shapes: late (sensors, waves), transfer (waves, 6, 3, 2), inputs (3, 2, frequencies), result (sensors, 6, 2, frequencies).
+    """
     sensors, waves = late_s.shape
-    band = inputs.shape[1]
-    out = np.zeros((sensors, 6, band), np.complex128)
+    band = inputs.shape[2]
+    out = np.zeros((sensors, 6, 2, band))
+    line_re, line_im = np.empty(band), np.empty(band)
     for sensor in range(sensors):
-        filters = np.zeros((6, 3, band), np.complex128)
-        line = np.empty(band, np.complex128)
+        filters = np.zeros((6, 3, 2, band))
         for wave in range(waves):
-            turn = np.exp(-2j * np.pi * step_hz * late_s[sensor, wave])
-            now = complex(1.0, 0.0)
+            angle = -2 * np.pi * step_hz * late_s[sensor, wave]
+            turn_re, turn_im = np.cos(angle), np.sin(angle)
+            now_re, now_im = 1.0, 0.0
             for k in range(band):
-                line[k] = now
-                now *= turn
+                line_re[k], line_im[k] = now_re, now_im
+                now_re, now_im = now_re * turn_re - now_im * turn_im, now_re * turn_im + now_im * turn_re
             for c in range(6):
                 for i in range(3):
-                    weight = transfer[wave, c, i]
+                    w_re, w_im = transfer[wave, c, i, 0], transfer[wave, c, i, 1]
                     for k in range(band):
-                        filters[c, i, k] += weight * line[k]
+                        filters[c, i, 0, k] += w_re * line_re[k] - w_im * line_im[k]
+                        filters[c, i, 1, k] += w_re * line_im[k] + w_im * line_re[k]
         for c in range(6):
             for i in range(3):
                 for k in range(band):
-                    out[sensor, c, k] += filters[c, i, k] * inputs[i, k]
+                    out[sensor, c, 0, k] += (
+                        filters[c, i, 0, k] * inputs[i, 0, k] - filters[c, i, 1, k] * inputs[i, 1, k]
+                    )
+                    out[sensor, c, 1, k] += (
+                        filters[c, i, 0, k] * inputs[i, 1, k] + filters[c, i, 1, k] * inputs[i, 0, k]
+                    )
     return out
 
 

@@ -7,9 +7,11 @@ field, surface waves, conversions between P and S on the way, further multiples;
 
 from __future__ import annotations
 
+from concurrent.futures import ThreadPoolExecutor
 from dataclasses import dataclass
 
 import numpy as np
+from numba import config
 from numpy.typing import NDArray
 
 from rupture.conventions import KM
@@ -187,9 +189,7 @@ class RayEngine:
         loss_step = max(float(rays.loss_s.max()), 1e-6) / (_DECAY_LEVELS - 2)
         decay = attenuation(frequency, np.asarray(loss_step * np.arange(_DECAY_LEVELS), np.float64))
         after = arrival - sampling.start_s - early * sampling.step_s
-        spectra = sum_spectra(
-            after, rays.loss_s, weight * heard[..., None], rays.head, source, decay, loss_step, step_hz
-        )
+        spectra = _sum_rays(after, rays, weight * heard[..., None], source, decay, loss_step, step_hz)
         full = np.zeros((*spectra.shape[:2], period // 2 + 1), np.complex128)
         full[..., 1 : frequency.size + 1] = spectra
         series = np.fft.irfft(full, period, axis=-1) / sampling.step_s
@@ -237,6 +237,28 @@ def pass_band(frequency_hz: NDArray[np.float64], high_hz: float) -> NDArray[np.f
     """Return 1 up to 0.8 high_hz, falling as a cosine to 0 at high_hz."""
     share = np.clip((frequency_hz / high_hz - PASS_SHARE) / (1 - PASS_SHARE), 0.0, 1.0)
     return 0.5 * (1 + np.cos(np.pi * share))
+
+
+def _sum_rays(
+    after_s: NDArray[np.float64],
+    rays: Rays,
+    weight: NDArray[np.complex128],
+    source: NDArray[np.complex128],
+    decay: NDArray[np.complex128],
+    loss_step_s: float,
+    step_hz: float,
+) -> NDArray[np.complex128]:
+    """Add the spectra of all rays, receivers shared among threads; shape (receivers, 6, frequencies)."""
+    parts = np.ascontiguousarray(np.stack([weight.real, weight.imag], axis=-1))
+    sources, decays = np.stack([source.real, source.imag]), np.stack([decay.real, decay.imag])
+    out = np.zeros((after_s.shape[0], 2, 6, source.shape[1]))
+
+    def one(r: int) -> None:
+        sum_spectra(after_s[r], rays.loss_s[r], parts[r], rays.head, sources, decays, loss_step_s, step_hz, out[r])
+
+    with ThreadPoolExecutor(config.NUMBA_NUM_THREADS) as pool:
+        list(pool.map(one, range(after_s.shape[0])))
+    return out[:, 0] + 1j * out[:, 1]
 
 
 def _source_layers(depth_km: NDArray[np.float64], model: LayeredModel) -> NDArray[np.int64]:

@@ -3,7 +3,7 @@
 from __future__ import annotations
 
 import numpy as np
-from numba import njit, prange
+from numba import njit
 from numpy.typing import NDArray
 
 from rupture.synthetic.interfaces import free_surface_p, free_surface_sv, surface_reflection
@@ -78,7 +78,7 @@ def _radiate(tensor: Floats, azimuth: float, p: float, speed: float, downward: b
     return out_p, out_sv, out_sh
 
 
-@njit(cache=True, parallel=True, error_model="numpy")
+@njit(cache=True, nogil=True, error_model="numpy")
 def trace_rays(
     top_m: Floats,
     vp: Floats,
@@ -125,7 +125,7 @@ def trace_rays(
     loss_s = np.zeros((receivers, sources, rays))
     slowness = np.zeros((receivers, sources, rays))
     motion = np.zeros((receivers, sources, rays, 3), np.complex128)
-    for r in prange(receivers):
+    for r in range(receivers):
         path_m = np.zeros(top_m.size)
         for s in range(sources):
             layer = source_layer[s]
@@ -194,71 +194,69 @@ def trace_rays(
     return time_s, loss_s, slowness, motion
 
 
-@njit(cache=True, parallel=True, error_model="numpy")
+@njit(cache=True, nogil=True, error_model="numpy")
 def sum_spectra(
     arrival_s: Floats,
     loss_s: Floats,
-    weight: NDArray[np.complex128],
+    weight: Floats,
     integrated: NDArray[np.bool_],
-    source_spectrum: NDArray[np.complex128],
-    decay: NDArray[np.complex128],
+    source: Floats,
+    decay: Floats,
     decay_step_s: float,
     frequency_step_hz: float,
-) -> NDArray[np.complex128]:
-    """Add the spectra of all rays.
+    out: Floats,
+) -> None:
+    """Add the spectra of all rays of one receiver; real and imaginary parts apart.
 
     Parameters
     ----------
     arrival_s, loss_s
-        Arrival after the first sample and t* in s, shape (receivers, sources, rays).
+        Arrival after the first sample and t* in s, shape (sources, rays).
     weight
-        Six-component amplitude of each ray, shape (receivers, sources, rays, 6); rays whose six are all zero are left out.
+        Six-component amplitude of each ray, shape (sources, rays, 6, 2); rays whose six are all zero are left out.
     integrated
         Rays that are divided by omega, shape (rays,).
-    source_spectrum
-        Moment-rate spectra (from the onset of each source) times the response to all common factors, (sources, frequencies); frequency
-        number k is (k + 1) times the step.
+    source
+        Moment-rate spectra (from the onset of each source) times all that is common, (2, sources, frequencies); frequency number k is
+        (k + 1) times the step.
     decay
-        Attenuation and dispersion for t* = 0, decay_step_s, ...; shape (levels, frequencies).
+        Attenuation and dispersion for t* = 0, decay_step_s, ...; shape (2, levels, frequencies).
     decay_step_s, frequency_step_hz
         Steps of that table and of the frequencies.
-
-    Returns
-    -------
-    ndarray
-        Shape (receivers, 6, frequencies).
+    out
+        What is added to, shape (2, 6, frequencies).
     """
-    receivers, sources, rays = arrival_s.shape
-    count = source_spectrum.shape[1]
-    out = np.zeros((receivers, 6, count), np.complex128)
-    for r in prange(receivers):
-        real, imaginary = np.zeros((6, count)), np.zeros((6, count))
-        line_re, line_im = np.zeros(count), np.zeros(count)
-        for s in range(sources):
-            for ray in range(rays):
-                w = weight[r, s, ray]
-                if not np.any(w != 0):
-                    continue
-                angle = -2 * np.pi * frequency_step_hz * arrival_s[r, s, ray]
-                turn_re, turn_im = np.cos(angle), np.sin(angle)
-                now_re, now_im = turn_re, turn_im
-                place = loss_s[r, s, ray] / decay_step_s
-                level = int(place)
-                share = place - level
-                for k in range(count):
-                    d = decay[level, k] * (1.0 - share) + decay[level + 1, k] * share
-                    z = source_spectrum[s, k] * d
-                    if integrated[ray]:
-                        z /= 2 * np.pi * frequency_step_hz * (k + 1)
-                    line_re[k] = z.real * now_re - z.imag * now_im
-                    line_im[k] = z.real * now_im + z.imag * now_re
-                    now_re, now_im = now_re * turn_re - now_im * turn_im, now_re * turn_im + now_im * turn_re
-                for c in range(6):
-                    w_re, w_im = w[c].real, w[c].imag
-                    for k in range(count):
-                        real[c, k] += w_re * line_re[k] - w_im * line_im[k]
-                        imaginary[c, k] += w_re * line_im[k] + w_im * line_re[k]
-        for c in range(6):
+    sources, rays = arrival_s.shape
+    count = source.shape[2]
+    line_re, line_im = np.zeros(count), np.zeros(count)
+    for s in range(sources):
+        for ray in range(rays):
+            size = 0.0
+            for c in range(6):
+                size += abs(weight[s, ray, c, 0]) + abs(weight[s, ray, c, 1])
+            if size == 0.0:
+                continue
+            angle = -2 * np.pi * frequency_step_hz * arrival_s[s, ray]
+            turn_re, turn_im = np.cos(angle), np.sin(angle)
+            now_re, now_im = turn_re, turn_im
+            place = loss_s[s, ray] / decay_step_s
+            level = int(place)
+            share = place - level
             for k in range(count):
-                out[r, c, k] = complex(real[c, k], imaginary[c, k])
-    return out
+                d_re = decay[0, level, k] + share * (decay[0, level + 1, k] - decay[0, level, k])
+                d_im = decay[1, level, k] + share * (decay[1, level + 1, k] - decay[1, level, k])
+                z_re = source[0, s, k] * d_re - source[1, s, k] * d_im
+                z_im = source[0, s, k] * d_im + source[1, s, k] * d_re
+                line_re[k] = z_re * now_re - z_im * now_im
+                line_im[k] = z_re * now_im + z_im * now_re
+                now_re, now_im = now_re * turn_re - now_im * turn_im, now_re * turn_im + now_im * turn_re
+            if integrated[ray]:
+                for k in range(count):
+                    omega = 2 * np.pi * frequency_step_hz * (k + 1)
+                    line_re[k] /= omega
+                    line_im[k] /= omega
+            for c in range(6):
+                w_re, w_im = weight[s, ray, c, 0], weight[s, ray, c, 1]
+                for k in range(count):
+                    out[0, c, k] += w_re * line_re[k] - w_im * line_im[k]
+                    out[1, c, k] += w_re * line_im[k] + w_im * line_re[k]
