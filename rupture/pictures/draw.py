@@ -137,7 +137,7 @@ def draw_all(
     progress
         Called with (done, total).
     formats
-        File formats: png (300 dpi), pdf, svg.
+        File formats: png (300 dpi), pdf, svg; none for the tables alone.
     overlays
         GeoJSON files of fault traces or aftershocks to draw on the maps.
 
@@ -158,7 +158,8 @@ def draw_all(
     for done, sheet in enumerate(todo):
         if progress is not None:
             progress(done, len(todo))
-        picture = sheet.draw(style=style)
+        if formats:
+            picture = sheet.draw(style=style)
         for suffix in formats:
             path = folder / f"{sheet.name}.{suffix}"
             picture.savefig(path)

@@ -33,10 +33,14 @@ def browser() -> Iterator[Any]:
         yield opened
 
 
+@pytest.fixture(scope="module")
+def path(unilateral: Result, tmp_path_factory: pytest.TempPathFactory) -> Path:
+    return write_report(unilateral, tmp_path_factory.mktemp("page") / "report.html")
+
+
 @pytest.fixture
-def page(browser: Any, unilateral: Result, tmp_path: Path) -> Iterator[Any]:
+def page(browser: Any, path: Path) -> Iterator[Any]:
     """The open page of the unilateral result; afterwards: no error, and no request but the file itself."""
-    path = write_report(unilateral, tmp_path / "report.html")
     browser.requests.clear()
     browser.errors.clear()
     browser.open(path)
