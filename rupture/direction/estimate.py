@@ -30,9 +30,9 @@ class DirectionSettings:
     Attributes
     ----------
     bands_hz
-        Frequency bands in Hz; by default octave-and-a-half bands within what the record holds, 0.1 to 2 Hz.
+        Frequency bands in Hz; by default octave-and-a-half bands from 0.2 to 1.2 Hz within what the record holds.
     window_s
-        Window length in s for all bands; by default two periods of a band's lowest frequency, 4 s at least.
+        Window length in s for all bands; by default one and a half periods of a band's lowest frequency, 4 s at least.
     hop_s
         Time between windows in s.
     back_azimuth_step_deg
@@ -99,7 +99,7 @@ class SiteDirection:
     coherent
         Probability of a coherent wave, shape (B, T); NaN where masked.
     power
-        Mean square ground acceleration above the noise, all bands, (m/s^2)^2, shape (T,).
+        Mean square ground acceleration above the noise in the bands of the shortest windows, (m/s^2)^2, shape (T,).
     weight
         Share of one independent observation that a window stands for, shape (T,).
     """
@@ -118,7 +118,7 @@ class SiteDirection:
 
 
 def default_bands(site: Site) -> tuple[tuple[float, float], ...]:
-    """Return bands with corners 0.1, 0.25, 0.6, 1.5 Hz as far as the record holds them (at most to a third of its rate).
+    """Return bands with corners 0.2, 0.5, 1.2 Hz as far as the record holds them (at most to a third of its rate).
 
     Raises
     ------
@@ -126,7 +126,7 @@ def default_bands(site: Site) -> tuple[tuple[float, float], ...]:
         When the record holds no band of at least half an octave between 0.05 and 5 Hz.
     """
     low, high = max(site.band_hz[0], 0.05), min(site.band_hz[1], 1.0 / (3.0 * site.step_s), 5.0)
-    corners = (0.1, 0.25, 0.6, 1.5)
+    corners = (0.2, 0.5, 1.2)
     bands = []
     for a, b in zip(corners[:-1], corners[1:], strict=True):
         inside = max(a, low), min(b, high)
@@ -158,7 +158,7 @@ def estimate_direction(site: Site, noise_window_s: tuple[float, float], settings
         or the site has no rotation of any kind.
     """
     bands = settings.bands_hz or default_bands(site)
-    windows = [settings.window_s or max(4.0, 2.0 / low) for low, _ in bands]
+    windows = [settings.window_s or max(4.0, 1.5 / low) for low, _ in bands]
     nyquist = 0.5 / site.step_s
     for low, high in bands:
         if high * 7 / 6 > nyquist:
@@ -188,7 +188,9 @@ def estimate_direction(site: Site, noise_window_s: tuple[float, float], settings
         clear = _clear_windows(site.valid[used], centre, window, round(0.5 / (band[0] * site.step_s)))
         noise = mean_covariance(analytic, first, last)
         covariance = sliding_covariances(analytic, window, centre)
-        power += np.maximum(sum(covariance[entry(k, k)] - noise[entry(k, k)] for k in (ACC_E, ACC_N, ACC_Z)), 0.0)
+        if window_s == min(windows):
+            # Long windows would smear the onset and end that the shortest ones show.
+            power += np.maximum(sum(covariance[entry(k, k)] - noise[entry(k, k)] for k in (ACC_E, ACC_N, ACC_Z)), 0.0)
         degrees = independent_samples(band, window_s)
         error = float(np.hypot(settings.model_error_share, site.rotation_error_share))
         gain = np.zeros((trial.shape[1], time.size))

@@ -9,7 +9,7 @@ import numpy as np
 from numpy.typing import NDArray
 
 from rupture.direction import SiteDirection
-from rupture.earth import Earth
+from rupture.earth.responses import Responses
 from rupture.errors import InputError
 from rupture.event import Event
 from rupture.front.lines import KINDS, PARAMETERS, LinePrior, to_parameters
@@ -155,7 +155,7 @@ def fit_rupture(
     site_longitude_deg: Sequence[float],
     site_latitude_deg: Sequence[float],
     event: Event,
-    earth: Earth,
+    responses: Responses,
     settings: FitSettings,
     seed: int,
     progress: Callable[[int, int], None] | None = None,
@@ -167,8 +167,8 @@ def fit_rupture(
     ----------
     directions, site_longitude_deg, site_latitude_deg
         Per site; at least one.
-    event, earth
-        Hypocentre and travel times.
+    event, responses
+        Hypocentre, and the waves that a point source sends to the surface.
     settings, seed
         How, and the random numbers.
     progress
@@ -184,7 +184,7 @@ def fit_rupture(
     prior = prior or prior_for(event)
     longest_s = 3.0 * prior.length_m / 2800.0 + 20.0
     windows = lay_out(
-        directions, site_longitude_deg, site_latitude_deg, event, earth, longest_s,
+        directions, site_longitude_deg, site_latitude_deg, event, responses, longest_s,
         settings.slowness_spread, settings.hop_s, settings.power_sigma, settings.power_share,
     )  # fmt: skip
     return fit_windows(windows, prior, settings, seed, progress)

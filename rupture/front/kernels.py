@@ -18,6 +18,10 @@ ISOTROPIC_CODA = 0.5
 """Share of scattered waves that come from anywhere rather than from the place that radiated them."""
 
 
+POWER_FLOOR = 0.02
+"""Window power counts down to this share of its peak."""
+
+
 @numba.njit(cache=True)
 def place_nodes(theta, east, north, time, weight):  # pragma: no cover - compiled
     """Fill the nodes of both arms; returns how many there are. Weights add up to one (power by arm length or time)."""
@@ -53,9 +57,9 @@ def _hann(x):  # pragma: no cover - compiled
 
 @numba.njit(cache=True)
 def _site_log_likelihood(
-    theta, count, east, north, time, weight, ratio, log_power, window_time, window_s, share, place, tables, grid, direct, coda
+    theta, count, east, north, time, weight, ratio, log_power, window_time, window_s, share, place, tables, primary, grid, direct, coda
 ):  # pragma: no cover - compiled
-    """One site. `ratio` is (T, A, P); `tables` is (2, 2, D): time and log slowness of P, then S, at grid[0] m steps."""
+    """One site. `ratio` is (T, A, P); `tables` is (W, 3, D): time, log slowness, energy of each wave."""
     windows, angles, nodes_p = ratio.shape
     step_m, log_p0, log_step = grid
     hop = window_time[1] - window_time[0]
@@ -66,22 +70,27 @@ def _site_log_likelihood(
         direct[1, t] = 0.0
         coda[0, t] = 0.0
         coda[1, t] = 0.0
+    from_s = 1e300
     for j in range(count):
         de = east[j] - place[0]
         dn = north[j] - place[1]
         distance = np.sqrt(de * de + dn * dn)
         back = np.arctan2(de, dn) + place[2]
         a = int(np.floor(back / (2.0 * np.pi) * angles + 0.5)) % angles
-        spreading = (place[3] / max(distance, 5e3)) ** 2
         at = distance / step_m
         k = min(int(at), tables.shape[2] - 2)
         part = at - k
-        for phase in range(2):
-            strength = weight[j] * spreading * (theta[P_SHARE] if phase == 0 else 1.0)
-            arrival = time[j] + (1.0 - part) * tables[phase, 0, k] + part * tables[phase, 0, k + 1]
-            log_slow = (1.0 - part) * tables[phase, 1, k] + part * tables[phase, 1, k + 1]
+        for wave in range(tables.shape[0]):
+            energy = (1.0 - part) * tables[wave, 2, k] + part * tables[wave, 2, k + 1]
+            if energy <= 0.0:
+                continue
+            strength = weight[j] * energy * (theta[P_SHARE] if primary[wave] else 1.0)
+            arrival = time[j] + (1.0 - part) * tables[wave, 0, k] + part * tables[wave, 0, k + 1]
+            log_slow = (1.0 - part) * tables[wave, 1, k] + part * tables[wave, 1, k + 1]
             b = int(np.floor((log_slow - log_p0) / log_step + 0.5))
             b = min(max(b, 0), nodes_p - 1)
+            if not primary[wave]:
+                from_s = min(from_s, arrival - half)
             first = max(0, int(np.ceil((arrival - half - window_time[0]) / hop)))
             last = min(windows - 1, int(np.floor((arrival + half - window_time[0]) / hop)))
             for t in range(first, last + 1):
@@ -102,8 +111,11 @@ def _site_log_likelihood(
     mean = 0.0
     square = 0.0
     peak = 0.0
+    loudest = -1e300
     for t in range(windows):
         peak = max(peak, direct[0, t] + coda[0, t])
+        if log_power[t] > loudest:
+            loudest = log_power[t]
     floor = 1e-4 * peak
     for t in range(windows):
         power = direct[0, t] + coda[0, t] + floor
@@ -111,7 +123,11 @@ def _site_log_likelihood(
             continue
         mixed = (direct[1, t] + coda[1, t] + floor) / power
         total += share * np.log((1.0 - theta[STRAY]) * mixed + theta[STRAY])
-        misfit = log_power[t] - np.log(power)
+        if window_time[t] < from_s:
+            continue
+        # Below a share of the peak the record is coda and noise, of which this model knows little.
+        seen = np.log(np.exp(log_power[t] - loudest) + POWER_FLOOR)
+        misfit = seen - np.log(power / peak + POWER_FLOOR)
         number += 1.0
         mean += misfit
         square += misfit * misfit
@@ -120,7 +136,7 @@ def _site_log_likelihood(
 
 @numba.njit(parallel=True, cache=True)
 def log_likelihoods(
-    particles, first, ratio, log_power, window_time, window_s, share, places, tables, grid, power_sigma, power_share
+    particles, first, ratio, log_power, window_time, window_s, share, places, tables, primary, grid, power_sigma, power_share
 ):  # pragma: no cover - compiled
     """Return the log-likelihood of each row of a parameter table, shape (particles, sites).
 
@@ -139,9 +155,11 @@ def log_likelihoods(
     window_s, share
         Window length in s and share of an independent observation, shape (sites,).
     places
-        East, north in m, turn from plane north to true north in rad, reference distance in m: shape (sites, 4).
-    tables, grid
-        Time and log slowness of P and S at equal distance steps; (step in m, log of first slowness, log step).
+        East, north in m, turn from plane north to true north in rad: shape (sites, 3).
+    tables, primary
+        Time, log slowness and energy of each wave at equal distance steps, shape (waves, 3, D); which left as P.
+    grid
+        Distance step in m, log of the first slowness, step of its log.
     power_sigma
         Standard deviation of the log of window power about the model.
     power_share
@@ -165,7 +183,7 @@ def log_likelihoods(
             a, b = first[s], first[s + 1]
             total, number, mean, square = _site_log_likelihood(
                 particles[i], nodes, east, north, time, weight, ratio[a:b], log_power[a:b], window_time[a:b],
-                window_s[s], share[s], places[s], tables, grid, direct, coda,
+                window_s[s], share[s], places[s], tables, primary, grid, direct, coda,
             )
             if number > 1.0:
                 # The site's amplification is unknown: its mean misfit is free.

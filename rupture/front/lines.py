@@ -15,7 +15,7 @@ Array = NDArray[np.float64]
 
 PARAMETERS = (
     "east_m", "north_m", "start_time_s", "azimuth_rad", "speed_m_s", "length_m", "second_azimuth_rad", "second_speed_m_s",
-    "second_length_m", "duration_s", "coda_ratio", "coda_time_s", "stray_share", "p_share",
+    "second_length_m", "duration_s", "coda_ratio", "coda_time_s", "stray_share", "p_factor",
 )  # fmt: skip
 
 KINDS = ("stationary", "unilateral", "bilateral")
@@ -89,7 +89,7 @@ class LinePrior:
             CODA: (np.log(0.5), 0.8),
             CODA_TIME: (np.log(10.0), 0.5),
             STRAY: (np.log(0.1), 0.6),
-            P_SHARE: (np.log(0.05), 0.7),
+            P_SHARE: (0.0, 0.7),
         }[parameter]
 
     def log_density(self, kind: str, draws: Array) -> Array:

@@ -8,9 +8,8 @@ from dataclasses import dataclass
 import numpy as np
 from numpy.typing import NDArray
 
-from rupture.conventions import KM
 from rupture.direction import SiteDirection
-from rupture.earth import Earth
+from rupture.earth.responses import STEP_M, Responses
 from rupture.errors import DataError
 from rupture.event import Event
 from rupture.front.kernels import log_likelihoods
@@ -19,7 +18,8 @@ from rupture.mapping.stack import phase_table
 
 Array = NDArray[np.float64]
 
-TABLE_STEP_M = 1000.0
+LEAST_ENERGY = 0.02
+"""Waves weaker than this share of the strongest at a distance are left out: no window shows them."""
 
 
 @dataclass(frozen=True)
@@ -35,6 +35,7 @@ class Windows:
     share: Array
     places: Array
     tables: Array
+    primary: NDArray[np.bool_]
     grid: tuple[float, float, float]
     power_sigma: float
     power_share: float
@@ -43,7 +44,7 @@ class Windows:
         """Return log-likelihoods per site, shape (count, sites)."""
         return log_likelihoods(
             np.ascontiguousarray(parameters), self.first, self.ratio, self.log_power, self.window_time, self.window_s,
-            self.share, self.places, self.tables, self.grid, self.power_sigma, self.power_share,
+            self.share, self.places, self.tables, self.primary, self.grid, self.power_sigma, self.power_share,
         )  # fmt: skip
 
 
@@ -52,7 +53,7 @@ def lay_out(
     site_longitude_deg: Sequence[float],
     site_latitude_deg: Sequence[float],
     event: Event,
-    earth: Earth,
+    responses: Responses,
     longest_s: float,
     slowness_spread: float,
     hop_s: float,
@@ -65,8 +66,8 @@ def lay_out(
     ----------
     directions, site_longitude_deg, site_latitude_deg
         Per site.
-    event, earth
-        Hypocentre and travel times.
+    event, responses
+        Hypocentre, and the waves that a point source sends to the surface.
     longest_s
         How long after the S onset windows are looked at.
     slowness_spread
@@ -84,11 +85,12 @@ def lay_out(
     plane = LocalPlane(event.longitude_deg, event.latitude_deg)
     east, north = plane.to_plane(site_longitude_deg, site_latitude_deg)
     distance, _, back = distance_azimuth(event.longitude_deg, event.latitude_deg, site_longitude_deg, site_latitude_deg)
-    longest = float(distance.max()) / KM + 500.0
-    step = TABLE_STEP_M * np.arange(int(longest) + 1)
-    p, s = (earth.table(phase, event.depth_km, longest) for phase in ("P", "S"))
-    # At zero distance slowness is zero; its logarithm is held at the fastest trial.
-    tables = np.stack([np.stack([t.time(step), np.log(np.maximum(t.slowness(step), 1e-6))]) for t in (p, s)])
+    tables = np.stack([responses.time_s, np.log(responses.slowness_s_m), responses.energy], axis=1)
+    primary = np.array([wave == "P" for wave in responses.wave])
+    for group in (primary, ~primary):
+        strongest = tables[group, 2].max(axis=0)
+        tables[group, 2] = np.where(tables[group, 2] >= LEAST_ENERGY * strongest, tables[group, 2], 0.0)
+    onset = {wave: responses.at(responses.strongest(wave)[0], distance) for wave in "PS"}
     # The plane is centred on the epicentre: its north differs from a site's by the convergence of the meridians.
     turn = back - np.arctan2(-east, -north)
     turn = np.where(np.hypot(east, north) > 1.0, turn, 0.0)
@@ -97,7 +99,7 @@ def lay_out(
     share, length = [], []
     for k, d in enumerate(directions):
         stride = max(1, round(hop_s / float(d.time_s[1] - d.time_s[0])))
-        begin, end = float(p.time(distance[k])) - 1.0, float(s.time(distance[k])) + longest_s
+        begin, end = onset["P"][k] - 1.0, onset["S"][k] + longest_s
         chosen = np.flatnonzero((d.time_s >= begin) & (d.time_s <= end))[::stride]
         masked = np.isnan(d.coherent).all(axis=0)[chosen]
         table = np.exp(phase_table(d, slowness_spread)[:, :, chosen])
@@ -112,9 +114,9 @@ def lay_out(
         length.append(float(np.mean(d.window_s)))
     if first[-1] == 0 or all(np.isnan(p).all() for p in powers):
         raise DataError("no site has a usable window between its P arrival and the end of the rupture")
-    places = np.stack([east, north, turn, np.maximum(distance, 5e3)], axis=1)
+    places = np.stack([east, north, turn], axis=1)
     return Windows(
         tuple(d.code for d in directions), np.array(first), np.concatenate(ratios), np.concatenate(powers),
-        np.concatenate(times), np.array(length), np.array(share), places, tables,
-        (TABLE_STEP_M, float(nodes[0]), float(nodes[1] - nodes[0])), power_sigma, power_share,
+        np.concatenate(times), np.array(length), np.array(share), places, tables, primary,
+        (STEP_M, float(nodes[0]), float(nodes[1] - nodes[0])), power_sigma, power_share,
     )  # fmt: skip
