@@ -74,7 +74,7 @@ def peterson_db(frequency_hz: NDArray[np.float64], level: float) -> NDArray[np.f
     Examples
     --------
     >>> [float(round(v)) for v in peterson_db(np.array([0.2, 1.0]), 0.0)]
-    [-142.0, -166.0]
+    [-141.0, -166.0]
     """
     if not -0.5 <= level <= 1.5:
         raise InputError(f"ground noise level {level:g} must lie between 0 (low model) and 1 (high model)")

@@ -59,9 +59,11 @@ def test_same_seed_same_noise():
 
 
 def test_peterson_models():
-    """Peterson (1993), tables 3 and 4: A + B log10(T); at 10 s period low model -163.7 dB, at 0.1 s -168; high -91.5 at 0.1 s."""
-    assert peterson_db(np.array([0.1]), 0.0)[0] == pytest.approx(-162.36 + 5.64 * np.log10(10.0) - 6.0, abs=2.5)
-    assert peterson_db(np.array([10.0]), 0.0)[0] == pytest.approx(-162.36 + 5.64 * np.log10(0.1), abs=0.6)
+    """Peterson (1993), tables 3 and 4: A + B log10(T) in dB for acceleration; coefficients from memory, T in s."""
+    low = {0.1: (-162.36, 5.64), 1.0: (-166.40, 28.90), 4.5: (-141.10, 0.0), 10.0: (-132.18, -31.57)}
+    for period, (a, b) in low.items():
+        got = peterson_db(np.array([1 / period]), 0.0)[0]
+        assert got == pytest.approx(a + b * np.log10(period), abs=0.6), period
     assert peterson_db(np.array([10.0]), 1.0)[0] == pytest.approx(-108.73 - 17.23 * np.log10(0.1), abs=0.6)
     middle = peterson_db(np.array([0.3]), 0.5)
     assert middle == pytest.approx((peterson_db(np.array([0.3]), 0.0) + peterson_db(np.array([0.3]), 1.0)) / 2)
