@@ -1,4 +1,7 @@
-"""Kinematic sources, two engines, noise and scenarios."""
+"""Kinematic sources, two engines, noise and scenarios.
+
+The function that writes files is `rupture.synthetic.simulate.simulate`: a module of its own name hides it here.
+"""
 
 from __future__ import annotations
 
@@ -11,7 +14,7 @@ if TYPE_CHECKING:
     from rupture.synthetic.noise import RotationSensor, TranslationSensor, coloured_noise
     from rupture.synthetic.ray import RayEngine, ray_records
     from rupture.synthetic.scenario import Scenario, demo_scenario, read_scenario, ready_scenarios
-    from rupture.synthetic.simulate import SimulatedFiles, ground_motion, simulate
+    from rupture.synthetic.simulate import SimulatedFiles, ground_motion
     from rupture.synthetic.source import Arm, KinematicSource
     from rupture.synthetic.sub_events import make_sub_events
 
@@ -36,7 +39,6 @@ _HOMES = {
     "ready_scenarios": "scenario",
     "SimulatedFiles": "simulate",
     "ground_motion": "simulate",
-    "simulate": "simulate",
 }
 
 __all__ = [
@@ -60,7 +62,6 @@ __all__ = [
     "ray_records",
     "read_scenario",
     "ready_scenarios",
-    "simulate",
 ]
 
 

@@ -198,3 +198,14 @@ def test_array_stands_around_its_place():
     np.testing.assert_allclose(distance, 150.0, atol=0.01)
     with pytest.raises(InputError, match="at most three letters"):
         make_stations(scenario_from_table(table(site=[site | {"code": "ARRAY"}])))
+
+
+def test_public_names_are_what_they_say():
+    import types
+
+    import rupture.synthetic as face
+
+    for name in face.__all__:
+        assert not isinstance(getattr(face, name), types.ModuleType), name
+    with pytest.raises(AttributeError, match="no attribute 'nothing'"):
+        _ = face.nothing
