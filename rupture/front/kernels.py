@@ -14,10 +14,6 @@ NODES = 24
 CODA_STRIDE = 3
 """Scattered waves come from every third node: they are too diffuse to need more."""
 
-ISOTROPIC_CODA = 0.5
-"""Share of scattered waves that come from anywhere rather than from the place that radiated them."""
-
-
 POWER_FLOOR = 0.02
 """Window power counts down to this share of its peak."""
 
@@ -57,7 +53,7 @@ def _hann(x):  # pragma: no cover - compiled
 
 @numba.njit(cache=True)
 def _site_log_likelihood(
-    theta, count, east, north, time, weight, ratio, log_power, window_time, window_s, share, place, tables, primary, grid, direct, coda
+    theta, count, east, north, time, weight, ratio, haze, log_power, window_time, window_s, share, place, tables, primary, grid, direct, coda
 ):  # pragma: no cover - compiled
     """One site. `ratio` is (T, A, P); `tables` is (W, 3, D): time, log slowness, energy of each wave."""
     windows, angles, nodes_p = ratio.shape
@@ -104,7 +100,7 @@ def _site_log_likelihood(
                 g = amount * np.exp(-(window_time[begin] - arrival) / coda_time) if begin < windows else 0.0
                 for t in range(begin, windows):
                     coda[0, t] += g
-                    coda[1, t] += g * (ISOTROPIC_CODA + (1.0 - ISOTROPIC_CODA) * ratio[t, a, b])
+                    coda[1, t] += g * haze[t, a]
                     g *= decay
     total = 0.0
     number = 0.0
@@ -136,7 +132,7 @@ def _site_log_likelihood(
 
 @numba.njit(parallel=True, cache=True)
 def log_likelihoods(
-    particles, first, ratio, log_power, window_time, window_s, share, places, tables, primary, grid, power_sigma, power_share
+    particles, first, ratio, haze, log_power, window_time, window_s, share, places, tables, primary, grid, power_sigma, power_share
 ):  # pragma: no cover - compiled
     """Return the log-likelihood of each row of a parameter table, shape (particles, sites).
 
@@ -148,6 +144,8 @@ def log_likelihoods(
         First row of each site in the arrays over all windows, shape (sites + 1,).
     ratio
         Posterior ratios of all windows of all sites, shape (windows, A, P), slowness already blurred.
+    haze
+        Posterior ratios for scattered waves, blurred over back-azimuth and slowness, shape (windows, A).
     log_power
         Natural log of window power, NaN where the window does not count, shape (windows,).
     window_time
@@ -182,7 +180,7 @@ def log_likelihoods(
         for s in range(sites):
             a, b = first[s], first[s + 1]
             total, number, mean, square = _site_log_likelihood(
-                particles[i], nodes, east, north, time, weight, ratio[a:b], log_power[a:b], window_time[a:b],
+                particles[i], nodes, east, north, time, weight, ratio[a:b], haze[a:b], log_power[a:b], window_time[a:b],
                 window_s[s], share[s], places[s], tables, primary, grid, direct, coda,
             )
             if number > 1.0:
