@@ -60,7 +60,7 @@ def along_figure(result: Result, style_file: str | Path | None, width_mm: float)
             tau, place, color=style.ACCENT, linewidth=1.3, linestyle=style.ARM_DASHES[arm % 2], path_effects=_HALO
         )
     axes.plot(0, 0, marker="*", markersize=8, color=style.ACCENT, mec="white", mew=0.6, zorder=5)
-    best = (result.summary.get("rupture") or {}).get("direction_deg", {}).get("best")
+    best = ((result.summary.get("rupture") or {}).get("direction_deg") or {}).get("best")
     toward = "along the rupture" if best is None else f"toward {best:.0f}° {compass(best)}"
     axes.set_xlabel("source time after origin (s)", labelpad=1.5)
     axes.set_ylabel(f"distance {toward} (km)")
@@ -229,7 +229,7 @@ def energy_figure(result: Result, style_file: str | Path | None, width_mm: float
         When nothing was mapped.
     """
     scene = Scene.of(result)
-    series = energy_series(scene)
+    series = energy_series(result)
     height = 62.0
     picture = style.Picture(width_mm, height, style_file)
     picture.heading(scene.title, left_mm=_LEFT_MM)
@@ -237,9 +237,9 @@ def energy_figure(result: Result, style_file: str | Path | None, width_mm: float
     axes = picture.axes_mm(_LEFT_MM, foot, width_mm - _LEFT_MM - 4, top - foot)
     looks = {"ray stack": ("-", style.probability_colours()(0.65)), "energy inversion": ((0, (3.5, 1.4)), style.ACCENT)}
     highest = 0.0
-    for name, values in series.items():
+    for name, (time, values) in series.items():
         dash, colour = looks[name]
-        axes.plot(scene.source_time, values, linestyle=dash, color=colour, label=name, drawstyle="steps-mid")
+        axes.plot(time, values, linestyle=dash, color=colour, label=name, drawstyle="steps-mid")
         highest = max(highest, float(values.max()))
     axes.fill_between(
         scene.source_time, 0, 1, where=scene.active, transform=axes.get_xaxis_transform(), color=style.FAINT, alpha=0.3, linewidth=0,
@@ -259,23 +259,24 @@ def energy_figure(result: Result, style_file: str | Path | None, width_mm: float
     return picture
 
 
-def energy_series(scene: Scene) -> dict[str, Array]:
-    """Return energy per second of source time, each scaled to an integral of 1, by how it was found.
+def energy_series(result: Result) -> dict[str, tuple[Array, Array]]:
+    """Return source times and energy per second, each scaled to an integral of 1, by how it was found.
 
     Raises
     ------
     InputError
         When nothing was mapped.
     """
-    if scene.result.map is None:
+    if result.map is None:
         raise InputError("this result holds no map: only directions were estimated")
-    found = {"ray stack": scene.result.map["energy_proxy"]}
-    if scene.result.energy is not None:
-        found["energy inversion"] = scene.result.energy["energy"]
-    step = float(scene.source_time[1] - scene.source_time[0]) if scene.source_time.size > 1 else 1.0
+    found = {"ray stack": result.map["energy_proxy"]}
+    if result.energy is not None:
+        found["energy inversion"] = result.energy["energy"]
     out = {}
     for name, variable in found.items():
-        values = np.nan_to_num(np.asarray(variable.values, float)).reshape(variable.shape[0], -1).sum(axis=1)
+        time = variable["source_time"].values.astype(float)
+        step = float(time[1] - time[0]) if time.size > 1 else 1.0
+        values = np.nan_to_num(np.asarray(variable.values, float)).reshape(time.size, -1).sum(axis=1)
         whole = values.sum() * step
-        out[name] = values / whole if whole > 0 else values
+        out[name] = (time, values / whole if whole > 0 else values)
     return out

@@ -16,7 +16,7 @@ from rupture.pictures.maps import map_figure
 from rupture.pictures.outlines import write_areas_geojson, write_kml
 from rupture.pictures.overlays import Overlay, read_overlays
 from rupture.pictures.panels import direction_figure, directions_figure
-from rupture.pictures.posteriors import posterior_figure
+from rupture.pictures.posteriors import has_sample, posterior_figure
 from rupture.pictures.scene import Scene
 from rupture.pictures.style import Picture
 from rupture.pictures.tables import (
@@ -76,29 +76,27 @@ def sheets(result: Result, overlays: Sequence[str | Path | Overlay] = ()) -> lis
             )
         )
     if result.map is not None:
-        out.append(
-            Sheet("frames", partial(frames_figure, result, overlays=drawn), partial(frames_tables, scene, "location"))
-        )
+        out.append(Sheet("frames", partial(frames_figure, result, overlays=drawn), partial(frames_tables, scene)))
         out.append(Sheet("energy", partial(energy_figure, result), partial(energy_tables, scene)))
-    if result.energy is not None and result.map is not None:
+    if result.energy is not None:
         out.append(
             Sheet(
                 "energy_map",
                 partial(map_figure, result, field="energy", overlays=drawn),
-                partial(map_tables, scene, "energy"),
+                partial(map_tables, Scene.of(result, "energy")),
             )
         )
         out.append(
             Sheet(
                 "energy_frames",
                 partial(frames_figure, result, field="energy", overlays=drawn),
-                partial(frames_tables, scene, "energy"),
+                partial(frames_tables, Scene.of(result, "energy")),
             )
         )
     track = result.track
     if track is not None and "along_probability" in track:
         out.append(Sheet("along", partial(along_figure, result), partial(along_tables, scene)))
-    if track is not None and "sample" in track and (track["kind"].values.astype(str) != "stationary").any():
+    if has_sample(result, "azimuth_deg"):
         out.append(Sheet("posterior", partial(posterior_figure, result), partial(posterior_tables, scene)))
     if result.summary.get("rupture"):
         out.append(Sheet("kinds", partial(kinds_figure, result), partial(kinds_tables, scene)))
@@ -169,7 +167,7 @@ def draw_all(
         ]
     scene = Scene.of(result)
     written.append(write_kml(scene, folder / "map.kml"))
-    if result.map is not None and not scene.is_trace:
+    if scene.field is not None and not scene.field.is_trace:
         written.append(write_areas_geojson(scene, folder / "map_areas.geojson"))
     if progress is not None:
         progress(len(todo), len(todo))

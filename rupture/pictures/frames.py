@@ -8,16 +8,12 @@ from pathlib import Path
 import numpy as np
 from matplotlib.cm import ScalarMappable
 from matplotlib.colors import Normalize
-from numpy.typing import NDArray
 
-from rupture.errors import InputError
 from rupture.pictures import layers, style
 from rupture.pictures.basemap import KM, draw_graticule, draw_land, draw_scale_bar, projected_axes
 from rupture.pictures.overlays import Overlay, read_overlays
 from rupture.pictures.scene import Scene
 from rupture.result import Result
-
-Array = NDArray[np.float64]
 
 
 @style.figure_function
@@ -49,8 +45,8 @@ def frames_figure(
     InputError
         When nothing was mapped, or there is no energy inversion to draw.
     """
-    scene = Scene.of(result)
-    values, label = field_frames(scene, field)
+    scene = Scene.of(result, field)
+    values, label = scene.cells.values, scene.cells.label
     drawn = read_overlays(overlays)
     across = 4 if width_mm > 100 else 2
     shown = scene.ray_frames(count or 3 * across)
@@ -88,22 +84,3 @@ def frames_figure(
     )
     bar.set_xlabel(f"{label}; star: epicentre, ring: fitted front", labelpad=1.5)
     return picture
-
-
-def field_frames(scene: Scene, field: str) -> tuple[Array, str]:
-    """Return values per frame and cell of one field, and what they are.
-
-    Raises
-    ------
-    InputError
-        When the result has no such field.
-    """
-    if field == "location":
-        return scene.location, "location probability per cell"
-    if field != "energy":
-        raise InputError(f"field must be 'location' or 'energy', not '{field}'")
-    if scene.result.energy is None:
-        raise InputError("this result holds no energy inversion; run `rupture track` with it switched on")
-    energy = np.nan_to_num(np.asarray(scene.result.energy["energy"].values, float))
-    whole = energy.sum()
-    return energy / whole if whole > 0 else energy, "share of all energy per cell and frame"

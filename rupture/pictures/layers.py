@@ -150,8 +150,8 @@ def draw_cells(axes: Any, scene: Scene, values: Array, colours: Colormap, top: f
     """Draw values per cell: an image on a regular grid, a band of colour along a fault trace."""
     top = top or float(values.max()) or 1.0
     scale = Normalize(0.0, top)
-    if scene.is_trace:
-        places = scene.cell_km * KM
+    if scene.cells.is_trace:
+        places = scene.cells.places_km * KM
         middle = (places[1:] + places[:-1]) / 2
         ends = np.vstack([places[:1], middle, places[-1:]])
         band = LineCollection(
@@ -165,7 +165,7 @@ def draw_cells(axes: Any, scene: Scene, values: Array, colours: Colormap, top: f
         )
         axes.add_collection(band, autolim=False)
         return band
-    west, east, south, north = (v * KM for v in scene.cell_edges_km)
+    west, east, south, north = (v * KM for v in scene.cells.edges_km)
     axes_limits = axes.get_xlim(), axes.get_ylim()
     # Matplotlib's own image call: Cartopy's would warp an image that already lies in the map's plane.
     image = super(type(axes), axes).imshow(
@@ -186,9 +186,9 @@ def draw_areas(axes: Any, scene: Scene, probability: Array) -> list[Line2D]:
             continue
         look: dict[str, Any] = {"color": style.INK, "linewidth": width, "linestyle": dash}
         handles.append(Line2D([], [], label=f"{share:.0%} area", **look))
-        if scene.is_trace:
+        if scene.cells.is_trace:
             inside = probability >= level
-            places = np.where(inside[:, None], scene.cell_km, np.nan) * KM
+            places = np.where(inside[:, None], scene.cells.places_km, np.nan) * KM
             axes.plot(*places.T, zorder=5, solid_capstyle="butt", alpha=0.9, **(look | {"linewidth": 2.2 * width}))
             continue
         for ring in area_rings(scene, probability, level):
@@ -201,7 +201,7 @@ def area_rings(scene: Scene, probability: Array, level: float) -> list[Array]:
     from contourpy import LineType, contour_generator
 
     padded = np.pad(probability, 1)
-    east, north = scene.cell_km[0, :, 0], scene.cell_km[:, 0, 1]
+    east, north = scene.cells.places_km[0, :, 0], scene.cells.places_km[:, 0, 1]
     east = np.concatenate([[2 * east[0] - east[1]], east, [2 * east[-1] - east[-2]]])
     north = np.concatenate([[2 * north[0] - north[1]], north, [2 * north[-1] - north[-2]]])
     rings = contour_generator(east, north, padded, line_type=LineType.Separate).lines(level * (1 - 1e-9))
@@ -246,17 +246,13 @@ def draw_track(axes: Any, scene: Scene, colours: Colormap, scale: Normalize, siz
 
 def draw_ellipses(axes: Any, scene: Scene, frames: list[int], colours: Colormap, scale: Normalize) -> None:
     """Draw the 68 % ellipse of the smoothed front at chosen frames."""
-    track = scene.result.track
-    if track is None:
-        return
     turn = np.linspace(0, 2 * np.pi, 73)
     circle = np.sqrt(-2 * np.log(1 - SHARES[0])) * np.stack([np.cos(turn), np.sin(turn)])
     for frame in frames:
-        ee, nn, en = (float(track[f"covariance_{name}"].values[frame]) for name in ("ee", "nn", "en"))
-        centre = scene.track_km[frame]
-        if not np.isfinite([ee, nn, en, *centre]).all():
+        covariance, centre = scene.track_covariance_km2[frame], scene.track_km[frame]
+        if not (np.isfinite(covariance).all() and np.isfinite(centre).all()):
             continue
-        values, vectors = np.linalg.eigh([[ee, en], [en, nn]])
+        values, vectors = np.linalg.eigh(covariance)
         ring = centre[:, None] + (vectors * np.sqrt(np.maximum(values, 0))) @ circle
         axes.plot(*(ring * KM), color=colours(scale(scene.source_time[frame])), linewidth=0.9, zorder=5.5)
 
@@ -343,7 +339,7 @@ def map_extent(scene: Scene, aspect: float = 1.0, sites: bool = True) -> Extent:
 def source_places(scene: Scene) -> Array:
     """Places in km that the source region consists of: epicentre, track, line source, cells of the 95 % area."""
     places = [np.zeros((1, 2)), scene.track_km, *scene.front_km]
-    if scene.result.map is not None and scene.total_location.any():
-        level = credible_level(scene.total_location, SHARES[1])
-        places.append(scene.cell_km[scene.total_location >= level])
+    if scene.field is not None and scene.total.any():
+        level = credible_level(scene.total, SHARES[1])
+        places.append(scene.cells.places_km[scene.total >= level])
     return np.vstack([p.reshape(-1, 2) for p in places])

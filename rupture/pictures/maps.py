@@ -38,7 +38,7 @@ def map_figure(
     overlays
         GeoJSON files of fault traces or aftershocks.
     """
-    scene = Scene.of(result)
+    scene = Scene.of(result, field)
     drawn = read_overlays(overlays)
     wide = width_mm > 100
     colours, scale = style.time_colours(), layers.time_scale(scene)
@@ -70,8 +70,8 @@ def map_figure(
     if wide:
         left = 10 + main + 12
         bottom = foot + main - side
-        if result.map is not None:
-            handles += _source_panel(picture, scene, field, frames, drawn, (left, bottom, side, side))
+        if scene.field is not None:
+            handles += _source_panel(picture, scene, frames, drawn, (left, bottom, side, side))
         else:
             bottom = foot + main
         _legend(picture, handles, frames, (left - 6, 5, side + 10, bottom - 11))
@@ -86,7 +86,6 @@ def map_figure(
 def _source_panel(
     picture: style.Picture,
     scene: Scene,
-    field: str,
     frames: list[int],
     overlays: list[Overlay],
     place: tuple[float, float, float, float],
@@ -97,11 +96,11 @@ def _source_panel(
     axes = projected_axes(picture, scene.plane, extent, place)
     draw_land(axes, scene.plane, extent)
     draw_graticule(axes, scene.plane, extent)
-    values = field_total(scene, field)
+    values = scene.total
     layers.draw_cells(axes, scene, values, layers.see_through(style.probability_colours()))
     layers.draw_overlays(axes, scene, overlays)
     handles: list[Any] = layers.draw_areas(axes, scene, values)
-    if field == "location":
+    if scene.cells.name == "location":
         layers.draw_ellipses(axes, scene, frames, colours, scale)
     handles += layers.draw_track(axes, scene, colours, scale)
     layers.draw_epicentre(axes)
@@ -113,16 +112,7 @@ def _source_panel(
     draw_scale_bar(axes, extent)
     left, bottom, width, _ = place
     layers.draw_mechanism(picture, scene, (left + width - 10.5, bottom + 1, 9.5, 9.5))
-    label = "share of radiation" if field == "location" else "share of energy"
-    return [Patch(facecolor=style.probability_colours()(0.55), label=label), *handles]
-
-
-def field_total(scene: Scene, field: str) -> Any:
-    """Return the whole-rupture share per cell of one field, summing to 1."""
-    if field == "location":
-        return scene.total_location
-    energy = np.nan_to_num(np.asarray(scene.result.energy["energy"].values, float)).sum(axis=0)  # type: ignore[index]
-    return energy / energy.sum() if energy.sum() > 0 else energy
+    return [Patch(facecolor=style.probability_colours()(0.55), label=scene.cells.total_label), *handles]
 
 
 def _emptiest_corner(scene: Scene, extent: Extent) -> tuple[int, int]:

@@ -19,7 +19,6 @@ from rupture.pictures.answers import energy_series
 from rupture.pictures.basemap import KM, Extent, draw_graticule, draw_land, draw_locator, draw_scale_bar, projected_axes
 from rupture.pictures.clock import PastedText
 from rupture.pictures.encode import encode_h264, encode_images
-from rupture.pictures.frames import field_frames
 from rupture.pictures.overlays import Overlay, read_overlays
 from rupture.pictures.scene import Scene, credible_level
 from rupture.result import Result
@@ -62,8 +61,8 @@ class Animation:
     ) -> None:
         if shape not in SHAPES:
             raise InputError(f"movie shape must be one of {', '.join(SHAPES)}, not '{shape}'")
-        self.scene = Scene.of(result)
-        self.values, self.label = field_frames(self.scene, field)
+        self.scene = Scene.of(result, field)
+        self.values, self.label = self.scene.cells.values, self.scene.cells.label
         self.pixels = SHAPES[shape]
         self.overlays = read_overlays(overlays)
         self.top = float(np.quantile(self.values[self.values > 0], 0.9995)) if (self.values > 0).any() else 1.0
@@ -96,11 +95,11 @@ class Animation:
         place = (left + map_width - inset, bottom + map_height - inset, inset, inset)
         self.locator = draw_locator(picture, scene.plane, extent, place)
         self.line = picture.axes_mm(left + 5, foot, map_width * 0.66, line_height)
-        for (name, share), colour in zip(
-            energy_series(scene).items(), (look.probability_colours()(0.65), look.ACCENT), strict=False
+        for (name, (time, share)), colour in zip(
+            energy_series(scene.result).items(), (look.probability_colours()(0.65), look.ACCENT), strict=False
         ):
-            self.line.fill_between(scene.source_time, share, step="mid", color=colour, alpha=0.25, linewidth=0)
-            self.line.plot(scene.source_time, share, drawstyle="steps-mid", color=colour, linewidth=0.9, label=name)
+            self.line.fill_between(time, share, step="mid", color=colour, alpha=0.25, linewidth=0)
+            self.line.plot(time, share, drawstyle="steps-mid", color=colour, linewidth=0.9, label=name)
         self.line.set_xlim(float(scene.source_time[0]), float(scene.source_time[-1]))
         self.line.set_ylim(0)
         self.line.set_yticks([])
@@ -161,7 +160,7 @@ class Animation:
         self.rays.set_color(colour)
         rings: list[Array] = []
         widths: list[float] = []
-        if scene.active[frame] and not scene.is_trace:
+        if scene.active[frame] and not scene.cells.is_trace:
             for share, width in zip(layers.SHARES, (1.1, 0.6), strict=True):
                 level = credible_level(self.values[frame], share)
                 found = layers.area_rings(scene, self.values[frame], level) if np.isfinite(level) else []
@@ -179,7 +178,7 @@ class Animation:
 
     def _set_cells(self, values: Array) -> None:
         """Show one frame's cells; of a regular grid only the rectangle in which there is something to see."""
-        if self.scene.is_trace:
+        if self.scene.cells.is_trace:
             self.cells.set_array(values)
             return
         seen = values > 0.002 * self.top
@@ -187,7 +186,7 @@ class Animation:
         if not seen.any():
             return
         rows, columns = np.flatnonzero(seen.any(axis=1)), np.flatnonzero(seen.any(axis=0))
-        west, east, south, north = (edge * KM for edge in self.scene.cell_edges_km)
+        west, east, south, north = (edge * KM for edge in self.scene.cells.edges_km)
         width, height = (east - west) / values.shape[1], (north - south) / values.shape[0]
         self.cells.set_data(values[rows[0] : rows[-1] + 1, columns[0] : columns[-1] + 1])
         extent = (

@@ -11,14 +11,13 @@ import numpy as np
 from numpy.typing import NDArray
 
 from rupture.pictures.layers import SHARES, area_rings
-from rupture.pictures.maps import field_total
 from rupture.pictures.scene import Scene, credible_level
 from rupture.wording import SHORT_CAUTION
 
 Array = NDArray[np.float64]
 
 
-def area_polygons(scene: Scene, field: str, share: float) -> Any:
+def area_polygons(scene: Scene, share: float) -> Any:
     """Return the smallest area that holds `share` of a field, as a shapely geometry in degrees.
 
     Longitudes lie within -180 and 180; what crosses the antimeridian is cut there, as RFC 7946 section 3.1.9 asks.
@@ -28,17 +27,14 @@ def area_polygons(scene: Scene, field: str, share: float) -> Any:
     ----------
     scene
         A result on a regular grid.
-    field
-        'location' or 'energy'.
     share
         Share of the probability or energy within.
     """
     import shapely
     from shapely.affinity import translate
 
-    total = field_total(scene, field)
-    level = credible_level(total, share)
-    rings = area_rings(scene, total, level) if np.isfinite(level) else []
+    level = credible_level(scene.total, share)
+    rings = area_rings(scene, scene.total, level) if np.isfinite(level) else []
     whole = shapely.Polygon()
     for ring in rings:
         # Even-odd: a ring within another is a hole.
@@ -65,7 +61,7 @@ def _polygons(geometry: Any) -> list[Any]:
     return [part for part in parts if part.geom_type == "Polygon" and not part.is_empty]
 
 
-def write_areas_geojson(scene: Scene, path: Path, field: str = "location") -> Path:
+def write_areas_geojson(scene: Scene, path: Path) -> Path:
     """Write the 68 and 95 % areas as GeoJSON."""
     from shapely import set_precision
     from shapely.geometry import mapping
@@ -73,21 +69,21 @@ def write_areas_geojson(scene: Scene, path: Path, field: str = "location") -> Pa
 
     features = []
     for share in SHARES:
-        parts = [orient(part) for part in _polygons(set_precision(area_polygons(scene, field, share), 1e-6))]
+        parts = [orient(part) for part in _polygons(set_precision(area_polygons(scene, share), 1e-6))]
         if parts:
             coordinates = [mapping(part)["coordinates"] for part in parts]
             features.append(
                 {
                     "type": "Feature",
                     "geometry": {"type": "MultiPolygon", "coordinates": coordinates},
-                    "properties": {"role": "credible area", "share": share, "field": field},
+                    "properties": {"role": "credible area", "share": share, "field": scene.cells.name},
                 }
             )
     path.write_text(json.dumps({"type": "FeatureCollection", "features": features}), encoding="utf-8")
     return path
 
 
-def write_kml(scene: Scene, path: Path, field: str = "location") -> Path:
+def write_kml(scene: Scene, path: Path) -> Path:
     """Write epicentre, sites, front, fitted arms and, on a regular grid, the credible areas as KML 2.2."""
     from datetime import timedelta
 
@@ -107,9 +103,9 @@ def write_kml(scene: Scene, path: Path, field: str = "location") -> Path:
             arm_lon, arm_lat = scene.to_degrees(known)
             line = f"<LineString><tessellate>1</tessellate>{_coordinates(arm_lon, arm_lat)}</LineString>"
             marks.append(f"<Placemark><name>fitted arm {arm + 1}</name>{line}</Placemark>")
-    if scene.result.map is not None and not scene.is_trace:
+    if scene.field is not None and not scene.field.is_trace:
         for share in SHARES:
-            shapes = "".join(_polygon(part) for part in _polygons(area_polygons(scene, field, share)))
+            shapes = "".join(_polygon(part) for part in _polygons(area_polygons(scene, share)))
             marks.append(f"<Placemark><name>{share:.0%} area</name><MultiGeometry>{shapes}</MultiGeometry></Placemark>")
     body = "\n".join(marks)
     path.write_text(

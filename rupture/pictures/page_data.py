@@ -15,7 +15,6 @@ from rupture.pictures import layers, style
 from rupture.pictures.answers import energy_series, s_speed_km_s
 from rupture.pictures.basemap import KM, Extent, graticule
 from rupture.pictures.coastlines import local_land
-from rupture.pictures.frames import field_frames
 from rupture.pictures.overlays import Overlay
 from rupture.pictures.panels import coherence, predicted_curves, used_spans, window_of_interest
 from rupture.pictures.posteriors import SIZES, has_sample, posterior_sample
@@ -52,12 +51,15 @@ def page_data(scene: Scene, overlays: Sequence[Overlay] = ()) -> dict[str, Any]:
         "timeScale": [layers.time_scale(scene).vmin, layers.time_scale(scene).vmax],
         "colours": {"probability": _colours(style.probability_colours()), "time": _colours(style.time_colours())},
     }
+    shown = [scene] if scene.field is not None else []
+    if result.energy is not None:
+        shown.append(Scene.of(result, "energy"))
+    out["fields"] = [_field(scene, one) for one in shown]
     if result.map is not None:
-        names = ["location"] + (["energy"] if result.energy is not None else [])
-        out["fields"] = [_field(scene, name) for name in names]
-        out["cells"] = _cells(scene)
-        series = energy_series(scene)
-        out["energy"] = {name: _numbers(values, 6) for name, values in series.items()}
+        out["energy"] = {
+            name: _numbers(np.interp(scene.source_time, time, values, left=0.0, right=0.0), 6)
+            for name, (time, values) in energy_series(result).items()
+        }
     if result.track is not None:
         out["track"] = {
             "x": _numbers(scene.track_km[:, 0], 2), "y": _numbers(scene.track_km[:, 1], 2),
@@ -187,9 +189,14 @@ def _panel(scene: Scene, s: int) -> dict[str, Any] | None:
     }
 
 
-def _field(scene: Scene, name: str) -> dict[str, Any]:
-    """Pack one movie: 8 bits on a square-root scale, so that small values keep their digits; averaged if too large."""
-    values, label = field_frames(scene, name)
+def _field(scene: Scene, own: Scene) -> dict[str, Any]:
+    """Pack one movie: 8 bits on a square-root scale, so that small values keep their digits; averaged if too large.
+
+    The page has the frames of `scene`; a field with other frames gives the nearest of its own.
+    """
+    field = own.cells
+    nearest = np.abs(own.source_time[None] - scene.source_time[:, None]).argmin(axis=1)
+    values = field.values[nearest]
     block = 1
     while True:
         coarse = values if block == 1 else _block_mean(values, block)
@@ -200,9 +207,16 @@ def _field(scene: Scene, name: str) -> dict[str, Any]:
         block += 1
     shown = values[scene.active] if scene.active.any() else values
     return {
-        "name": name, "label": label, "top": top, "show": float(np.quantile(shown, 0.9995)) or top, "shape": list(coarse.shape[1:]),
-        "block": block, "image": packed, "summary": [_frame_summary(scene, frame) for frame in values],
-    }  # fmt: skip
+        "name": field.name,
+        "label": field.label,
+        "top": top,
+        "show": float(np.quantile(shown, 0.9995)) or top,
+        "shape": list(coarse.shape[1:]),
+        "block": block,
+        "image": packed,
+        "summary": [_frame_summary(own, frame) for frame in values],
+        "cells": _cells(own),
+    }
 
 
 def _block_mean(values: Array, block: int) -> Array:
@@ -219,27 +233,27 @@ def _block_mean(values: Array, block: int) -> Array:
 def _frame_summary(scene: Scene, frame: Array) -> list[float]:
     """Most probable cell (km east, km north) and the radius of a circle as large as the 68 % area, km."""
     flat = frame.ravel()
-    place = scene.cell_km.reshape(-1, 2)[int(np.argmax(flat))]
-    if scene.is_trace:
+    place = scene.cells.places_km.reshape(-1, 2)[int(np.argmax(flat))]
+    if scene.cells.is_trace:
         return [round(float(place[0]), 1), round(float(place[1]), 1), 0.0]
     level = credible_level(frame, layers.SHARES[0])
-    west, east, south, north = scene.cell_edges_km
+    west, east, south, north = scene.cells.edges_km
     area = (flat >= level).sum() * (east - west) * (north - south) / flat.size
     return [round(float(place[0]), 1), round(float(place[1]), 1), round(float(np.sqrt(area / np.pi)), 1)]
 
 
 def _cells(scene: Scene) -> dict[str, Any]:
     """Places of the cells; longitude and latitude are given for the reading under the pointer."""
-    places = scene.cell_km.reshape(-1, 2)
+    places = scene.cells.places_km.reshape(-1, 2)
     lon, lat = scene.to_degrees(places)
     out: dict[str, Any] = {
-        "trace": scene.is_trace,
+        "trace": scene.cells.is_trace,
         "longitude": _packed(np.round(lon * 1e4).astype("<i4")),
         "latitude": _packed(np.round(lat * 1e4).astype("<i4")),
     }
-    if scene.is_trace:
+    if scene.cells.is_trace:
         return out | {"x": _numbers(places[:, 0], 2), "y": _numbers(places[:, 1], 2)}
-    return out | {"edges": [round(v, 4) for v in scene.cell_edges_km], "shape": list(scene.cell_km.shape[:2])}
+    return out | {"edges": [round(v, 4) for v in scene.cells.edges_km], "shape": list(scene.cells.places_km.shape[:2])}
 
 
 def _along(scene: Scene) -> dict[str, Any]:
@@ -252,6 +266,7 @@ def _along(scene: Scene) -> dict[str, Any]:
     sign = np.where(np.arange(track.sizes["arm"]) == 0, 1.0, -1.0)
     return {
         "along": _numbers(along, 3), "top": top, "image": _packed(np.round(1 + 254 * np.clip(density / top, 0, 1)).astype(np.uint8)),
+        "times": _numbers(track["source_time"].values.astype(float), 3),
         "fronts": [_numbers(f * k, 2) for f, k in zip(track["front_distance"].values, sign, strict=True)],
         "sSpeed": s_speed_km_s(scene.result),
     }  # fmt: skip

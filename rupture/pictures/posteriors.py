@@ -52,8 +52,11 @@ SIZES = (("speed_km_s", "rupture speed", "km/s"), ("length_km", "length", "km"),
 
 
 def has_sample(result: Result, name: str) -> bool:
-    """Return whether the fit of a result has a parameter of this name."""
-    return result.track is not None and "parameter" in result.track and name in result.track["parameter"].values
+    """Return whether the fit of a result has draws of a parameter."""
+    try:
+        return posterior_sample(result, name).size > 0
+    except InputError:
+        return False
 
 
 def _draw_rose(axes: Any, scene: Scene, azimuth: Array) -> list[str]:

@@ -12,6 +12,7 @@ from numpy.typing import NDArray
 
 from rupture.errors import InputError
 from rupture.geodesy import LocalPlane, distance_azimuth
+from rupture.pictures.fields import Field, field_of
 from rupture.result import Result
 
 Array = NDArray[np.float64]
@@ -35,24 +36,35 @@ class Scene:
         The result.
     plane
         Plane around the epicentre.
+    field
+        What is shown per cell, on its own grid and frames; None where nothing was mapped.
     """
 
     result: Result
     plane: LocalPlane
+    field: Field | None
 
     @classmethod
-    def of(cls, result: Result) -> Scene:
+    def of(cls, result: Result, field: str = "location") -> Scene:
         """Read a result.
+
+        Parameters
+        ----------
+        result
+            The result.
+        field
+            'location' or 'energy': what the frames and cells are those of.
 
         Raises
         ------
         InputError
-            When the summary has no event.
+            When the summary has no event, or the field is unknown or not there.
         """
         event = result.summary.get("event")
         if not event:
             raise InputError("this result has no event in its summary; it cannot be drawn on a map")
-        return cls(result, LocalPlane(event["longitude_deg"], event["latitude_deg"]))
+        plane = LocalPlane(event["longitude_deg"], event["latitude_deg"])
+        return cls(result, plane, field_of(result, plane, field))
 
     @property
     def event(self) -> dict[str, Any]:
@@ -117,65 +129,46 @@ class Scene:
     @property
     def lagged(self) -> bool:
         """Whether only directions are known: frames then count time after S from the hypocentre at each site."""
-        return self.result.map is None and self.result.track is None
+        return self.field is None and self.result.track is None
 
     @cached_property
     def source_time(self) -> Array:
         """Frame times in s: source time, or time after S where nothing was mapped (see `lagged`)."""
-        for dataset in (self.result.map, self.result.track):
-            if dataset is not None:
-                return dataset["source_time"].values.astype(float)
+        if self.field is not None:
+            return self.field.source_time
+        if self.result.track is not None:
+            return self.result.track["source_time"].values.astype(float)
         time = self.direction["time"].values.astype(float)
         coherent = np.nan_to_num(self.direction["probability_coherent"].values).max(axis=1) >= RAY_PROBABILITY
         lag = np.where(coherent & self.used[:, None], time - self.result.sites["s_arrival"].values[:, None], 0.0)
         step = time[1] - time[0] if time.size > 1 else 1.0
         return np.arange(0.0, np.clip(np.nanmax(lag, initial=0.0), 5.0, _LONGEST_LAG_S) + step / 2, step)
 
-    @cached_property
-    def is_trace(self) -> bool:
-        """Whether the cells lie on a fault trace."""
-        return self.result.map is not None and "cell" in self.result.map.dims
+    @property
+    def cells(self) -> Field:
+        """The field.
 
-    @cached_property
-    def cell_km(self) -> Array:
-        """Shape (northing, easting, 2) or (cell, 2): places of the cells."""
-        if self.result.map is None:
+        Raises
+        ------
+        InputError
+            When nothing was mapped.
+        """
+        if self.field is None:
             raise InputError("this result holds no map: only directions were estimated")
-        grid = self.result.map
-        if not self.is_trace:
-            east, north = np.meshgrid(grid["easting"].values, grid["northing"].values)
-            return np.stack([east, north], axis=-1).astype(float)
-        return self.to_km(grid["longitude"].values, grid["latitude"].values)
+        return self.field
 
-    @cached_property
-    def cell_edges_km(self) -> tuple[float, float, float, float]:
-        """West, east, south and north edge of the regular grid, half a cell beyond its centres."""
-        assert self.result.map is not None
-        edges = []
-        for name in ("easting", "northing"):
-            axis = self.result.map[name].values.astype(float)
-            half = (axis[1] - axis[0]) / 2 if axis.size > 1 else 0.5
-            edges += [float(axis[0] - half), float(axis[-1] + half)]
-        return edges[0], edges[1], edges[2], edges[3]
-
-    @cached_property
-    def location(self) -> Array:
-        """Location probability, (frames, cells...): smoothed where there is such a thing, else of the stack."""
-        grid = self.result.map
-        if grid is None:
-            raise InputError("this result holds no map: only directions were estimated")
-        name = "smoothed_probability" if "smoothed_probability" in grid else "location_probability"
-        return np.nan_to_num(np.asarray(grid[name].values, float))
-
-    @cached_property
-    def present(self) -> Array:
-        """Shape (frames,): probability that there is a source at all."""
-        grid = self.result.map
-        if grid is None:
-            return np.empty(0)
-        if "no_source_probability" in grid:
-            return 1.0 - np.asarray(grid["no_source_probability"].values, float)
-        return np.ones(self.source_time.size)
+    def _on_frames(self, name: str) -> Array:
+        """Return a variable of the track, (..., frames), at the frames of this scene: interpolated where they differ."""
+        track = self.result.track
+        assert track is not None
+        values = np.asarray(track[name].values, float)
+        time = track["source_time"].values.astype(float)
+        if values.shape[-1] == self.source_time.size and np.allclose(time, self.source_time):
+            return values
+        rows = [
+            np.interp(self.source_time, time, row, left=np.nan, right=np.nan) for row in values.reshape(-1, time.size)
+        ]
+        return np.array(rows).reshape(*values.shape[:-1], self.source_time.size)
 
     @cached_property
     def active(self) -> NDArray[np.bool_]:
@@ -184,36 +177,46 @@ class Scene:
             return np.any(np.nan_to_num(self.rays[self.used, :, 3]) >= RAY_PROBABILITY, axis=0)
         track = self.result.track
         if track is not None and "active_probability" in track:
-            return np.nan_to_num(np.asarray(track["active_probability"].values, float)) >= 0.5
-        return self.present >= 0.5
+            return np.nan_to_num(self._on_frames("active_probability")) >= 0.5
+        return self.cells.present >= 0.5
 
     @cached_property
-    def total_location(self) -> Array:
-        """Where radiation came from over the whole rupture, shape of the cells, sum 1 (0 when never)."""
-        share = self.location.reshape(self.location.shape[0], -1)
-        whole = share.sum(axis=1, keepdims=True)
-        frames = np.divide(share, whole, out=np.zeros_like(share), where=whole > 0)
-        weight = self.present * self.active
-        total = (frames * weight[:, None]).sum(axis=0)
-        return (total / total.sum() if total.sum() > 0 else total).reshape(self.location.shape[1:])
+    def total(self) -> Array:
+        """Whole-rupture share per cell of the field, sum 1 (0 when never)."""
+        return self.cells.total(self.active)
 
     @cached_property
     def track_km(self) -> Array:
         """Shape (frames, 2): mean of the smoothed front; NaN where there is no front."""
-        track = self.result.track
-        if track is None:
+        if self.result.track is None:
             return np.full((self.source_time.size, 2), np.nan)
-        place = np.stack([track["east"].values, track["north"].values], axis=-1).astype(float)
+        place = np.stack([self._on_frames("east"), self._on_frames("north")], axis=-1)
         place[~self.active] = np.nan
         return place
 
     @cached_property
+    def track_covariance_km2(self) -> Array:
+        """Shape (frames, 2, 2): covariance of the smoothed front, east before north; NaN where it has none."""
+        if self.result.track is None:
+            return np.full((self.source_time.size, 2, 2), np.nan)
+        ee, nn, en = (self._on_frames(f"covariance_{name}") for name in ("ee", "nn", "en"))
+        return np.stack([np.stack([ee, en], axis=-1), np.stack([en, nn], axis=-1)], axis=-1)
+
+    @cached_property
     def front_km(self) -> Array:
         """Shape (arms, frames, 2): the best line source; no arm when none was fitted."""
-        track = self.result.track
-        if track is None or "front_longitude" not in track:
+        if self.result.track is None or "front_longitude" not in self.result.track:
             return np.empty((0, self.source_time.size, 2))
-        return self.to_km(track["front_longitude"].values, track["front_latitude"].values)
+        track = self.result.track
+        places = self.to_km(track["front_longitude"].values, track["front_latitude"].values)
+        time = track["source_time"].values.astype(float)
+        if places.shape[1] == self.source_time.size and np.allclose(time, self.source_time):
+            return places
+        # Between frames in km, never in degrees, where the date line would be in the way.
+        rows = [
+            [np.interp(self.source_time, time, arm[:, k], left=np.nan, right=np.nan) for k in (0, 1)] for arm in places
+        ]
+        return np.moveaxis(np.array(rows).reshape(len(places), 2, self.source_time.size), 1, 2)
 
     @cached_property
     def source_km(self) -> Array:

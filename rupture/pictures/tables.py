@@ -12,9 +12,7 @@ import numpy as np
 from numpy.typing import NDArray
 
 from rupture.pictures.answers import KINDS, energy_series
-from rupture.pictures.frames import field_frames
 from rupture.pictures.layers import SHARES, area_rings
-from rupture.pictures.maps import field_total
 from rupture.pictures.panels import coherence, posterior_interval, predicted_curves
 from rupture.pictures.scene import Scene, credible_level
 
@@ -52,7 +50,7 @@ def _text(value: Any) -> str:
     return str(value)
 
 
-def map_tables(scene: Scene, field: str = "location") -> list[Table]:
+def map_tables(scene: Scene) -> list[Table]:
     """Sites, rays, track, line source, cells and credible areas of the map figure."""
     sites = scene.result.sites
     out = [
@@ -81,9 +79,9 @@ def map_tables(scene: Scene, field: str = "location") -> list[Table]:
             )
         )  # fmt: skip
     out += _track_tables(scene)
-    if scene.result.map is not None:
-        total = field_total(scene, field)
-        lon, lat = scene.to_degrees(scene.cell_km)
+    if scene.field is not None:
+        total = scene.total
+        lon, lat = scene.to_degrees(scene.cells.places_km)
         out.append(Table("cells", {"longitude_deg": lon.ravel(), "latitude_deg": lat.ravel(), "share": total.ravel()}))
         out += _area_table(scene, total)
     return out
@@ -93,7 +91,7 @@ def _track_tables(scene: Scene) -> list[Table]:
     track = scene.result.track
     if track is None:
         return []
-    columns: dict[str, Column] = {"source_time_s": scene.source_time}
+    columns: dict[str, Column] = {"source_time_s": track["source_time"].values.astype(float)}
     for name, unit in (("longitude", "deg"), ("latitude", "deg"), ("east", "km"), ("north", "km")):
         columns[f"{name}_{unit}"] = track[name].values
     for name in ("covariance_ee", "covariance_nn", "covariance_en"):
@@ -106,7 +104,7 @@ def _track_tables(scene: Scene) -> list[Table]:
 
 
 def _area_table(scene: Scene, total: Any) -> list[Table]:
-    if scene.is_trace:
+    if scene.cells.is_trace:
         return []
     share, ring_number, places = [], [], []
     for part in SHARES:
@@ -155,11 +153,11 @@ def along_tables(scene: Scene) -> list[Table]:
     along = track["along"].values.astype(float)
     share = np.asarray(track["along_probability"].values, float)
     image = {
-        "source_time_s": np.repeat(scene.source_time, along.size),
-        "along_km": np.tile(along, scene.source_time.size),
+        "source_time_s": np.repeat(track["source_time"].values.astype(float), along.size),
+        "along_km": np.tile(along, track.sizes["source_time"]),
         "probability": share.ravel(),
     }
-    front: dict[str, Column] = {"source_time_s": scene.source_time}
+    front: dict[str, Column] = {"source_time_s": track["source_time"].values.astype(float)}
     for arm in range(scene.front_km.shape[0]):
         front[f"arm{arm + 1}_km"] = track["front_distance"].values[arm]
     return [Table("", image), Table("front", front)]
@@ -185,16 +183,18 @@ def kinds_tables(scene: Scene) -> list[Table]:
 
 
 def energy_tables(scene: Scene) -> list[Table]:
-    """Energy against source time."""
-    series = {f"{name.replace(' ', '_')}_per_s": values for name, values in energy_series(scene).items()}
-    return [Table("", {"source_time_s": scene.source_time, **series})]
+    """Energy against source time, one table per way of finding it."""
+    return [
+        Table(name.replace(" ", "_"), {"source_time_s": time, "energy_share_per_s": values})
+        for name, (time, values) in energy_series(scene.result).items()
+    ]
 
 
-def frames_tables(scene: Scene, field: str) -> list[Table]:
+def frames_tables(scene: Scene) -> list[Table]:
     """Cells of the frames figure, long form; cells below a ten-thousandth of the largest value are left out."""
-    values, _ = field_frames(scene, field)
+    values = scene.cells.values
     flat = values.reshape(values.shape[0], -1)
-    lon, lat = (v.ravel() for v in scene.to_degrees(scene.cell_km))
+    lon, lat = (v.ravel() for v in scene.to_degrees(scene.cells.places_km))
     frame, cell = np.nonzero(flat > 1e-4 * flat.max())
     return [
         Table(

@@ -73,7 +73,7 @@ def test_areas_hold_their_cells_anywhere_on_earth(
     scene = Scene.of(result)
     found = json.loads(write_areas_geojson(scene, tmp_path / "a.geojson").read_text())
     assert [f["properties"]["share"] for f in found["features"]] == list(SHARES)
-    cell_lon, cell_lat = (v.ravel() for v in scene.to_degrees(scene.cell_km))
+    cell_lon, cell_lat = (v.ravel() for v in scene.to_degrees(scene.cells.places_km))
     for feature in found["features"]:
         geometry = shapely.geometry.shape(feature["geometry"])
         assert geometry.is_valid
@@ -82,9 +82,9 @@ def test_areas_hold_their_cells_anywhere_on_earth(
         assert -90 <= south <= north <= 90
         for part in geometry.geoms:
             assert part.exterior.is_ccw  # RFC 7946 section 3.1.6
-        level = credible_level(scene.total_location, feature["properties"]["share"])
-        wanted = scene.total_location.ravel() >= level * 1.02
-        barred = scene.total_location.ravel() < level * 0.98
+        level = credible_level(scene.total, feature["properties"]["share"])
+        wanted = scene.total.ravel() >= level * 1.02
+        barred = scene.total.ravel() < level * 0.98
         inside = shapely.contains_xy(geometry, cell_lon, cell_lat)
         # Straight lines in degrees and on the map differ a little next to the poles.
         assert (inside[wanted]).mean() > 0.97
@@ -106,8 +106,8 @@ def test_kml_is_well_formed_and_times_its_points(build: Callable[..., Result], t
 
 def test_an_area_without_cells_is_empty(unilateral: Result) -> None:
     scene = Scene.of(unilateral)
-    scene.__dict__["total_location"] = np.zeros_like(scene.total_location)
-    assert area_polygons(scene, "location", 0.68).is_empty
+    scene.__dict__["total"] = np.zeros_like(scene.total)
+    assert area_polygons(scene, 0.68).is_empty
 
 
 def records(result: Result) -> list[Site]:

@@ -155,9 +155,9 @@ def test_tables_hold_what_is_drawn(build: Callable[..., Result], tmp_path: Path)
     assert set(areas["share"]) == {"0.68", "0.95"}
     curve = read(tmp_path / "direction_ZX.R01.csv")
     assert len(curve["seconds_after_origin"]) == result.direction.sizes["time"]
-    energy = read(tmp_path / "energy.csv")
+    energy = read(tmp_path / "energy_ray_stack.csv")
     step = float(energy["source_time_s"][1]) - float(energy["source_time_s"][0])
-    assert sum(map(float, energy["ray_stack_per_s"])) * step == pytest.approx(1.0, rel=1e-4)
+    assert sum(map(float, energy["energy_share_per_s"])) * step == pytest.approx(1.0, rel=1e-4)
     assert len(read(tmp_path / "posterior.csv")["azimuth_deg"]) == result.track.sizes["draw"]
 
 
@@ -258,3 +258,48 @@ def test_posterior_image_shows_each_bin_at_its_own_angle(unilateral: Result) -> 
     angle = south + (row + 0.5) * (north - south) / values.shape[0]
     best = float(direction["back_azimuth"][int(np.argmax(direction["probability"].values[column]))])
     assert (angle - best) % 360 == pytest.approx(0.0, abs=1e-6)
+
+
+@pytest.mark.parametrize("case", ["stationary", "undetermined", "stack only", "bare event"])
+def test_answers_of_every_sort_are_drawn(build: Callable[..., Result], tmp_path: Path, case: str) -> None:
+    result = small(build, sites=2, energy=False)
+    assert result.track is not None
+    assert result.map is not None
+    track, rupture = result.track.copy(), dict(result.summary["rupture"])
+    summary = {**result.summary, "rupture": rupture}
+    grid = result.map
+    nothing = {"direction_deg": None, "speed_km_s": None, "length_km": None, "second_arm": None}
+    if case == "stationary":
+        rupture |= nothing | {"kind": "stationary", "kind_probability": {"stationary": 0.97, "unilateral": 0.03}}
+        track["kind"] = ("draw", np.full(track.sizes["draw"], "stationary"))
+        for name in ("front_longitude", "front_latitude", "front_distance", "predicted_back_azimuth"):
+            track[name] = track[name] * np.nan
+        track = track.drop_vars("along_probability")
+    elif case == "undetermined":
+        rupture |= nothing | {"kind": "undetermined", "reason": "two kinds are as likely"}
+        summary["reliability"] = None
+    elif case == "stack only":
+        track = track.drop_dims(["arm", "draw"]).drop_vars("along_probability")
+        grid = grid.drop_vars("smoothed_probability")
+        summary["rupture"] = None
+    else:
+        event = {
+            k: v
+            for k, v in summary["event"].items()
+            if k in ("origin_time", "longitude_deg", "latitude_deg", "depth_km")
+        }
+        summary["event"] = event
+        result.sites["p_arrival"].values[0] = np.nan
+        result.sites["s_arrival"].values[0] = np.nan
+    changed = Result(summary, result.sites, result.direction, grid, None, track, [], {})
+    names = []
+    for sheet in draw.sheets(changed):
+        picture = sheet.draw()
+        picture.set_dpi(40)
+        picture.canvas.draw()
+        sheet.tables()
+        names.append(sheet.name)
+    assert ("posterior" in names) == (case in ("undetermined", "bare event"))
+    assert ("kinds" in names) == (case != "stack only")
+    pictures.write_report(changed, tmp_path / "report.html")
+    pictures.make_movie(changed, tmp_path / "movie.mp4")

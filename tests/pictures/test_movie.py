@@ -89,7 +89,7 @@ def test_cropping_the_image_moves_no_cell(short: Result) -> None:
     row, column = np.unravel_index(np.argmax(shown), shown.shape)
     east_km = west + (column + 0.5) * (east - west) / shown.shape[1]
     north_km = south + (row + 0.5) * (north - south) / shown.shape[0]
-    best = animation.scene.cell_km[np.unravel_index(np.argmax(whole), whole.shape)]
+    best = animation.scene.cells.places_km[np.unravel_index(np.argmax(whole), whole.shape)]
     assert (east_km, north_km) == pytest.approx(tuple(best))
     assert shown.sum() == pytest.approx(whole.sum(), rel=0.02)
 

@@ -115,7 +115,7 @@ def test_packed_movie_is_true_to_a_percent(unilateral: Result) -> None:
     true = unilateral.map["smoothed_probability"].values
     high = true > 0.05 * true.max()
     assert np.abs(values[high] / true[high] - 1).max() < 0.02
-    lon = unpack(data["cells"]["longitude"], "<i4") / 1e4
+    lon = unpack(field["cells"]["longitude"], "<i4") / 1e4
     assert lon == pytest.approx(unilateral.map["longitude"].values.ravel(), abs=1e-4)
 
 
@@ -129,7 +129,7 @@ def test_page_of_noise_on_a_large_grid_stays_below_ten_megabytes(build: Callable
     rng = np.random.default_rng(1)
     noise = rng.random((frames, 200, 200)).astype("f4") ** 2
     result.map["smoothed_probability"].values[...] = noise / noise.sum(axis=(1, 2), keepdims=True)
-    result.energy["energy"].values[...] = noise
+    result.energy["energy"].values[...] = rng.random(result.energy["energy"].shape)
     page = report_html(result)
     assert len(page.encode()) < 10e6
     field = data_of(page)["fields"][0]
@@ -155,7 +155,7 @@ def test_directions_only_and_trace_results_have_a_page(build: Callable[..., Resu
     assert data["lagged"]
     assert data["times"][0] == 0.0
     assert all(site["panel"] for site in data["sites"])
-    assert data_of(report_html(build(trace=True)))["cells"]["trace"] is True
+    assert data_of(report_html(build(trace=True)))["fields"][0]["cells"]["trace"] is True
 
 
 def test_a_direction_near_north_is_one_peak(build: Callable[..., Result]) -> None:
@@ -165,3 +165,18 @@ def test_a_direction_near_north_is_one_peak(build: Callable[..., Result]) -> Non
     assert high - low < 20
     assert best % 360 == pytest.approx(359.0, abs=2.0)
     assert low < best < high
+
+
+def test_a_field_with_its_own_grid_and_frames_is_shown_at_the_nearest_frame(unilateral: Result) -> None:
+    data = data_of(report_html(unilateral))
+    field = data["fields"][1]
+    assert field["name"] == "energy"
+    assert unilateral.energy is not None
+    energy = unilateral.energy["energy"]
+    assert field["shape"] == list(energy.shape[1:])
+    assert field["shape"] != data["fields"][0]["shape"]
+    packed = unpack(field["image"]).reshape(len(data["times"]), *field["shape"])
+    frame = data["times"].index(12.0)
+    true = energy.sel(source_time=12.0).values / float(energy.sum())
+    assert field["top"] * (packed[frame] / 255.0) ** 2 == pytest.approx(true, abs=0.01 * float(true.max()))
+    assert field["cells"]["edges"][0] == float(energy["easting"][0]) - 5.0

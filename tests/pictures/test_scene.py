@@ -65,19 +65,19 @@ def test_area_rings_enclose_exactly_the_cells_above_the_level(unilateral: Result
     from matplotlib.path import Path
 
     scene = Scene.of(unilateral)
-    level = credible_level(scene.total_location, 0.68)
-    rings = layers.area_rings(scene, scene.total_location, level)
-    cells = scene.cell_km.reshape(-1, 2)
+    level = credible_level(scene.total, 0.68)
+    rings = layers.area_rings(scene, scene.total, level)
+    cells = scene.cells.places_km.reshape(-1, 2)
     inside = np.zeros(len(cells), int)
     for ring in rings:
         inside += Path(ring).contains_points(cells, radius=1e-9) | Path(ring).contains_points(cells, radius=-1e-9)
-    wanted = scene.total_location.ravel() >= level
+    wanted = scene.total.ravel() >= level
     assert (inside % 2 == 1).tolist() == wanted.tolist()
 
 
 def test_an_area_that_touches_the_edge_of_the_map_is_closed(build: Callable[..., Result]) -> None:
     scene = Scene.of(build(cells=15, spacing_km=4.0))
-    for ring in layers.area_rings(scene, scene.total_location, credible_level(scene.total_location, 0.95)):
+    for ring in layers.area_rings(scene, scene.total, credible_level(scene.total, 0.95)):
         assert ring[0] == pytest.approx(ring[-1])
 
 
@@ -131,9 +131,9 @@ def test_a_wedge_is_as_wide_as_the_posterior(unilateral: Result) -> None:
 
 def test_total_location_is_a_probability_that_leaves_quiet_frames_out(unilateral: Result) -> None:
     scene = Scene.of(unilateral)
-    assert scene.total_location.sum() == pytest.approx(1.0)
+    assert scene.total.sum() == pytest.approx(1.0)
     # The quiet frames of the invented result are five times as wide; with them the area would be far larger.
-    inside = (scene.total_location >= credible_level(scene.total_location, 0.95)).sum() * 25.0
+    inside = (scene.total >= credible_level(scene.total, 0.95)).sum() * 25.0
     assert inside < 8000.0
 
 
@@ -147,7 +147,7 @@ def test_a_result_without_event_or_map_says_so(unilateral: Result) -> None:
     with pytest.raises(InputError, match="no event"):
         Scene.of(Result({}, unilateral.sites, unilateral.direction))
     with pytest.raises(InputError, match="only directions"):
-        _ = Scene.of(Result(unilateral.summary, unilateral.sites, unilateral.direction)).location
+        _ = Scene.of(Result(unilateral.summary, unilateral.sites, unilateral.direction)).cells
 
 
 @pytest.mark.parametrize("strike", [0.0, 37.0])

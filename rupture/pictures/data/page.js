@@ -55,10 +55,7 @@
     field.values = new Uint8Array(await unpack(field.image));
     delete field.image;
     field.size = field.shape.reduce((a, b) => a * b, 1);
-  }
-  if (data.cells) {
-    data.cells.longitude = new Int32Array(await unpack(data.cells.longitude));
-    data.cells.latitude = new Int32Array(await unpack(data.cells.latitude));
+    for (const name of ["longitude", "latitude"]) field.cells[name] = new Int32Array(await unpack(field.cells[name]));
   }
   for (const site of data.sites) if (site.panel) site.panel.image = new Uint8Array(await unpack(site.panel.image));
   if (data.along) data.along.image = new Uint8Array(await unpack(data.along.image));
@@ -135,10 +132,10 @@
     const field = data.fields[state.field];
     if (!field) return;
     const paint = (share) => [...probabilityColour(share), Math.round(255 * Math.min(1, share / 0.25))];
-    if (data.cells.trace) {
+    if (field.cells.trace) {
       g.lineWidth = 8;
-      data.cells.x.forEach((x, i, all) => {
-        const next = Math.min(i + 1, all.length - 1), last = Math.max(i - 1, 0), ys = data.cells.y;
+      field.cells.x.forEach((x, i, all) => {
+        const next = Math.min(i + 1, all.length - 1), last = Math.max(i - 1, 0), ys = field.cells.y;
         const [r, gr, b, a] = paint(value(field, state.frame, i) / field.show);
         g.strokeStyle = `rgba(${r},${gr},${b},${a / 255})`;
         g.beginPath();
@@ -156,7 +153,7 @@
     }
     const small = make("canvas", { width: columns, height: rows });
     small.getContext("2d").putImageData(image, 0, 0);
-    const [w, e, s, n] = data.cells.edges, [fullRows, fullColumns] = data.cells.shape;
+    const [w, e, s, n] = field.cells.edges, [fullRows, fullColumns] = field.cells.shape;
     // Blocks at the north and east edge may stick out over the grid.
     const stepX = ((e - w) / fullColumns) * field.block, stepY = ((n - s) / fullRows) * field.block;
     g.imageSmoothingEnabled = false;
@@ -268,12 +265,12 @@
   function cellAt(x, y) {
     const field = data.fields[state.field];
     if (!field) return null;
-    if (data.cells.trace) {
+    if (field.cells.trace) {
       let best = -1, least = Infinity;
-      data.cells.x.forEach((cx, i) => { const d = Math.hypot(cx - x, data.cells.y[i] - y); if (d < least) { least = d; best = i; } });
+      field.cells.x.forEach((cx, i) => { const d = Math.hypot(cx - x, field.cells.y[i] - y); if (d < least) { least = d; best = i; } });
       return least < (east - west) / 15 ? { place: best, cell: best } : null;
     }
-    const [w, e, s, n] = data.cells.edges, [rows, columns] = data.cells.shape;
+    const [w, e, s, n] = field.cells.edges, [rows, columns] = field.cells.shape;
     const c = Math.floor(((x - w) / (e - w)) * columns), r = Math.floor(((y - s) / (n - s)) * rows);
     if (c < 0 || r < 0 || c >= columns || r >= rows) return null;
     return { place: r * columns + c, cell: Math.floor(r / field.block) * field.shape[1] + Math.floor(c / field.block) };
@@ -284,7 +281,7 @@
     const [x, y] = state.at, found = cellAt(x, y), field = data.fields[state.field];
     const away = `${Math.hypot(x, y).toFixed(0)} km ${compass(x, y)} of the epicentre`;
     if (!found) { output.textContent = field ? `${away}: no cell here` : away; return; }
-    const lon = data.cells.longitude[found.place] / 1e4, lat = data.cells.latitude[found.place] / 1e4;
+    const lon = field.cells.longitude[found.place] / 1e4, lat = field.cells.latitude[found.place] / 1e4;
     const mean = field.block > 1 ? `, mean of ${field.block} × ${field.block} cells` : "";
     output.textContent = `${degrees(lat, "N", "S")} ${degrees(lon, "E", "W")}, ${away}: ${field.label} ${digits(value(field, state.frame, found.cell))}${mean}`;
   }
@@ -300,7 +297,7 @@
     else if (!step) return;
     else {
       const field = data.fields[state.field];
-      const size = field && data.cells && !data.cells.trace ? (data.cells.edges[1] - data.cells.edges[0]) / data.cells.shape[1] : (east - west) / 100;
+      const size = field && !field.cells.trace ? (field.cells.edges[1] - field.cells.edges[0]) / field.cells.shape[1] : (east - west) / 100;
       const [x, y] = state.at || [0, 0];
       state.at = [Math.min(east, Math.max(west, x + step[0] * size)), Math.min(north, Math.max(south, y + step[1] * size))];
     }
@@ -341,6 +338,7 @@
   };
   const dashes = (arm) => (arm ? [7, 4] : []);
 
+  const nearestFrame = (t) => times.reduce((best, v, i) => (Math.abs(v - t) < Math.abs(times[best] - t) ? i : best), 0);
   let energyChart = null;
   function drawEnergy() {
     const names = Object.keys(data.energy), looks = ["bar", "accent"];
@@ -406,21 +404,21 @@
   }
 
   function drawAlong() {
-    const along = data.along, step = along.along.length > 1 ? along.along[1] - along.along[0] : 1, half = times.length > 1 ? (times[1] - times[0]) / 2 : 0.5;
+    const along = data.along, at = along.times, step = along.along.length > 1 ? along.along[1] - along.along[0] : 1, half = at.length > 1 ? (at[1] - at[0]) / 2 : 0.5;
     const low = along.along[0] - step / 2, high = along.along[along.along.length - 1] + step / 2;
     $("along-section").hidden = false;
     const plot = chart($("along-chart"), {
       height: 320,
-      scales: { x: { time: false, range: () => [times[0] - half, times[times.length - 1] + half] }, y: { range: () => [low, high] } },
+      scales: { x: { time: false, range: () => [at[0] - half, at[at.length - 1] + half] }, y: { range: () => [low, high] } },
       axes: [axisLook({ label: "source time after origin (s)", grid: { show: false } }), axisLook({ label: "distance (km)", size: 62, grid: { show: false } })],
       series: [{ label: "source time (s)" }, ...along.fronts.map((_, arm) => ({ label: arm ? "second arm (km)" : "fitted front (km)", stroke: () => colour("accent"), width: 2.4, dash: dashes(arm), points: { show: false } }))],
       cursor: { drag: { x: false, y: false } },
       hooks: {
-        drawClear: [(u) => heat(u, (r, c) => along.image[c * along.along.length + r], along.along.length, times.length, [times[0] - half, times[times.length - 1] + half, low, high])],
+        drawClear: [(u) => heat(u, (r, c) => along.image[c * along.along.length + r], along.along.length, at.length, [at[0] - half, at[at.length - 1] + half, low, high])],
         draw: [(u) => {
           u.ctx.save(); u.ctx.font = `${11 * devicePixelRatio}px system-ui, sans-serif`; u.ctx.fillStyle = colour("muted");
           for (const sign of [1, -1]) for (const speed of [1, 2, 3, 4, 5]) {
-            const reach = sign > 0 ? high : -low, end = Math.min(times[times.length - 1], reach / speed);
+            const reach = sign > 0 ? high : -low, end = Math.min(at[at.length - 1], reach / speed);
             if (end <= 0) continue;
             strokeLine(u, [0, 0], [end, sign * speed * end], { stroke: colour("muted"), dash: [5, 4] });
             u.ctx.fillText(String(speed), u.valToPos(end * 0.94, "x", true), u.valToPos(sign * speed * end * 0.94, "y", true) - 3 * devicePixelRatio);
@@ -430,8 +428,8 @@
           strokeLine(u, [times[state.frame], low], [times[state.frame], high], { stroke: colour("ink"), width: 1 });
         }],
       },
-    }, [times, ...along.fronts]);
-    plot.over.addEventListener("click", () => { if (plot.cursor.idx != null) setFrame(plot.cursor.idx); });
+    }, [at, ...along.fronts]);
+    plot.over.addEventListener("click", () => { if (plot.cursor.idx != null) setFrame(nearestFrame(at[plot.cursor.idx])); });
     return plot;
   }
 
