@@ -190,4 +190,4 @@ def test_high_frequency_and_large_depth_stay_stable():
     some = np.arange(1, plan.omega.size, 7)
     theirs = np.array([-2 * full_space(MOMENT, place, w, VP, VS)[1][2] for w in plan.omega[some]])
     assert np.isfinite(ours).all()
-    assert (np.abs(ours[some] - theirs) < 2e-3 * np.abs(theirs)).all()
+    assert (np.abs(ours[some] - theirs) < 1e-3 * np.abs(theirs) + 5e-5 * np.abs(theirs).max()).all()

@@ -73,7 +73,7 @@ def test_misfit_energy_of_six_components(name, depth_km, kmax):
     _, u, d = pyprop8.compute_seismograms(
         *theirs(MODELS[name], depth_km), plan.samples, plan.step_s, source_time_function=pulse, show_progress=False,
         pad_frac=0.2, alpha=0.05, derivatives=pyprop8.DerivativeSwitches(x=True, y=True),
-        stencil_kwargs={"kmin": 0.0, "kmax": kmax, "nk": int(kmax * 420)},
+        stencil_kwargs={"kmin": 0.0, "kmax": kmax, "nk": int(kmax * 240)},
     )  # fmt: skip
     east, north = -d[:, 0] / 1e3, -d[:, 1] / 1e3  # moving the source is moving the receiver the other way; per km
     other = np.empty_like(mine)

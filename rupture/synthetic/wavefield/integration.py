@@ -19,29 +19,30 @@ from rupture.synthetic.wavefield.sampling import (
     wavenumber_weights,
 )
 
-KERNEL_BYTES = 48_000_000
+BLOCK_BYTES = 64_000_000
 TABLE_BYTES = 400_000_000
-"""Upper limits of the memory that kernels of one block of frequencies, and Bessel tables of one batch of distances, take."""
+"""Upper limits of the memory that one block of frequencies, and the Bessel tables of one batch of distances, take."""
+
+COLUMNS = (J0_COLUMNS, J1_COLUMNS, J2_COLUMNS)
 
 Report = Callable[[int, int], None]
 
 
 @dataclass(frozen=True)
 class Block:
-    """Elementary spectra of some frequencies and some distances of one source depth.
+    """Elementary spectra of some frequencies and some rows; rows are the distances of all depths, numbered through.
 
     Attributes
     ----------
-    depth
-        Index of the source depth.
-    distances, frequencies
-        Which distances of that depth and which frequencies of the plan.
+    first
+        Number of the first row.
+    frequencies
+        Which frequencies of the plan.
     spectra
-        Displacement (m) and rotation (rad) times s after a moment step of 1 N m, shape (distances, 18, frequencies).
+        Displacement (m) and rotation (rad) times s after a moment step of 1 N m, shape (rows, 18, frequencies).
     """
 
-    depth: int
-    distances: slice
+    first: int
     frequencies: slice
     spectra: NDArray[np.complex128]
 
@@ -68,9 +69,9 @@ def integrate(
     """
     omega = plan.omega
     step = wavenumber_step(model, plan, max(float(d.max()) for d in distance_m))
-    cut = medium(model, depth_km, omega)
-    largest = int(wavenumber_counts(cut, omega, step).max())
+    largest = int(wavenumber_counts(medium(model, depth_km, omega), omega, step).max())
     batches = _batches(distance_m, max(1, TABLE_BYTES // (24 * largest)))
+    first = 0
     for number, batch in enumerate(batches):
         depths = sorted({depth for depth, _ in batch})
         layers = medium(model, depth_km[depths], omega)
@@ -81,62 +82,58 @@ def integrate(
             name = (id(distance_m[depth]), part.start)
             if name not in tables:
                 tables[name] = bessel_tables(distance_m[depth][part], k)
-        at_once = int(np.clip(KERNEL_BYTES // (288 * k.size * len(depths)), 1, 32))
+        near = 1.0 / np.concatenate([distance_m[depth][part] for depth, part in batch])
+        bytes_each = 288 * max(k.size * len(depths), near.size)
+        at_once = int(np.clip(BLOCK_BYTES // bytes_each, 1, 32))
         starts = range(0, omega.size, at_once)
         for done, f in enumerate(starts):
             some = slice(f, min(f + at_once, omega.size))
             count = counts[some]
             used = int(count.max())
-            kernels = [
-                np.empty((used, len(depths), some.stop - some.start, n), complex)
-                for n in (J0_COLUMNS, J1_COLUMNS, J2_COLUMNS)
-            ]
+            kernels = [np.empty((used, len(depths), some.stop - f, n), complex) for n in COLUMNS]
             surface_kernels(
                 k[:used], weight[:used], count, omega[some] ** 2, layers.alpha2[some], layers.beta2[some],
                 layers.density, layers.thickness_m, layers.emit, layers.layer_above, *kernels,
             )  # fmt: skip
+            sums = [np.empty((near.size, some.stop - f, n), complex) for n in COLUMNS]
+            row = 0
             for depth, part in batch:
                 own = depths.index(depth)
-                rows = int(count[:, own].max())
-                sums = [
-                    _product(table[:, :rows], kernel[:rows, own])
-                    for table, kernel in zip(tables[id(distance_m[depth]), part.start], kernels, strict=True)
-                ]
-                spectra = _assemble(sums, distance_m[depth][part]) / (1j * omega[some])
-                yield Block(depth, part, some, spectra)
+                wanted = int(count[:, own].max())
+                rows = slice(row, row + part.stop - part.start)
+                for table, kernel, total in zip(tables[id(distance_m[depth]), part.start], kernels, sums, strict=True):
+                    _product(table[:, :wanted], kernel[:wanted, own], total[rows])
+                row = rows.stop
+            yield Block(first, some, _assemble(sums, near) / (1j * omega[some]))
             if report is not None:
                 report(number * len(starts) + done + 1, len(batches) * len(starts))
+        first += near.size
 
 
 def _batches(distance_m: Sequence[NDArray[np.float64]], limit: int) -> list[list[tuple[int, slice]]]:
     """Split (depth, distances) into batches whose Bessel tables fit; distances shared between depths count once."""
-    pieces = [
-        (depth, slice(lo, min(lo + limit, d.size)))
-        for depth, d in enumerate(distance_m)
-        for lo in range(0, d.size, limit)
-    ]
-    pieces.sort(key=lambda piece: (piece[1].start, piece[0]))
     batches: list[list[tuple[int, slice]]] = []
     held: dict[tuple[int, int], int] = {}
-    for depth, part in pieces:
-        name = (id(distance_m[depth]), part.start)
-        size = part.stop - part.start
-        if not batches or sum(held.values()) + (0 if name in held else size) > limit:
-            batches.append([])
-            held = {}
-        held[name] = size
-        batches[-1].append((depth, part))
+    for depth, d in enumerate(distance_m):
+        for start in range(0, d.size, limit):
+            part = slice(start, min(start + limit, d.size))
+            name, size = (id(d), start), part.stop - start
+            if not batches or sum(held.values()) + (0 if name in held else size) > limit:
+                batches.append([])
+                held = {}
+            held[name] = size
+            batches[-1].append((depth, part))
     return batches
 
 
-def _product(table: NDArray[np.float64], kernel: NDArray[np.complex128]) -> NDArray[np.complex128]:
-    """Return table (distances, k) times kernel (k, frequencies, columns), real by complex in one real product."""
+def _product(table: NDArray[np.float64], kernel: NDArray[np.complex128], out: NDArray[np.complex128]) -> None:
+    """Put table (rows, k) times kernel (k, frequencies, columns) into out: real by complex in one real product."""
     flat = kernel.reshape(kernel.shape[0], -1).view(float)
-    return (table @ flat).view(complex).reshape(table.shape[0], *kernel.shape[1:])
+    np.matmul(table, flat, out=out.reshape(out.shape[0], -1).view(float))
 
 
-def _assemble(sums: Sequence[NDArray[np.complex128]], distance_m: NDArray[np.float64]) -> NDArray[np.complex128]:
-    """Combine sums over J0, J1 and J2 (distances, frequencies, columns) into elements (distances, 18, frequencies).
+def _assemble(sums: Sequence[NDArray[np.complex128]], inverse_m: NDArray[np.float64]) -> NDArray[np.complex128]:
+    """Combine sums over J0, J1 and J2 (rows, frequencies, columns) into elements (rows, 18, frequencies).
 
     Derivatives of Bessel functions and the near-field terms J_m / (k r) come from J1' = J0 - J1/x, J2' = J1 - 2 J2/x.
     """
@@ -144,7 +141,7 @@ def _assemble(sums: Sequence[NDArray[np.complex128]], distance_m: NDArray[np.flo
     b1_0, b3_0, a2_0, c2_0, kb2_0 = np.moveaxis(zero, -1, 0)
     a1_1, a3_1, b2_1, kc2_1, kb1_1, kb3_1, a2_k1, c2_k1, c1_1 = np.moveaxis(one, -1, 0)
     b1_2, kc1_2, a1_k2, c1_k2 = np.moveaxis(two, -1, 0)
-    near = (1.0 / distance_m)[:, None]
+    near = inverse_m[:, None]
     one_dip = near * (c2_k1 - a2_k1)
     two_slip = 2 * near * (a1_k2 - c1_k2)
     rows = [

@@ -157,10 +157,11 @@ def greens_at_depths(
     distance = checked_distances(distance_m)
     asked = np.atleast_1d(np.asarray(source_depth_km, float))
     depth, where = np.unique(asked, return_inverse=True)
-    spectra = np.empty((depth.size, distance.size, len(ELEMENTS), plan.omega.size), complex)
+    spectra = np.empty((depth.size * distance.size, len(ELEMENTS), plan.omega.size), complex)
     for block in integrate(model, depth, [distance] * depth.size, plan, report):
-        spectra[block.depth, block.distances, :, block.frequencies] = block.spectra
-    return [GreensTable(float(depth[d]), distance, plan, spectra[d]) for d in where]
+        spectra[block.first : block.first + block.spectra.shape[0], :, block.frequencies] = block.spectra
+    by_depth = spectra.reshape(depth.size, distance.size, len(ELEMENTS), plan.omega.size)
+    return [GreensTable(float(depth[d]), distance, plan, by_depth[d]) for d in where]
 
 
 def checked_distances(distance_m: ArrayLike) -> NDArray[np.float64]:

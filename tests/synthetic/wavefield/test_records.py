@@ -3,7 +3,8 @@
 import numpy as np
 import pytest
 
-import rupture.synthetic.wavefield.records as module
+import rupture.synthetic.wavefield.integration as integration
+import rupture.synthetic.wavefield.pairs as module
 from rupture.earth.layers import LayeredModel
 from rupture.errors import InputError
 from rupture.geodesy import destination, distance_azimuth
@@ -98,14 +99,23 @@ def test_interpolation_over_distance_is_exact_enough(monkeypatch):
     monkeypatch.setattr(module, "lagrange", lambda x: calls.append(x.size) or lagrange(x))
     table = wavefield_records(events, near(SITES), CRUST, SAMPLING)
     assert sum(calls) > 700
-    nodes = module._nodes
     monkeypatch.setattr(module, "TABLE_GAIN", np.inf)
     calls.clear()
     exact = wavefield_records(events, near(SITES), CRUST, SAMPLING)
     assert not calls
-    assert module._nodes is nodes
     misfit = ((table - exact) ** 2).sum(axis=-1) / (exact**2).sum(axis=-1)
     assert misfit.max() < 1e-6
+
+
+def test_memory_limits_change_nothing(monkeypatch):
+    events = line(400, longitude=10.35, latitude=45.15)
+    events = SubEvents(**{**events.__dict__, "depth_km": np.where(np.arange(400) % 100 == 0, 8.0, 10.0)})
+    reference = wavefield_records(events, near(SITES), CRUST, SAMPLING)
+    # Batches of a few dozen distances: stencils reach over their borders, depths share batches.
+    monkeypatch.setattr(integration, "TABLE_BYTES", 24 * 60 * 500)
+    monkeypatch.setattr(integration, "BLOCK_BYTES", 288 * 7 * 500)
+    records = wavefield_records(events, near(SITES), CRUST, SAMPLING)
+    assert np.allclose(records, reference, atol=1e-9 * np.abs(reference).max())
 
 
 def test_several_depths_and_the_date_line():
@@ -155,6 +165,8 @@ def test_receiver_on_top_of_a_sub_event_and_band_above_nyquist():
         wavefield_records(events, above, CRUST, SAMPLING)
     with pytest.raises(InputError, match="half the sampling rate"):
         wavefield_records(events, near(SITES), CRUST, Sampling(0.0, 0.25, 240, 2.0))
+    with pytest.raises(InputError, match="Receivers"):
+        wavefield_records(events, Receivers(np.array([np.nan]), np.array([45.0])), CRUST, SAMPLING)
     empty = SubEvents(**{k: v[:0] for k, v in events.__dict__.items()})
     with pytest.raises(InputError, match="at least one sub-event"):
         wavefield_records(empty, near(SITES), CRUST, SAMPLING)

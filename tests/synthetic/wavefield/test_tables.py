@@ -193,10 +193,10 @@ def test_progress_counts_to_the_end_and_memory_limits_change_nothing(monkeypatch
     whole = greens(CRUST, 8.0, distance, PLAN, lambda done, total: seen.append((done, total))).spectra
     assert [done for done, _ in seen] == list(range(1, seen[-1][1] + 1))
     monkeypatch.setattr(integration, "TABLE_BYTES", 24 * 3 * 400)
-    monkeypatch.setattr(integration, "KERNEL_BYTES", 288 * 400 * 5)
+    monkeypatch.setattr(integration, "BLOCK_BYTES", 288 * 400 * 5)
     blocks = list(integrate(CRUST, np.array([8.0]), [distance], PLAN))
-    assert len({(b.distances.start, b.frequencies.start) for b in blocks}) == len(blocks) > 20
+    assert len({(b.first, b.frequencies.start) for b in blocks}) == len(blocks) > 20
     pieces = np.zeros_like(whole)
     for b in blocks:
-        pieces[b.distances, :, b.frequencies] = b.spectra
+        pieces[b.first : b.first + b.spectra.shape[0], :, b.frequencies] = b.spectra
     assert np.allclose(pieces, whole, rtol=1e-9, atol=1e-12 * np.abs(whole).max())
