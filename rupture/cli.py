@@ -172,7 +172,6 @@ def _map(parser: argparse.ArgumentParser) -> None:
         help="half width of the map grid; default from the magnitude",
     )
     group.add_argument("--spacing", type=float, metavar="KM", help="distance between cells")
-    group.add_argument("--no-energy", action="store_true", help="skip the energy inversion")
 
 
 def _null_tests(parser: argparse.ArgumentParser) -> None:

@@ -31,6 +31,10 @@ FREE = {
 straight on, and the second length is its ratio to the first."""
 
 
+AXIS_WIDTH_RAD = np.radians(8.0)
+"""A trace is not straight, and no map of it is exact."""
+
+
 @dataclass(frozen=True)
 class LinePrior:
     """Priors; all widths are one standard deviation.
@@ -52,6 +56,8 @@ class LinePrior:
         Of the angle by which the second arm departs from straight on.
     duration_s, duration_log_width
         Median and log-width of the duration of a stationary source: as long as a rupture of median length takes.
+    axis_rad
+        Azimuth of a known fault trace: ruptures run along it, either way, within `AXIS_WIDTH_RAD`. None: any way.
     """
 
     place_m: float = 3e3
@@ -63,6 +69,7 @@ class LinePrior:
     bend_rad: float = 0.2
     duration_s: float = 20.0
     duration_log_width: float = 0.8
+    axis_rad: float | None = None
 
     def draw(self, kind: str, rng: np.random.Generator, count: int) -> Array:
         """Return draws in the sampler's coordinates, shape (count, free parameters)."""
@@ -70,7 +77,9 @@ class LinePrior:
 
     def _draw_one(self, parameter: int, rng: np.random.Generator, count: int) -> Array:
         if parameter == AZIMUTH:
-            return rng.uniform(0, 2 * np.pi, count)
+            if self.axis_rad is None:
+                return rng.uniform(0, 2 * np.pi, count)
+            return self.axis_rad + np.pi * rng.integers(2, size=count) + rng.normal(0, AXIS_WIDTH_RAD, count)
         if parameter in (SPEED, SPEED_2):
             return rng.uniform(*np.log(self.speed_m_s), count)
         if parameter == LENGTH_2:
@@ -99,6 +108,10 @@ class LinePrior:
         for column, parameter in enumerate(FREE[kind]):
             value = draws[:, column]
             if parameter == AZIMUTH:
+                if self.axis_rad is not None:
+                    # Doubling the angle makes both ways along the trace one.
+                    off = np.angle(np.exp(2j * (value - self.axis_rad))) / 2
+                    total -= 0.5 * (off / AXIS_WIDTH_RAD) ** 2
                 continue
             if parameter in (SPEED, SPEED_2):
                 total[(value < low) | (value > high)] = -np.inf

@@ -1,0 +1,155 @@
+"""The settings of a whole run: one dataclass per table of the job file."""
+
+from __future__ import annotations
+
+import dataclasses
+from collections.abc import Mapping
+from dataclasses import dataclass, field, fields, replace
+from pathlib import Path
+from typing import Any
+
+from rupture.direction import DirectionSettings
+from rupture.errors import InputError
+from rupture.front import FitSettings, SmoothSettings
+from rupture.job import nearest_key, read_toml, settings_from_table
+from rupture.mapping import StackSettings
+from rupture.records import RecordSettings
+
+
+@dataclass(frozen=True)
+class InputSettings:
+    """What goes in. Paths in a job file are relative to its folder.
+
+    Attributes
+    ----------
+    records, inventory
+        Record files, folders or globs; StationXML files.
+    event
+        QuakeML file.
+    origin
+        UTC time, longitude and latitude in degrees, depth in km, as four strings or numbers, in place of `event`.
+    magnitude
+        Moment magnitude, where the event has none.
+    mechanism_deg
+        Strike, dip, rake.
+    trace
+        GeoJSON of the fault trace.
+    """
+
+    records: tuple[str, ...] = ()
+    inventory: tuple[str, ...] = ()
+    event: str | None = None
+    origin: tuple[str | float, str | float, str | float, str | float] | None = None
+    magnitude: float | None = None
+    mechanism_deg: tuple[float, float, float] | None = None
+    trace: str | None = None
+
+
+@dataclass(frozen=True)
+class EarthSettings:
+    """The Earth: `uniform:SPEED`, iasp91, ak135, prem, or an .nd file."""
+
+    model: str = "ak135"
+
+
+@dataclass(frozen=True)
+class MapSettings:
+    """The grid: half width and spacing in km (None: from the magnitude), frames from the origin time on in s."""
+
+    half_width_km: float | None = None
+    spacing_km: float | None = None
+    frame_s: float = 1.0
+    frames_until_s: float | None = None
+
+    def __post_init__(self) -> None:
+        if not self.frame_s > 0 or (self.frames_until_s is not None and not self.frames_until_s > 2 * self.frame_s):
+            raise InputError("frame_s must be positive and frames_until_s hold at least two frames")
+
+
+@dataclass(frozen=True)
+class NullTestSettings:
+    """How many synthetic ruptures answer "would these sites have told?"; 0 switches them off."""
+
+    ruptures: int = 30
+
+    def __post_init__(self) -> None:
+        if self.ruptures < 0:
+            raise InputError("ruptures of the null tests cannot be negative")
+
+
+@dataclass(frozen=True)
+class Job:
+    """A whole run; every field but the seed is a table of the job file."""
+
+    input: InputSettings = field(default_factory=InputSettings)
+    records: RecordSettings = field(default_factory=RecordSettings)
+    direction: DirectionSettings = field(default_factory=DirectionSettings)
+    earth: EarthSettings = field(default_factory=EarthSettings)
+    map: MapSettings = field(default_factory=MapSettings)
+    stack: StackSettings = field(default_factory=StackSettings)
+    smooth: SmoothSettings = field(default_factory=SmoothSettings)
+    fit: FitSettings = field(default_factory=FitSettings)
+    null_tests: NullTestSettings = field(default_factory=NullTestSettings)
+    seed: int = 1
+
+    def as_table(self) -> dict[str, Any]:
+        """Return plain values, keys without a value left out, as they go into job.toml."""
+        return _plain(dataclasses.asdict(self))
+
+
+def _plain(value: Any) -> Any:
+    if isinstance(value, Mapping):
+        return {k: _plain(v) for k, v in value.items() if v is not None}
+    return [_plain(v) for v in value] if isinstance(value, tuple | list) else value
+
+
+def read_job(path: str | Path) -> Job:
+    """Read a job file; every unknown key and wrong type is told at once.
+
+    Raises
+    ------
+    InputError
+        When the file cannot be read or taken.
+    """
+    path = Path(path)
+    table = read_toml(path)
+    sections = {f.name: f for f in fields(Job)}
+    wrong = [f"{path}: unknown table '{name}'{nearest_key(name, sections)}" for name in table if name not in sections]
+    values: dict[str, Any] = {}
+    default = Job()
+    for name, content in table.items():
+        if name not in sections:
+            continue
+        if name == "seed":
+            if not isinstance(content, int) or isinstance(content, bool) or content < 0:
+                wrong.append(f"{path}: 'seed' = {content!r}: a whole number from 0 up is needed")
+            else:
+                values[name] = content
+        elif not isinstance(content, Mapping):
+            wrong.append(f"{path}: '{name}' must be a table, [{name}]")
+        else:
+            try:
+                values[name] = settings_from_table(type(getattr(default, name)), content, f"{path} [{name}]")
+            except InputError as error:
+                wrong.append(str(error))
+    if wrong:
+        raise InputError("\n".join(wrong))
+    job = Job(**values)
+    return replace(job, input=_beside(job.input, path.parent), earth=_earth_beside(job.earth, path.parent))
+
+
+def _beside(given: InputSettings, folder: Path) -> InputSettings:
+    def move(text: str) -> str:
+        return text if Path(text).is_absolute() or ":" in text.split("/")[0] else str(folder / text)
+
+    return replace(
+        given,
+        records=tuple(move(r) for r in given.records),
+        inventory=tuple(move(r) for r in given.inventory),
+        event=move(given.event) if given.event else None,
+        trace=move(given.trace) if given.trace else None,
+    )
+
+
+def _earth_beside(given: EarthSettings, folder: Path) -> EarthSettings:
+    return EarthSettings(str(folder / given.model)) if given.model.endswith(".nd") and not Path(given.model).is_absolute() else given
