@@ -47,16 +47,18 @@ def place_nodes(theta, east, north, time, weight):  # pragma: no cover - compile
 
 
 @numba.njit(cache=True)
-def _hann(x):  # pragma: no cover - compiled
-    return 0.5 * (1.0 + np.cos(2.0 * np.pi * x)) if abs(x) < 0.5 else 0.0
+def _taper(x):  # pragma: no cover - compiled
+    """Weight of an arrival in a window of unit length; a biweight, within 4 % of a Hann window and free of cosines."""
+    y = 1.0 - 4.0 * x * x
+    return y * y if y > 0.0 else 0.0
 
 
 @numba.njit(cache=True)
 def _site_log_likelihood(
     theta, count, east, north, time, weight, ratio, haze, log_power, window_time, window_s, share, place, tables, primary, grid, direct, coda
 ):  # pragma: no cover - compiled
-    """One site. `ratio` is (T, A, P); `tables` is (W, 3, D): time, log slowness, energy of each wave."""
-    windows, angles, nodes_p = ratio.shape
+    """One site. `ratio` is (A, P, T): contiguous in time, as arrivals are; `tables` is (W, 3, D): time, log slowness, energy of each wave."""
+    angles, nodes_p, windows = ratio.shape
     step_m, log_p0, log_step = grid
     hop = window_time[1] - window_time[0]
     half = 0.5 * window_s
@@ -76,6 +78,9 @@ def _site_log_likelihood(
         at = distance / step_m
         k = min(int(at), tables.shape[2] - 2)
         part = at - k
+        scattered = 0.0
+        loud = 0.0
+        loud_arrival = 0.0
         for wave in range(tables.shape[0]):
             energy = (1.0 - part) * tables[wave, 2, k] + part * tables[wave, 2, k + 1]
             if energy <= 0.0:
@@ -90,17 +95,23 @@ def _site_log_likelihood(
             first = max(0, int(np.ceil((arrival - half - window_time[0]) / hop)))
             last = min(windows - 1, int(np.floor((arrival + half - window_time[0]) / hop)))
             for t in range(first, last + 1):
-                g = strength * _hann((window_time[t] - arrival) / window_s) * 2.0 / window_s
+                g = strength * _taper((window_time[t] - arrival) / window_s) * 1.875 / window_s
                 direct[0, t] += g
-                direct[1, t] += g * ratio[t, a, b]
-            if j % CODA_STRIDE == 1:
-                amount = CODA_STRIDE * theta[CODA] * strength / coda_time
-                begin = max(0, int(np.ceil((arrival - window_time[0]) / hop)))
+                direct[1, t] += g * ratio[a, b, t]
+            if not primary[wave]:
+                scattered += strength
+                if energy > loud:
+                    loud, loud_arrival = energy, arrival
+        if j % CODA_STRIDE == 1 and scattered > 0.0:
+            # Scattered waves follow the strongest S of the place with the energy of all of its S waves.
+            begin = max(0, int(np.ceil((loud_arrival - window_time[0]) / hop)))
+            if begin < windows:
                 decay = np.exp(-hop / coda_time)
-                g = amount * np.exp(-(window_time[begin] - arrival) / coda_time) if begin < windows else 0.0
+                g = CODA_STRIDE * theta[CODA] * scattered / coda_time
+                g *= np.exp(-(window_time[begin] - loud_arrival) / coda_time)
                 for t in range(begin, windows):
                     coda[0, t] += g
-                    coda[1, t] += g * haze[t, a]
+                    coda[1, t] += g * haze[a, t]
                     g *= decay
     total = 0.0
     number = 0.0
@@ -132,7 +143,7 @@ def _site_log_likelihood(
 
 @numba.njit(parallel=True, cache=True)
 def log_likelihoods(
-    particles, first, ratio, haze, log_power, window_time, window_s, share, places, tables, primary, grid, power_sigma, power_share
+    particles, first, ratio, haze, angles, nodes_p, log_power, window_time, window_s, share, places, tables, primary, grid, power_sigma, power_share
 ):  # pragma: no cover - compiled
     """Return the log-likelihood of each row of a parameter table, shape (particles, sites).
 
@@ -143,9 +154,11 @@ def log_likelihoods(
     first
         First row of each site in the arrays over all windows, shape (sites + 1,).
     ratio
-        Posterior ratios of all windows of all sites, shape (windows, A, P), slowness already blurred.
+        Posterior ratios of all windows of all sites, slowness already blurred: per site (A, P, windows), end to end.
     haze
-        Posterior ratios for scattered waves, blurred over back-azimuth and slowness, shape (windows, A).
+        Posterior ratios for scattered waves, blurred over back-azimuth and slowness: per site (A, windows), end to end.
+    angles, nodes_p
+        A and P.
     log_power
         Natural log of window power, NaN where the window does not count, shape (windows,).
     window_time
@@ -180,7 +193,9 @@ def log_likelihoods(
         for s in range(sites):
             a, b = first[s], first[s + 1]
             total, number, mean, square = _site_log_likelihood(
-                particles[i], nodes, east, north, time, weight, ratio[a:b], haze[a:b], log_power[a:b], window_time[a:b],
+                particles[i], nodes, east, north, time, weight,
+                ratio[angles * nodes_p * a : angles * nodes_p * b].reshape(angles, nodes_p, b - a),
+                haze[angles * a : angles * b].reshape(angles, b - a), log_power[a:b], window_time[a:b],
                 window_s[s], share[s], places[s], tables, primary, grid, direct, coda,
             )
             if number > 1.0:

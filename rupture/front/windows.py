@@ -35,6 +35,8 @@ class Windows:
     first: NDArray[np.int64]
     ratio: NDArray[np.float32]
     haze: NDArray[np.float32]
+    angles: int
+    nodes: int
     log_power: Array
     window_time: Array
     window_s: Array
@@ -49,7 +51,7 @@ class Windows:
     def log_likelihood(self, parameters: Array) -> Array:
         """Return log-likelihoods per site, shape (count, sites)."""
         return log_likelihoods(
-            np.ascontiguousarray(parameters), self.first, self.ratio, self.haze, self.log_power, self.window_time, self.window_s,
+            np.ascontiguousarray(parameters), self.first, self.ratio, self.haze, self.angles, self.nodes, self.log_power, self.window_time, self.window_s,
             self.share, self.places, self.tables, self.primary, self.grid, self.power_sigma, self.power_share,
         )  # fmt: skip
 
@@ -109,7 +111,7 @@ def lay_out(
         chosen = np.flatnonzero((d.time_s >= begin) & (d.time_s <= end))[::stride]
         masked = np.isnan(d.coherent).all(axis=0)[chosen]
         table = np.exp(phase_table(d, slowness_spread)[:, :, chosen])
-        ratios.append(np.ascontiguousarray(np.moveaxis(table, 2, 0), np.float32))
+        ratios.append(np.ascontiguousarray(table, np.float32).ravel())
         hazes.append(_haze(d, chosen))
         power = d.power[chosen]
         positive = power > 0
@@ -123,18 +125,19 @@ def lay_out(
         raise DataError("no site has a usable window between its P arrival and the end of the rupture")
     places = np.stack([east, north, turn], axis=1)
     return Windows(
-        tuple(d.code for d in directions), np.array(first), np.concatenate(ratios), np.concatenate(hazes), np.concatenate(powers),
+        tuple(d.code for d in directions), np.array(first), np.concatenate(ratios), np.concatenate(hazes),
+        directions[0].back_azimuth_rad.size, nodes.size, np.concatenate(powers),
         np.concatenate(times), np.array(length), np.array(share), places, tables, primary,
         (STEP_M, float(nodes[0]), float(nodes[1] - nodes[0])), power_sigma, power_share,
     )  # fmt: skip
 
 
 def _haze(direction: SiteDirection, chosen: NDArray[np.int64]) -> NDArray[np.float32]:
-    """Ratios for scattered waves, shape (windows, A): any slowness, blurred over back-azimuth."""
+    """Ratios for scattered waves, (A, windows) end to end: any slowness, blurred over back-azimuth."""
     ratio = np.exp(direction.log_ratio[:, :, chosen]).mean(axis=1)
     count = ratio.shape[0]
     order = np.minimum(np.arange(count), count - np.arange(count))
     damping = np.exp(-0.5 * (order * CODA_SPREAD_RAD) ** 2)[:, None]
     blurred = np.fft.ifft(np.fft.fft(ratio, axis=0) * damping, axis=0).real
     mixed = CODA_ISOTROPIC + (1.0 - CODA_ISOTROPIC) * np.maximum(blurred, 0.0)
-    return np.ascontiguousarray(mixed.T, np.float32)
+    return np.ascontiguousarray(mixed, np.float32).ravel()
