@@ -18,7 +18,7 @@ from rupture.pictures.coastlines import LocalLand, local_land
 Array = NDArray[np.float64]
 KM = 1e3
 _STEPS_DEG = (0.001, 0.002, 0.005, 0.01, 0.02, 0.05, 0.1, 0.2, 0.25, 0.5, 1.0, 2.0, 5.0, 10.0, 15.0, 30.0, 45.0)
-_LABEL_MM = 9.0  # length of the longest usual label of the graticule
+_LETTER_MM = 1.3  # width of a letter of the graticule's names
 
 
 @dataclass(frozen=True)
@@ -250,7 +250,7 @@ def draw_graticule(axes: Any, plane: LocalPlane, extent: Extent, labels: bool = 
         return
     taken: dict[str, list[float]] = {"bottom": [], "left": [], "top": [], "right": []}
     width_mm = axes.get_position().width * axes.figure.get_figwidth() / style.MM
-    room = _LABEL_MM / width_mm * extent.width_km
+    per_letter = _LETTER_MM / width_mm * extent.width_km
     for line in lines:
         sides = ("bottom", "top") if line.meridian else ("left", "right")
         others = ("left", "right") if line.meridian else ("bottom", "top")
@@ -260,6 +260,7 @@ def draw_graticule(axes: Any, plane: LocalPlane, extent: Extent, labels: bool = 
             if at is None:
                 continue
             low, high = (extent.west, extent.east) if side in ("bottom", "top") else (extent.south, extent.north)
+            room = per_letter * (len(line.label) + 1.5)
             free = not any(abs(at - other) < room for other in taken[side])
             if free and low + 0.02 * (high - low) < at < high - 0.02 * (high - low):
                 taken[side].append(at)

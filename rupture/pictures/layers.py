@@ -111,25 +111,28 @@ def draw_sites(axes: Any, scene: Scene, names: bool = True, size: float = 4.6) -
             }
             look["mfc"] = style.INK if used else "white"
             axes.plot(*(scene.site_km[where].T * KM), zorder=7, **look)
-            label = {
-                "6C": "6C site",
-                "rotation vertical": "3C + vertical rotation",
-                "array": "array",
-                "other": "other site",
-            }[kind]
+            label = "6C site" if kind == "6C" else kind
             handles.append(Line2D([], [], label=label if used else f"{label}, not used", **look))
     if names:
-        for s, code in enumerate(scene.codes):
-            east, north = scene.site_km[s]
-            # Names stand outside the ring of sites, where no ray crosses them.
-            out = np.array([east, north]) / max(np.hypot(east, north), 1e-9)
-            axes.annotate(
-                code.split(".")[-1], (east * KM, north * KM), xytext=5.2 * out, textcoords="offset points", parse_math=False,
-                ha="left" if out[0] > 0.4 else "right" if out[0] < -0.4 else "center",
-                va="bottom" if out[1] > 0.4 else "top" if out[1] < -0.4 else "center",
-                fontsize=6.0, zorder=8, path_effects=HALO, clip_on=True,
-            )  # fmt: skip
+        _name_sites(axes, scene)
     return handles
+
+
+def _name_sites(axes: Any, scene: Scene) -> None:
+    """Write the codes outside the ring of sites, where no ray crosses them, unless the frame is in the way there."""
+    (west, east), (south, north) = axes.get_xlim(), axes.get_ylim()
+    middle, size = np.array([west + east, south + north]) / 2, np.array([east - west, north - south])
+    for s, code in enumerate(scene.codes):
+        place = scene.site_km[s] * KM
+        out = scene.site_km[s] / max(float(np.hypot(*scene.site_km[s])), 1e-9)
+        tight = np.abs(place - middle) > np.array([0.36, 0.46]) * size
+        out = np.where(tight, -np.sign(place - middle) * np.maximum(np.abs(out), 0.5), out)
+        axes.annotate(
+            code.split(".")[-1], tuple(place), xytext=5.2 * out, textcoords="offset points", parse_math=False,
+            ha="left" if out[0] > 0.4 else "right" if out[0] < -0.4 else "center",
+            va="bottom" if out[1] > 0.4 else "top" if out[1] < -0.4 else "center",
+            fontsize=6.0, zorder=8, path_effects=HALO, clip_on=True,
+        )  # fmt: skip
 
 
 def draw_epicentre(axes: Any) -> Line2D:

@@ -127,6 +127,11 @@ def window_of_interest(scene: Scene) -> tuple[float, float]:
     curves = predicted_curves(scene)
     if np.isfinite(curves).any():
         last = max(last, float(time[np.isfinite(curves).any(axis=(0, 1))][-1]))
+    else:
+        # Nothing was fitted: as long as a site goes on seeing a wave, up to a minute after the last S.
+        bands = np.nan_to_num(scene.direction["probability_coherent"].values[used]).max(axis=(0, 1)) >= RAY_PROBABILITY
+        seen = time[bands & (time < last + 60.0)]
+        last = max(last, float(seen[-1])) if seen.size else last
     if not np.isfinite([first, last]).all():
         return float(time[0]), float(time[-1])
     margin = 0.12 * (last - first) + 5.0

@@ -34,7 +34,7 @@ OVERLAY = "#2f6b3c"
 ACCENT = "#b3261e"
 OUTLINE = "#ffffff"
 
-SITE_MARKERS = {"6C": "^", "rotation vertical": "v", "array": "s", "other": "D"}
+SITE_MARKERS = {"6C": "^", "3C + vertical rotation": "v", "Z + horizontal rotation": "s", "other components": "D"}
 """Marker by what a site has; shape, not colour, tells the kinds apart."""
 
 ARM_DASHES: tuple[Any, ...] = ("-", (0, (3.5, 1.6)))
@@ -224,12 +224,8 @@ def site_marker(components: str) -> str:
 
     Examples
     --------
-    >>> site_marker("6C"), site_marker("3C+rotZ"), site_marker("array Z"), site_marker("Z+rotH")
-    ('6C', 'rotation vertical', 'array', 'other')
+    >>> site_marker("6C"), site_marker("3C+rotZ"), site_marker("Z+rotH"), site_marker("3C")
+    ('6C', '3C + vertical rotation', 'Z + horizontal rotation', 'other components')
     """
-    text = components.lower()
-    if "array" in text:
-        return "array"
-    if text.startswith("6c"):
-        return "6C"
-    return "rotation vertical" if text.endswith("rotz") else "other"
+    known = {"6C": "6C", "3C+rotZ": "3C + vertical rotation", "Z+rotH": "Z + horizontal rotation"}
+    return known.get(components, "other components")

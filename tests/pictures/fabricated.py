@@ -44,7 +44,7 @@ def fabricated_result(
     radius = site_radius_km * rng.uniform(0.6, 1.4, sites)
     site_lon, site_lat = destination(longitude_deg, latitude_deg, where, radius * 1e3)
     codes = names or [f"ZX.R{n + 1:02d}" for n in range(sites)]
-    kinds = [("6C", "6C", "3C+rotZ", "array Z")[n % 4] for n in range(sites)]
+    kinds = [("6C", "6C", "3C+rotZ", "Z+rotH")[n % 4] for n in range(sites)]
     used = np.array([n != 5 for n in range(sites)])
     hypo = np.hypot(radius, depth)
     site_e, site_n = (v / 1e3 for v in plane.to_plane(site_lon, site_lat))

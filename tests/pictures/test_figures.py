@@ -29,7 +29,7 @@ def small(build: Callable[..., Result], **changes: object) -> Result:
 
 @pytest.mark.parametrize(
     ("case", "columns"),
-    [("bilateral", 1), ("bilateral", 2), ("date line", 2), ("polar", 1), ("fault trace", 2), ("one site", 1)],
+    [("bilateral", 1), ("date line", 2), ("polar", 1), ("fault trace", 2), ("one site", 1)],
 )
 def test_all_figures_draw(build: Callable[..., Result], case: str, columns: int) -> None:
     result = small(build, **CASES[case])
@@ -302,4 +302,5 @@ def test_answers_of_every_sort_are_drawn(build: Callable[..., Result], tmp_path:
     assert ("posterior" in names) == (case in ("undetermined", "bare event"))
     assert ("kinds" in names) == (case != "stack only")
     pictures.write_report(changed, tmp_path / "report.html")
-    pictures.make_movie(changed, tmp_path / "movie.mp4")
+    if case in ("stationary", "bare event"):
+        pictures.make_movie(changed, tmp_path / "movie.mp4")

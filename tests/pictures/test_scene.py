@@ -205,3 +205,19 @@ def test_without_a_map_rays_are_chosen_by_time_after_s(unilateral: Result) -> No
     at = float(unilateral.sites["s_arrival"][s]) + scene.source_time[frames[0]]
     share = unilateral.direction["probability"].isel(site=s).sel(time=at, method="nearest").values
     assert scene.rays[s, frames[0], 0] == unilateral.direction["back_azimuth"].values[np.argmax(share)]
+
+
+@pytest.mark.parametrize("columns", [1, 2])
+def test_names_of_sites_stay_within_the_frame(build: Callable[..., Result], columns: int) -> None:
+    from rupture.pictures import map_figure
+
+    result = build(sites=8, names=[f"QQ.LONG{n}" for n in range(8)], cells=21, energy=False)
+    picture = map_figure(result, columns=columns)
+    picture.canvas.draw()
+    axes = picture.axes[0]
+    names = [text for text in axes.texts if text.get_text().startswith("LONG")]
+    assert len(names) == 8
+    for text in names:
+        box, frame = text.get_window_extent(), axes.bbox
+        assert frame.x0 - 1 <= box.x0 <= box.x1 <= frame.x1 + 1
+        assert frame.y0 - 1 <= box.y0 <= box.y1 <= frame.y1 + 1

@@ -219,9 +219,8 @@
   }
 
   const markers = {
-    "6C": "13,6 20,19 6,19", "rotation vertical": "6,7 20,7 13,20", array: "7,7 19,7 19,19 7,19", other: "13,5 20,13 13,21 6,13",
+    "6C": "13,6 20,19 6,19", "3C + vertical rotation": "6,7 20,7 13,20", "Z + horizontal rotation": "7,7 19,7 19,19 7,19", "other components": "13,5 20,13 13,21 6,13",
   };
-  const markerNames = { "6C": "6C site", "rotation vertical": "3C + vertical rotation", array: "array", other: "other site" };
   const markerShape = (kind, used) => {
     const picture = svg("svg", { viewBox: "0 0 26 26", "aria-hidden": "true" });
     picture.append(svg("polygon", { points: markers[kind], fill: used ? "var(--ink)" : "var(--page)", stroke: "var(--ink)", "stroke-width": 1.5 }));
@@ -513,7 +512,7 @@
       const key = `${site.marker}${site.used}`;
       if (seen.has(key)) continue;
       seen.add(key);
-      add(markerShape(site.marker, site.used), markerNames[site.marker] + (site.used ? "" : ", not used"));
+      add(markerShape(site.marker, site.used), (site.marker === "6C" ? "6C site" : site.marker) + (site.used ? "" : ", not used"));
     }
     const simple = (child) => { const s = svg("svg", { viewBox: "0 0 26 20", "aria-hidden": "true" }); s.append(child); return s; };
     add(simple(svg("polygon", { points: "13,1 15.5,7.5 22,8 17,12.5 18.5,19 13,15.5 7.5,19 9,12.5 4,8 10.5,7.5", fill: "var(--accent)" })), "epicentre");
