@@ -6,27 +6,43 @@ from importlib import import_module
 from typing import TYPE_CHECKING, Any
 
 if TYPE_CHECKING:
+    from rupture.records.arrivals import Arrivals, arrivals_from_times
     from rupture.records.assemble import read_sites
     from rupture.records.events import event_from_origin, read_event
-    from rupture.records.report import ChannelFound, ChannelReport, Correction, SiteSet, SiteVerdict
-    from rupture.records.settings import RecordSettings
+    from rupture.records.report import Calibration, ChannelFound, ChannelReport, Correction, SiteSet, SiteVerdict
+    from rupture.records.settings import CorrectionSettings, RecordSettings
 
 _PLACES = {
-    "read_sites": "assemble",
-    "read_event": "events",
-    "event_from_origin": "events",
+    "Arrivals": "arrivals",
+    "Calibration": "report",
     "ChannelFound": "report",
     "ChannelReport": "report",
     "Correction": "report",
+    "CorrectionSettings": "settings",
+    "RecordSettings": "settings",
     "SiteSet": "report",
     "SiteVerdict": "report",
-    "RecordSettings": "settings",
+    "arrivals_from_times": "arrivals",
+    "event_from_origin": "events",
+    "read_event": "events",
+    "read_sites": "assemble",
 }
 
 __all__ = [
-    "ChannelFound", "ChannelReport", "Correction", "RecordSettings", "SiteSet", "SiteVerdict", "event_from_origin",
-    "read_event", "read_sites",
-]  # fmt: skip
+    "Arrivals",
+    "Calibration",
+    "ChannelFound",
+    "ChannelReport",
+    "Correction",
+    "CorrectionSettings",
+    "RecordSettings",
+    "SiteSet",
+    "SiteVerdict",
+    "arrivals_from_times",
+    "event_from_origin",
+    "read_event",
+    "read_sites",
+]
 
 
 def __getattr__(name: str) -> Any:

@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+from collections.abc import Callable
 from dataclasses import dataclass
 from functools import cache, lru_cache
 from typing import Any
@@ -17,11 +18,35 @@ _METRES_PER_DEGREE = 111_194.93
 
 @dataclass(frozen=True)
 class Arrivals:
-    """First arrivals at one distance: times in s after the origin, horizontal slowness of P in s/m."""
+    """First arrivals at one distance: times in s after the origin, horizontal slownesses in s/m."""
 
     p_s: float
     s_s: float
     p_slowness_s_m: float
+    s_slowness_s_m: float
+
+
+ArrivalModel = Callable[[float, float], Arrivals]
+"""From distance in m and depth in km to first arrivals."""
+
+
+def arrivals_from_times(times: Callable[[float, float], tuple[float, float]]) -> ArrivalModel:
+    """Make an arrival model of a function that gives the times of P and S alone.
+
+    Parameters
+    ----------
+    times
+        From distance in m and depth in km to (P, S) in s after the origin.
+    """
+
+    def model(distance_m: float, depth_km: float) -> Arrivals:
+        step = 500.0
+        near, far = max(distance_m - step, 0.0), distance_m + step
+        (p0, s0), (p1, s1) = times(near, depth_km), times(far, depth_km)
+        p, s = times(distance_m, depth_km)
+        return Arrivals(p, s, (p1 - p0) / (far - near), (s1 - s0) / (far - near))
+
+    return model
 
 
 @cache
@@ -51,7 +76,8 @@ def _cached(hundred_metres: int, tenth_km: int) -> Arrivals:
     if not all(found):
         raise DataError(f"ak135 gives no first P or S at {degrees:.2f} degrees from a depth of {tenth_km / 10:.1f} km")
     p, s = (f[0] for f in found)
-    return Arrivals(float(p.time), float(s.time), float(p.ray_param_sec_degree) / _METRES_PER_DEGREE)
+    slow = (float(a.ray_param_sec_degree) / _METRES_PER_DEGREE for a in (p, s))
+    return Arrivals(float(p.time), float(s.time), *slow)
 
 
 def reading_end_s(distance_m: float) -> float:

@@ -3,7 +3,7 @@
 from __future__ import annotations
 
 import math
-from collections.abc import Sequence
+from collections.abc import Mapping, Sequence
 from dataclasses import replace
 from functools import partial
 from pathlib import Path
@@ -11,16 +11,18 @@ from typing import Any
 
 import numpy as np
 
+from rupture.conventions import KM
 from rupture.errors import DataError
 from rupture.event import Event
 from rupture.geodesy import distance_azimuth
 from rupture.progress import Report
-from rupture.records.arrivals import Arrivals, first_arrivals, reading_end_s
-from rupture.records.building import array_site, single_site
+from rupture.records.arrivals import ArrivalModel, Arrivals, first_arrivals, reading_end_s
+from rupture.records.building import Context, array_site, single_site
+from rupture.records.crosscheck import Placed, amplitude_findings, travel_time_findings, verdict_words
 from rupture.records.metadata import MetadataIndex, quantity_of
 from rupture.records.pairing import Plan, plan_sites
 from rupture.records.read import RawChannel, read_channels, read_inventories, record_files
-from rupture.records.report import ChannelFound, ChannelReport, SiteSet, SiteVerdict, UnusableError
+from rupture.records.report import Calibration, ChannelFound, ChannelReport, SiteSet, SiteVerdict, UnusableError
 from rupture.records.sensors import Grid, Prepared, Sensor, prepare
 from rupture.records.settings import RecordSettings
 from rupture.site import Site
@@ -35,6 +37,8 @@ def read_sites(
     event: Event,
     settings: RecordSettings | None = None,
     report: Report | None = None,
+    calibration: Mapping[str, Calibration] | None = None,
+    arrival_model: ArrivalModel | None = None,
 ) -> SiteSet:
     """Read records and make six-component sites of them.
 
@@ -50,6 +54,10 @@ def read_sites(
         Distances, filters and limits; None for the defaults.
     report
         Called with (done, total) as sites are made.
+    calibration
+        What other earthquakes have said about the sites, by code; from `calibrate`.
+    arrival_model
+        First arrivals in the Earth of the run (see `arrivals_from_times`); None for ak135.
 
     Returns
     -------
@@ -64,13 +72,14 @@ def read_sites(
         Nothing of the event in the records, no usable site, or no rotation anywhere.
     """
     settings = settings or RecordSettings()
+    model = arrival_model or first_arrivals
     metadata = read_inventories(inventory)
     after_s = settings.after_s or _farthest_end(metadata, event)
     raw = read_channels(record_files(records), event, settings.before_s, after_s)
-    sensors, rows, arrivals = _sensors(raw, MetadataIndex(metadata), event, settings)
+    sensors, rows, arrivals = _sensors(raw, MetadataIndex(metadata), event, settings, model)
     plan = plan_sites(sensors, event, arrivals, settings)
     rows += plan.left_out
-    sites, rejected, verdicts = _build(plan, arrivals, event, after_s, settings, rows, report)
+    sites, rejected, verdicts = _build(plan, arrivals, event, after_s, settings, rows, report, calibration or {}, model)
     rows.sort(key=lambda r: (r.site, r.channel))
     verdicts.sort(key=lambda v: v.code)
     result = SiteSet(
@@ -94,7 +103,7 @@ def _farthest_end(metadata: Any, event: Event) -> float:
 
 
 def _sensors(
-    raw: dict[str, RawChannel], index: MetadataIndex, event: Event, settings: RecordSettings
+    raw: dict[str, RawChannel], index: MetadataIndex, event: Event, settings: RecordSettings, model: ArrivalModel
 ) -> tuple[list[Sensor], list[ChannelReport], dict[str, Arrivals]]:
     import obspy
 
@@ -113,7 +122,7 @@ def _sensors(
             distance, _, _ = distance_azimuth(
                 event.longitude_deg, event.latitude_deg, found.longitude_deg, found.latitude_deg
             )
-            times = first_arrivals(float(distance), event.depth_km)
+            times = model(float(distance), event.depth_km)
             _in_time(channel, times)
         except UnusableError as reason:
             rows.append(replace(row, reason=str(reason)))
@@ -156,6 +165,8 @@ def _build(
     settings: RecordSettings,
     rows: list[ChannelReport],
     report: Report | None,
+    calibration: Mapping[str, Calibration],
+    model: ArrivalModel,
 ) -> tuple[list[Site], list[Site], list[SiteVerdict]]:
     chosen = plan.all_sensors()
     if not chosen:
@@ -166,16 +177,42 @@ def _build(
     sites: list[Site] = []
     rejected: list[Site] = []
     verdicts: list[SiteVerdict] = []
+    context = Context(grid, settings, arrivals, event, calibration)
     jobs = [partial(single_site, single) for single in plan.singles] + [partial(array_site, a) for a in plan.arrays]
     for number, job in enumerate(jobs):
-        site, verdict, made = job(grid, settings, arrivals, event)
+        site, verdict, made = job(context)
         rows += made
         verdicts.append(verdict)
         if site is not None:
             (sites if verdict.used else rejected).append(site)
         if report is not None:
             report(number + 1, len(jobs))
+    sites, verdicts = _compared(sites, verdicts, event, settings, model)
     return sites, rejected, verdicts
+
+
+def _compared(
+    sites: list[Site], verdicts: list[SiteVerdict], event: Event, settings: RecordSettings, model: ArrivalModel
+) -> tuple[list[Site], list[SiteVerdict]]:
+    """Hold the sites against each other and put all findings into the verdicts' words."""
+    placed = []
+    for site in sites:
+        distance, _, _ = distance_azimuth(
+            event.longitude_deg, event.latitude_deg, site.longitude_deg, site.latitude_deg
+        )
+        placed.append(Placed(site, float(distance), event.depth_km * KM, model(float(distance), event.depth_km)))
+    timed = travel_time_findings(placed, settings.corrections)
+    sizes = amplitude_findings(placed)
+    added = {
+        site.code: tuple(c for c in (time, size) if c is not None)
+        for (site, time), size in zip(timed, sizes, strict=True)
+    }
+    told = []
+    for verdict in verdicts:
+        corrections = (*verdict.corrections, *added.get(verdict.code, ()))
+        words = [verdict.summary, verdict_words(corrections)] if verdict.used else [verdict.summary]
+        told.append(replace(verdict, corrections=corrections, summary="; ".join(w for w in words if w)))
+    return [site for site, _ in timed], told
 
 
 def _demand_rotation(found: SiteSet) -> None:

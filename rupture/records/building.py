@@ -2,30 +2,62 @@
 
 from __future__ import annotations
 
-from collections.abc import Sequence
-from dataclasses import replace
+from collections.abc import Mapping, Sequence
+from dataclasses import dataclass, replace
 
 import numpy as np
 from numpy.typing import NDArray
 
 from rupture.conventions import KM
 from rupture.event import Event
-from rupture.geodesy import LocalPlane
+from rupture.geodesy import LocalPlane, distance_azimuth
 from rupture.records.array import ArrayGeometry, array_motion, highest_wavenumber, strain_error
 from rupture.records.arrivals import Arrivals
+from rupture.records.clocks import time_shift
+from rupture.records.corrections import examine
 from rupture.records.pairing import ArrayPlan, SinglePlan
-from rupture.records.report import ChannelReport, SiteVerdict, UnusableError
+from rupture.records.relations import Mean, mean_or_none
+from rupture.records.report import Calibration, ChannelReport, Correction, SiteVerdict, UnusableError
 from rupture.records.response import Corners
 from rupture.records.sensors import Grid, Sensor, corners_of, motion_of
 from rupture.records.settings import RecordSettings
 from rupture.site import Site
 
+_LEAST_SHIFT_S = 0.03
+"""Shifts between the instruments of a site below this do not matter below a few Hz."""
+_SURE = 3.0
+_EPICENTRAL_M = 2000.0
+"""A site closer than this to the epicentre has no back-azimuth to be held against."""
+
 Made = tuple[Site | None, SiteVerdict, list[ChannelReport]]
 
 
-def single_site(
-    plan: SinglePlan, grid: Grid, settings: RecordSettings, arrivals: dict[str, Arrivals], event: Event
-) -> Made:
+@dataclass(frozen=True)
+class Context:
+    """What all sites of a run share.
+
+    Attributes
+    ----------
+    grid
+        Common time grid.
+    settings
+        Filters, limits, corrections.
+    arrivals
+        First arrivals by sensor name.
+    event
+        The earthquake.
+    calibration
+        What other earthquakes have said, by site code.
+    """
+
+    grid: Grid
+    settings: RecordSettings
+    arrivals: Mapping[str, Arrivals]
+    event: Event
+    calibration: Mapping[str, Calibration]
+
+
+def single_site(plan: SinglePlan, context: Context) -> Made:
     """Make a site of one translation and one rotation sensor, or of what there is of them.
 
     Returns
@@ -33,6 +65,28 @@ def single_site(
     site, verdict, rows
         The site is None when nothing of it can be used.
     """
+    first = plan.translation or plan.rotation
+    assert first is not None
+    lon, lat, up, _ = first.place
+    site, rows, failed = _records(plan, context, 0.0)
+    notes, coherence = [plan.note, *failed], float("nan")
+    found: tuple[Correction, ...] = ()
+    if site is not None and site.valid[:3].any():
+        arrivals = context.arrivals[first.name]
+        shift, late_s = _clock(site, arrivals, context)
+        if late_s:
+            moved, moved_rows, failed = _records(plan, context, late_s)
+            site, rows = (moved, moved_rows) if moved is not None else (site, rows)
+        site, found, coherence = _examined(site, arrivals, context, shift)
+        refused = ""
+    else:
+        refused = "; ".join(failed) or plan.note or "no usable translation channel"
+    return _verdict(site, plan.code, (lon, lat, up), refused, notes, rows, found, coherence)
+
+
+def _records(plan: SinglePlan, context: Context, late_s: float) -> tuple[Site | None, list[ChannelReport], list[str]]:
+    """Filter both sensors alike, the rotation sensor's clock put right by so many seconds."""
+    grid, settings = context.grid, context.settings
     present = [s for s in (plan.translation, plan.rotation) if s is not None]
     data, valid = np.zeros((6, grid.number)), np.zeros((6, grid.number), bool)
     rows: list[ChannelReport] = []
@@ -55,9 +109,11 @@ def single_site(
             failed.append(f"{sensor.name}: {why}")
             rows += _refused(sensor, plan.code, why)
             continue
-        place = slice(0, 3) if sensor.quantity == "translation" else slice(3, 6)
+        turning = sensor.quantity == "rotation"
+        place = slice(3, 6) if turning else slice(0, 3)
+        late = late_s if turning else 0.0
         try:
-            motion = motion_of(sensor, shared, grid, settings, arrivals[sensor.name])
+            motion = motion_of(sensor, shared, grid, settings, context.arrivals[sensor.name], late_s=late)
         except UnusableError as error:
             failed.append(f"{sensor.name}: {error}")
             rows += _refused(sensor, plan.code, str(error))
@@ -66,9 +122,38 @@ def single_site(
         rows += [replace(r, site=plan.code) for r in motion.reports]
     lon, lat, up, _ = present[0].place
     band = (shared.low, shared.high) if shared is not None else (0.0, 0.0)
-    site = _trimmed(plan.code, lon, lat, up, grid, data, valid, band, 0.0)
-    refused = "" if valid[:3].any() else "; ".join(failed) or plan.note or "no usable translation channel"
-    return _verdict(site, plan.code, (lon, lat, up), refused, [plan.note, *failed], rows)
+    return _trimmed(plan.code, lon, lat, up, grid, data, valid, band, 0.0), rows, failed
+
+
+def _clock(site: Site, arrivals: Arrivals, context: Context) -> tuple[Correction | None, float]:
+    """Return what the records say about the rotation sensor's clock, and by how much to move its records."""
+    known = context.calibration.get(site.code, Calibration()).time_shift_s
+    means = [m for m in (time_shift(site, arrivals), Mean(*known, 1) if known else None) if m is not None]
+    shift = mean_or_none(means)
+    if shift is None:
+        return None, 0.0
+    seen = abs(shift.value) > max(_LEAST_SHIFT_S, _SURE * shift.error)
+    applied = seen and context.settings.corrections.time_shift
+    note = (
+        f"the rotation sensor is {abs(shift.value):.3f} s {'late' if shift.value > 0 else 'early'} against translation"
+    )
+    return Correction("time shift", shift.value, shift.error, "s", seen, applied, note), shift.value if applied else 0.0
+
+
+def _examined(
+    site: Site, arrivals: Arrivals, context: Context, shift: Correction | None
+) -> tuple[Site, tuple[Correction, ...], float]:
+    event = context.event
+    distance, _, back_azimuth = distance_azimuth(
+        event.longitude_deg, event.latitude_deg, site.longitude_deg, site.latitude_deg
+    )
+    if distance < _EPICENTRAL_M:
+        # On the epicentre there is no direction that waves should come from.
+        return site, (shift,) if shift is not None else (), float("nan")
+    known = context.calibration.get(site.code, Calibration())
+    found = examine(site, arrivals, float(back_azimuth) + np.pi, context.settings.corrections, known)
+    corrections = ((shift,) if shift is not None else ()) + found.corrections
+    return found.site, corrections, found.coherence
 
 
 def _refused(sensor: Sensor, code: str, reason: str) -> list[ChannelReport]:
@@ -93,9 +178,7 @@ def _common(corners: Sequence[Corners]) -> Corners:
     return Corners(max(c.stop_low for c in corners), low, high, min(c.stop_high for c in corners))
 
 
-def array_site(
-    plan: ArrayPlan, grid: Grid, settings: RecordSettings, arrivals: dict[str, Arrivals], event: Event
-) -> Made:
+def array_site(plan: ArrayPlan, context: Context) -> Made:
     """Make a site of an array: a plane through its sensors gives motion and rotation at the centre.
 
     Returns
@@ -103,6 +186,7 @@ def array_site(
     site, verdict, rows
         The site is None where the array cannot serve; the verdict then says its range.
     """
+    grid, settings = context.grid, context.settings
     place = _centre(plan.sensors)
     rows: list[ChannelReport] = []
     try:
@@ -126,7 +210,7 @@ def array_site(
                 f"{said}, but its records begin at {corners.low:.3g} Hz: less than an octave is left; use stations closer"
                 " together or lower frequencies"
             )
-        acceleration, velocity, valid = _array_records(plan, corners, grid, settings, arrivals, rows)
+        acceleration, velocity, valid = _array_records(plan, corners, context, rows)
         data, good = array_motion(places, acceleration, velocity, valid, limit, settings.array_error_share)
         if not good[3:].any():
             raise UnusableError(f"{said}; at no time have enough of its sensors a record")
@@ -136,7 +220,11 @@ def array_site(
     band = (corners.low, min(corners.high, highest_hz))
     error = float(strain_error(places[:, :2], np.array([2.0 * np.pi * band[1] / plan.velocity_m_s]))[0])
     site = _trimmed(plan.code, *place, grid, data, good, band, error)
-    return _verdict(site, plan.code, place, "", [said], rows)
+    found: tuple[Correction, ...] = ()
+    coherence = float("nan")
+    if site is not None:
+        site, found, coherence = _examined(site, context.arrivals[plan.sensors[0].name], context, None)
+    return _verdict(site, plan.code, place, "", [said], rows, found, coherence)
 
 
 def _centre(sensors: Sequence[Sensor]) -> tuple[float, float, float]:
@@ -148,18 +236,14 @@ def _centre(sensors: Sequence[Sensor]) -> tuple[float, float, float]:
 
 
 def _array_records(
-    plan: ArrayPlan,
-    corners: Corners,
-    grid: Grid,
-    settings: RecordSettings,
-    arrivals: dict[str, Arrivals],
-    rows: list[ChannelReport],
+    plan: ArrayPlan, corners: Corners, context: Context, rows: list[ChannelReport]
 ) -> tuple[NDArray[np.float64], NDArray[np.float64], NDArray[np.bool_]]:
-    shape = (len(plan.sensors), 3, grid.number)
+    shape = (len(plan.sensors), 3, context.grid.number)
     acceleration, velocity, valid = np.zeros(shape), np.zeros(shape), np.zeros(shape, bool)
     for number, sensor in enumerate(plan.sensors):
-        motion = motion_of(sensor, corners, grid, settings, arrivals[sensor.name])
-        rate = motion_of(sensor, corners, grid, settings, arrivals[sensor.name], order=1)
+        arrivals = context.arrivals[sensor.name]
+        motion = motion_of(sensor, corners, context.grid, context.settings, arrivals)
+        rate = motion_of(sensor, corners, context.grid, context.settings, arrivals, order=1)
         acceleration[number], velocity[number], valid[number] = motion.data, rate.data, motion.valid
         rows += [replace(r, site=plan.code, done=(*r.done, "plane through the array")) for r in motion.reports]
     return acceleration, velocity, valid
@@ -194,6 +278,8 @@ def _verdict(
     reason: str,
     notes: Sequence[str],
     rows: list[ChannelReport],
+    corrections: tuple[Correction, ...] = (),
+    coherence: float = float("nan"),
 ) -> Made:
     kind = site.kind if site is not None else "empty"
     said = [n for n in notes if n]
@@ -201,5 +287,7 @@ def _verdict(
         masked = 1.0 - site.valid[site.present].mean()
         start = f"{kind}, {site.band_hz[0]:.3g} to {site.band_hz[1]:.3g} Hz"
         said = [start, *([f"{100 * masked:.1f} % masked"] if masked > 0.001 else []), *said]
-    verdict = SiteVerdict(code, *place, kind, not reason and site is not None, reason, "; ".join(said))
+    verdict = SiteVerdict(
+        code, *place, kind, not reason and site is not None, reason, "; ".join(said), coherence, corrections
+    )
     return site, verdict, rows

@@ -112,6 +112,31 @@ class Correction:
 
 
 @dataclass(frozen=True)
+class Calibration:
+    """What other earthquakes have said about one site: (value, standard deviation), None where they did not.
+
+    Attributes
+    ----------
+    turn_deg
+        By how much the rotation sensor stands clockwise of the translation sensor.
+    azimuth_deg
+        By how much the first waves come in clockwise of the geodesic.
+    time_shift_s
+        By how much the rotation sensor's clock is later than the translation sensor's.
+    travel_time_s
+        By how much P comes late against the other sites.
+    events
+        Number of events.
+    """
+
+    turn_deg: tuple[float, float] | None = None
+    azimuth_deg: tuple[float, float] | None = None
+    time_shift_s: tuple[float, float] | None = None
+    travel_time_s: tuple[float, float] | None = None
+    events: int = 0
+
+
+@dataclass(frozen=True)
 class SiteVerdict:
     """The verdict on one site.
 

@@ -190,6 +190,7 @@ def motion_of(
     settings: RecordSettings,
     arrivals: Arrivals,
     order: int | None = None,
+    late_s: float = 0.0,
 ) -> Motion:
     """Filter all channels of a sensor and turn them to East, North, Up.
 
@@ -207,6 +208,8 @@ def motion_of(
         First P and S, for the signal-to-noise ratio.
     order
         Wanted order of differentiation; None for acceleration or rotation rate.
+    late_s
+        By how much the sensor's clock is late; taken off all its times.
 
     Raises
     ------
@@ -216,10 +219,11 @@ def motion_of(
     wanted = TARGET_ORDER[sensor.quantity] if order is None else order
     data, valid, reports = [], [], []
     for channel in sensor.channels:
-        values, good, note = _filtered(channel, corners, grid, settings, wanted)
+        values, good, note = _filtered(channel, corners, grid, settings, wanted, late_s)
         data.append(values)
         valid.append(good)
         steps = _steps(channel.instrument, corners, grid, settings, wanted)
+        steps += (f"moved by {-late_s:+.3f} s",) if late_s else ()
         missing = (*channel.report.missing, note) if note else channel.report.missing
         ratio = signal_to_noise(values, good, grid, arrivals)
         reports.append(replace(channel.report, done=steps, missing=missing, snr=ratio))
@@ -232,12 +236,12 @@ def motion_of(
 
 
 def _filtered(
-    channel: Prepared, corners: Corners, grid: Grid, settings: RecordSettings, order: int
+    channel: Prepared, corners: Corners, grid: Grid, settings: RecordSettings, order: int, late_s: float
 ) -> tuple[Array, Bool, str]:
     out = np.zeros(grid.number)
     spans = []
     short = 0
-    for piece in channel.checked.pieces:
+    for piece in (replace(p, start_s=p.start_s - late_s) for p in channel.checked.pieces):
         length = (piece.samples.size - 1) / piece.rate_hz
         if length < 1.0 / corners.low:
             short += 1
@@ -252,7 +256,8 @@ def _filtered(
             settings.water_level_db, times,
         )  # fmt: skip
         spans.append((piece.start_s, piece.end_s, edge_s(length, corners.low)))
-    valid = mask_grid(spans, channel.checked.masked, settings.guard_s, grid.times_s)
+    masked = [(start - late_s, end - late_s) for start, end in channel.checked.masked]
+    valid = mask_grid(spans, masked, settings.guard_s, grid.times_s)
     note = f"{short} pieces shorter than one period of {corners.low:.3g} Hz left out" if short else ""
     return np.where(valid, out, 0.0), valid, note
 

@@ -8,6 +8,34 @@ from rupture.errors import InputError
 
 
 @dataclass(frozen=True)
+class CorrectionSettings:
+    """Which findings about an installation are applied to the records; all are looked for and reported.
+
+    Attributes
+    ----------
+    polarity
+        Reversed and swapped components.
+    turn
+        One sensor turned about the vertical against the other.
+    time_shift
+        The rotation sensor's clock against the translation sensor's.
+    azimuth
+        Both sensors turned, from the direction of the first P against the geodesic.
+    travel_time
+        A site's clock against those of the other sites, from the onsets of P.
+    gain
+        Sensitivities that are off by a factor.
+    """
+
+    polarity: bool = True
+    turn: bool = True
+    time_shift: bool = True
+    azimuth: bool = True
+    travel_time: bool = True
+    gain: bool = True
+
+
+@dataclass(frozen=True)
 class RecordSettings:
     """Settings of `read_sites`; the defaults suit regional and local earthquakes.
 
@@ -49,6 +77,8 @@ class RecordSettings:
     array_velocity_km_s
         Slowest apparent velocity for which that holds. None: 3 km/s up to 1,500 km from the event, beyond it the
         apparent velocity of the first P wave.
+    corrections
+        Which findings about orientation, polarity, clocks and gains are applied.
     need_rotation
         Raise an error when no site at all has rotation; False only to look at the quality table.
     """
@@ -70,6 +100,7 @@ class RecordSettings:
     array_reach_hz: float = 0.5
     array_error_share: float = 0.1
     array_velocity_km_s: float | None = None
+    corrections: CorrectionSettings = CorrectionSettings()
     need_rotation: bool = True
 
     def __post_init__(self) -> None:

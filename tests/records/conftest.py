@@ -202,7 +202,7 @@ def kit():
 
     for name, value in globals().items():
         if name in {
-            "EVENT", "ORIGIN", "Instrument", "Wave", "World", "TRANSLATION", "ROTATION", "gaussian", "axes", "response",
+            "EVENT", "ORIGIN", "Instrument", "Wave", "World", "TRANSLATION", "ROTATION", "gaussian", "axes", "response", "rough_waves",
         }:  # fmt: skip
             setattr(Kit, name, staticmethod(value) if callable(value) and not isinstance(value, type) else value)
     return Kit
@@ -212,3 +212,33 @@ def kit():
 def six():
     """One translation and one rotation sensor of a site."""
     return [TRANSLATION, ROTATION]
+
+
+def rough_waves(seed, back_azimuth=235.0, p_time=10.5, s_time=18.0, scatter=3.0):
+    """P, S and surface waves of an earthquake that lasts some seconds, with scattered directions and slownesses."""
+    rng = np.random.default_rng(seed)
+    waves = []
+
+    def add(number, start, length, velocity, radial, transverse, vertical, amplitude, widen):
+        for i in range(number):
+            late = 0.0 if i == 0 else rng.uniform(0.0, length)
+            spread = 0.3 * scatter if i == 0 else scatter * (1.0 + late / length)
+            waves.append(
+                Wave(
+                    start + late + 0.6,
+                    np.radians(back_azimuth + spread * rng.standard_normal()),
+                    1.0 / (velocity * np.exp(0.05 * rng.standard_normal())),
+                    radial,
+                    transverse * rng.choice([-1, 1]),
+                    vertical,
+                    width=rng.uniform(0.08, 0.5),
+                    amplitude=amplitude * rng.lognormal(0.0, 0.4),
+                )  # fmt: skip
+            )
+
+    sign = rng.choice([-1.0, 1.0])
+    add(14, p_time, 4.0, 6500.0, 0.45, 0.0, 1.0, sign * 1e-3, 1)
+    add(10, s_time, 4.0, 3700.0, 1.0, 0.0, -0.5, 2e-3, 1)
+    add(10, s_time, 4.0, 3700.0, 0.0, 1.0, 0.0, 2e-3, 1)
+    add(8, s_time + 3.0, 12.0, 3100.0, 0.5, 1.0, 0.7, 1.5e-3, 2)
+    return waves
