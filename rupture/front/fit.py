@@ -53,7 +53,7 @@ class FitSettings:
     slowness_spread: float = 0.25
     power_sigma: float = 0.8
     power_share: float = 1.0
-    trust: float = 0.5
+    trust: float = 0.25
     kind_threshold: float = 0.8
     widest_direction_deg: float = 90.0
 
@@ -79,7 +79,7 @@ class RuptureFit:
     reason
         Why it is undetermined; empty otherwise.
     samples
-        SI parameters per kind in the order of `parameters`, shape (draws, 14) each.
+        SI parameters per kind in the order of `parameters`, shape (draws, 15) each.
     parameters
         Names of the columns.
     likelihood
@@ -107,7 +107,7 @@ class RuptureFit:
         return interval(self.column(name, kind), circular=name in ANGLES)
 
     def best(self, kind: str | None = None) -> Array:
-        """Return the draw nearest to the medians of azimuth, speed, length and duration, shape (14,)."""
+        """Return the draw nearest to the medians of azimuth, speed, length and duration, shape (15,)."""
         draws = self.samples[kind or self.likeliest]
         distance = np.zeros(draws.shape[0])
         for k, name in enumerate(self.parameters):
@@ -147,7 +147,9 @@ def prior_for(event: Event, longest_m: float | None = None) -> LinePrior:
     length = subsurface_length_km(event.magnitude) * 1e3
     if longest_m is not None:
         length = min(length, longest_m)
-    return LinePrior(length_m=length, duration_s=max(2.0, 0.75 * length / 2800.0))
+    # Rise times scale with the size of slip patches, about a tenth of the duration (common practice).
+    duration = length / 2800.0
+    return LinePrior(length_m=length, duration_s=max(2.0, 0.75 * duration), rise_s=max(0.5, 0.1 * duration))
 
 
 def fit_rupture(

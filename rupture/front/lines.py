@@ -8,7 +8,7 @@ import numpy as np
 from numpy.typing import NDArray
 
 from rupture.front.kernels import (
-    AZIMUTH, AZIMUTH_2, CODA, CODA_TIME, DURATION, EAST, LENGTH, LENGTH_2, NORTH, P_SHARE, SPEED, SPEED_2, START, STRAY,
+    AZIMUTH, AZIMUTH_2, CODA, CODA_TIME, DURATION, EAST, LENGTH, LENGTH_2, NORTH, P_SHARE, RISE, SPEED, SPEED_2, START, STRAY,
 )  # fmt: skip
 
 Array = NDArray[np.float64]
@@ -16,12 +16,13 @@ Array = NDArray[np.float64]
 PARAMETERS = (
     "east_m", "north_m", "start_time_s", "azimuth_rad", "speed_m_s", "length_m", "second_azimuth_rad", "second_speed_m_s",
     "second_length_m", "duration_s", "coda_ratio", "coda_time_s", "stray_share", "p_factor",
+    "rise_time_s",
 )  # fmt: skip
 
 KINDS = ("stationary", "unilateral", "bilateral")
 
-_LOG = (SPEED, LENGTH, SPEED_2, DURATION, CODA, CODA_TIME, STRAY, P_SHARE)
-_COMMON = (EAST, NORTH, START, CODA, CODA_TIME, STRAY, P_SHARE)
+_LOG = (SPEED, LENGTH, SPEED_2, DURATION, CODA, CODA_TIME, STRAY, P_SHARE, RISE)
+_COMMON = (EAST, NORTH, START, CODA, CODA_TIME, STRAY, P_SHARE, RISE)
 FREE = {
     "stationary": (*_COMMON, DURATION),
     "unilateral": (*_COMMON, AZIMUTH, SPEED, LENGTH),
@@ -45,6 +46,8 @@ class LinePrior:
         Of the hypocentre, in m, east and north each.
     start_s
         Of the start of radiation about the origin time, in s.
+    rise_s
+        Median rise time: how long a place radiates after the front has reached it; its log-width is 0.6.
     speed_m_s
         Range of rupture speeds, uniform in the logarithm: published ones run from under 1 to about 6 km/s.
     length_m, length_log_width
@@ -62,6 +65,7 @@ class LinePrior:
 
     place_m: float = 3e3
     start_s: float = 0.7
+    rise_s: float = 2.0
     speed_m_s: tuple[float, float] = (700.0, 7000.0)
     length_m: float = 50e3
     length_log_width: float = 0.7
@@ -99,6 +103,7 @@ class LinePrior:
             CODA_TIME: (np.log(10.0), 0.5),
             STRAY: (np.log(0.1), 0.6),
             P_SHARE: (0.0, 0.7),
+            RISE: (float(np.log(self.rise_s)), 0.6),
         }[parameter]
 
     def log_density(self, kind: str, draws: Array) -> Array:
@@ -126,7 +131,7 @@ class LinePrior:
 
 
 def to_parameters(kind: str, draws: Array) -> Array:
-    """Turn the sampler's coordinates into SI parameters, shape (count, 14), in the order of `PARAMETERS`."""
+    """Turn the sampler's coordinates into SI parameters, shape (count, 15), in the order of `PARAMETERS`."""
     out = np.zeros((draws.shape[0], len(PARAMETERS)))
     for column, parameter in enumerate(FREE[kind]):
         out[:, parameter] = np.exp(draws[:, column]) if parameter in _LOG else draws[:, column]

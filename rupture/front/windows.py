@@ -22,11 +22,6 @@ LEAST_ENERGY = 0.02
 """Waves weaker than this share of the strongest at a distance are left out: no window shows them."""
 
 
-CODA_ISOTROPIC, CODA_SPREAD_RAD = 0.4, np.radians(30.0)
-"""Scattered waves: a share from anywhere, the rest about the place that radiated them with this standard deviation. Multiple
-forward scattering keeps early coda near the direct path (common practice); the values are broad on purpose."""
-
-
 @dataclass(frozen=True)
 class Windows:
     """What `rupture.front.kernels.log_likelihoods` needs, under the names that it uses; windows of a site are contiguous."""
@@ -34,7 +29,6 @@ class Windows:
     code: tuple[str, ...]
     first: NDArray[np.int64]
     ratio: NDArray[np.float32]
-    haze: NDArray[np.float32]
     angles: int
     nodes: int
     log_power: Array
@@ -51,7 +45,7 @@ class Windows:
     def log_likelihood(self, parameters: Array) -> Array:
         """Return log-likelihoods per site, shape (count, sites)."""
         return log_likelihoods(
-            np.ascontiguousarray(parameters), self.first, self.ratio, self.haze, self.angles, self.nodes, self.log_power, self.window_time, self.window_s,
+            np.ascontiguousarray(parameters), self.first, self.ratio, self.angles, self.nodes, self.log_power, self.window_time, self.window_s,
             self.share, self.places, self.tables, self.primary, self.grid, self.power_sigma, self.power_share,
         )  # fmt: skip
 
@@ -103,7 +97,7 @@ def lay_out(
     turn = back - np.arctan2(-east, -north)
     turn = np.where(np.hypot(east, north) > 1.0, turn, 0.0)
     nodes = np.log(directions[0].slowness_s_m)
-    ratios, hazes, powers, times, first = [], [], [], [], [0]
+    ratios, powers, times, first = [], [], [], [0]
     share, length = [], []
     for k, d in enumerate(directions):
         stride = max(1, round(hop_s / float(d.time_s[1] - d.time_s[0])))
@@ -112,7 +106,6 @@ def lay_out(
         masked = np.isnan(d.coherent).all(axis=0)[chosen]
         table = np.exp(phase_table(d, slowness_spread)[:, :, chosen])
         ratios.append(np.ascontiguousarray(table, np.float32).ravel())
-        hazes.append(_haze(d, chosen))
         power = d.power[chosen]
         positive = power > 0
         with np.errstate(divide="ignore"):
@@ -125,19 +118,8 @@ def lay_out(
         raise DataError("no site has a usable window between its P arrival and the end of the rupture")
     places = np.stack([east, north, turn], axis=1)
     return Windows(
-        tuple(d.code for d in directions), np.array(first), np.concatenate(ratios), np.concatenate(hazes),
+        tuple(d.code for d in directions), np.array(first), np.concatenate(ratios),
         directions[0].back_azimuth_rad.size, nodes.size, np.concatenate(powers),
         np.concatenate(times), np.array(length), np.array(share), places, tables, primary,
         (STEP_M, float(nodes[0]), float(nodes[1] - nodes[0])), power_sigma, power_share,
     )  # fmt: skip
-
-
-def _haze(direction: SiteDirection, chosen: NDArray[np.int64]) -> NDArray[np.float32]:
-    """Ratios for scattered waves, (A, windows) end to end: any slowness, blurred over back-azimuth."""
-    ratio = np.exp(direction.log_ratio[:, :, chosen]).mean(axis=1)
-    count = ratio.shape[0]
-    order = np.minimum(np.arange(count), count - np.arange(count))
-    damping = np.exp(-0.5 * (order * CODA_SPREAD_RAD) ** 2)[:, None]
-    blurred = np.fft.ifft(np.fft.fft(ratio, axis=0) * damping, axis=0).real
-    mixed = CODA_ISOTROPIC + (1.0 - CODA_ISOTROPIC) * np.maximum(blurred, 0.0)
-    return np.ascontiguousarray(mixed, np.float32).ravel()
