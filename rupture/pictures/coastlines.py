@@ -32,15 +32,26 @@ class World:
     polygons
         Rings of each piece of land, outer one first, then its lakes: arc numbers in walking order, `~n` is arc n
         backwards. Land lies on the right hand.
-    borders
-        Numbers of the arcs that divide two countries.
+    coast, borders
+        Numbers of the arcs that bound land, and of those that divide two countries.
+    false_cut
+        Shape (points,): True where the line from a point to the next only closes a polygon cut at 180 degrees.
+    unit
+        The points as unit vectors on the sphere, shape (points, 3).
+    cap_centre, cap_radius_rad
+        For each polygon a circle on the sphere around it: unit vector, shape (polygons, 3), and radius.
     """
 
     longitude_deg: NDArray[np.float64]
     latitude_deg: NDArray[np.float64]
     arc_start: NDArray[np.int64]
     polygons: tuple[tuple[NDArray[np.int32], ...], ...]
+    coast: NDArray[np.int64]
     borders: NDArray[np.int32]
+    false_cut: NDArray[np.bool_]
+    unit: NDArray[np.float64]
+    cap_centre: NDArray[np.float64]
+    cap_radius_rad: NDArray[np.float64]
 
 
 @dataclass(frozen=True)
@@ -74,11 +85,38 @@ def load_world(scale: str) -> World:
         before = np.concatenate([np.zeros((2, 1), np.int64), total], axis=1)[:, start[:-1]]
         grid = total - np.repeat(before, packed["arc_size"], axis=1)
         lon, lat = grid * packed["scale"][:, None] + packed["offset"][:, None]
-        rings = np.split(packed["ring_arc"], np.cumsum(packed["ring_size"])[:-1])
+        packed_rings = packed["ring_arc"]
+        rings = np.split(packed_rings, np.cumsum(packed["ring_size"])[:-1])
         ends = np.cumsum(packed["polygon_size"])
         borders = packed["border_arc"]
     polygons = tuple(tuple(rings[a:b]) for a, b in zip([0, *ends[:-1]], ends, strict=True))
-    return World(lon, lat, start, polygons, borders)
+    coast = np.unique(np.where(packed_rings < 0, ~packed_rings, packed_rings)).astype(np.int64)
+    at_cut = np.abs(np.abs(lon) - 180.0) < 0.02
+    unit = _unit_vector(lon, lat)
+    centres, radii = [], []
+    for outer, *_ in polygons:
+        corners = unit[np.concatenate([np.arange(start[_number(a)], start[_number(a) + 1]) for a in outer])]
+        centre = corners.mean(axis=0)
+        centre /= np.linalg.norm(centre)
+        centres.append(centre)
+        radii.append(np.arccos(np.clip((corners @ centre).min(), -1, 1)))
+    return World(
+        lon,
+        lat,
+        start,
+        polygons,
+        coast,
+        borders,
+        at_cut & np.roll(at_cut, -1),
+        unit,
+        np.array(centres),
+        np.array(radii),
+    )
+
+
+def _unit_vector(longitude_deg: NDArray[np.float64], latitude_deg: NDArray[np.float64]) -> NDArray[np.float64]:
+    lon, lat = np.radians(longitude_deg), np.radians(latitude_deg)
+    return np.stack([np.cos(lat) * np.cos(lon), np.cos(lat) * np.sin(lon), np.sin(lat)], axis=-1)
 
 
 def choose_scale(radius_m: float) -> str:
@@ -116,36 +154,33 @@ def _local_land(longitude_deg: float, latitude_deg: float, radius_m: float, scal
     plane = LocalPlane(longitude_deg, latitude_deg)
     world = load_world(scale)
     limit = min(_CLAMP * radius_m, _FARTHEST_RAD * _EARTH_RADIUS_M)
-    distance, azimuth = _spherical(plane, world.longitude_deg, world.latitude_deg)
-    near = distance < limit
-    east, north = limit * np.sin(azimuth), limit * np.cos(azimuth)
-    east[near], north[near] = plane.to_plane(world.longitude_deg[near], world.latitude_deg[near])
-    points = np.stack([east, north], axis=1)
+    frame = _local_frame(longitude_deg, latitude_deg)
+    # On the sphere: enough to tell near from far.
+    near = world.unit @ frame[2] > np.cos(limit / _EARTH_RADIUS_M)
+    points = np.empty((near.size, 2))
+    points[near] = np.stack(plane.to_plane(world.longitude_deg[near], world.latitude_deg[near]), axis=-1)
 
     near_count = np.concatenate([[0], np.cumsum(near)])[world.arc_start]
     has_near = np.diff(near_count) > 0
     land: list[NDArray[np.float64]] = []
-    for polygon in world.polygons:
-        shapes = [_ring_on_plane(world, ring, points, azimuth, near, has_near, limit) for ring in polygon]
+    # A polygon without a point nearby matters only when it may wind around the map: when the circle around it holds
+    # the centre of the map or the far side of the Earth.
+    away = np.arccos(np.clip(world.cap_centre @ frame[2], -1, 1))
+    around = np.minimum(away, np.pi - away) <= world.cap_radius_rad
+    for polygon, winds in zip(world.polygons, around, strict=True):
+        if not winds and not any(has_near[_number(arc)] for ring in polygon for arc in ring):
+            continue
+        shapes = [_ring_on_plane(world, ring, points, near, frame, limit) for ring in polygon]
         land += [shape for shape in shapes if shape is not None]
         # The outer ring has the land on its right unless the far side of the Earth is within it, and so have lakes.
         small = 1e-3 * np.pi * limit**2
         outer, *lakes = (0.0 if shape is None else _signed_area(shape) for shape in shapes)
         if (outer > small) != any(lake < -small for lake in lakes):
             land.append(_circle(2 * limit))
-    false_cut = _along_date_line(world)
-    coast = [
-        piece
-        for number in np.unique([_number(arc) for polygon in world.polygons for ring in polygon for arc in ring])
-        if has_near[number]
-        for piece in _pieces(world, number, points, near, false_cut)
-    ]
-    borders = [
-        piece
-        for number in world.borders
-        if has_near[number]
-        for piece in _pieces(world, int(number), points, near, false_cut)
-    ]
+    coast, borders = (
+        [piece for number in numbers if has_near[number] for piece in _pieces(world, int(number), points, near)]
+        for numbers in (world.coast, world.borders)
+    )
     return LocalLand(land, coast, borders, scale)
 
 
@@ -153,20 +188,23 @@ def _ring_on_plane(
     world: World,
     ring: NDArray[np.int32],
     points: NDArray[np.float64],
-    azimuth: NDArray[np.float64],
     near: NDArray[np.bool_],
-    has_near: NDArray[np.bool_],
+    frame: NDArray[np.float64],
     limit: float,
 ) -> NDArray[np.float64] | None:
     """Return a ring in plane coordinates, or None where nothing of it can be seen."""
     index = np.concatenate([_walk(world, int(arc)) for arc in ring])
-    if not any(has_near[_number(arc)] for arc in ring):
+    close = near[index]
+    if close.all():
+        return points[index] if len(index) > 2 else None
+    east, north, _ = frame @ world.unit[index].T
+    azimuth = np.arctan2(east, north)
+    if not close.any():
         # Wholly outside, it matters only when it winds around the map: all land, or all sea.
-        turn = np.diff(azimuth[index], append=azimuth[index[0]])
+        turn = np.diff(azimuth, append=azimuth[0])
         if abs(_smallest_turn(turn).sum()) < np.pi:
             return None
-    shape = _with_arcs(points[index], azimuth[index], near[index], limit)
-    return shape if len(shape) > 2 else None
+    return _with_arcs(points[index], azimuth, close, limit)
 
 
 def _number(arc: int) -> int:
@@ -183,43 +221,31 @@ def _walk(world: World, arc: int) -> NDArray[np.int64]:
     return index if arc >= 0 else index[::-1]
 
 
-def _spherical(
-    plane: LocalPlane, longitude_deg: NDArray[np.float64], latitude_deg: NDArray[np.float64]
-) -> tuple[NDArray[np.float64], NDArray[np.float64]]:
-    """Distance in m and azimuth in rad from the centre, on the sphere: enough to tell near from far."""
-    delta = np.radians(longitude_deg - plane.longitude_deg)
-    lat, lat0 = np.radians(latitude_deg), np.radians(plane.latitude_deg)
-    east = np.cos(lat) * np.sin(delta)
-    north = np.cos(lat0) * np.sin(lat) - np.sin(lat0) * np.cos(lat) * np.cos(delta)
-    up = np.sin(lat0) * np.sin(lat) + np.cos(lat0) * np.cos(lat) * np.cos(delta)
-    return np.arctan2(np.hypot(east, north), up) * _EARTH_RADIUS_M, np.arctan2(east, north)
+def _local_frame(longitude_deg: float, latitude_deg: float) -> NDArray[np.float64]:
+    """Return unit vectors east, north and up at a place, shape (3, 3)."""
+    lon, lat = np.radians([longitude_deg, latitude_deg])
+    east = [-np.sin(lon), np.cos(lon), 0.0]
+    north = [-np.sin(lat) * np.cos(lon), -np.sin(lat) * np.sin(lon), np.cos(lat)]
+    return np.array([east, north, [np.cos(lat) * np.cos(lon), np.cos(lat) * np.sin(lon), np.sin(lat)]])
 
 
 def _with_arcs(
     points: NDArray[np.float64], azimuth: NDArray[np.float64], near: NDArray[np.bool_], limit: float
 ) -> NDArray[np.float64]:
-    """Drop far points that follow far points closely, and walk the circle where two far points lie wide apart."""
-    step = np.radians(15.0)
-    keep: list[NDArray[np.float64]] = []
-    last_far: float | None = None
-    far_at = np.flatnonzero(~near)
-    position = 0
-    for at in far_at.tolist():
-        if at > position:
-            keep.append(points[position:at])
-            last_far = None
+    """Move far points onto the circle: few of them where they lie closely, arcs between those that lie wide apart."""
+    step = np.radians(5.0)
+    sector = np.floor(azimuth / step)
+    keep = near | np.roll(near, 1) | np.roll(near, -1) | (sector != np.roll(sector, 1))
+    points, azimuth, near = points[keep], azimuth[keep], near[keep]
+    points[~near] = limit * np.stack([np.sin(azimuth), np.cos(azimuth)], axis=1)[~near]
+    turn = _smallest_turn(np.diff(azimuth))
+    wide = np.flatnonzero(~near[:-1] & ~near[1:] & (np.abs(turn) > 3 * step))
+    pieces, position = [], 0
+    for at in wide.tolist():
+        between = azimuth[at] + turn[at] * np.linspace(0, 1, int(abs(turn[at]) / step) + 2)[1:-1]
+        pieces += [points[position : at + 1], limit * np.stack([np.sin(between), np.cos(between)], axis=1)]
         position = at + 1
-        turn = 0.0 if last_far is None else float(_smallest_turn(azimuth[at] - last_far))
-        ends = at + 1 >= len(near) or near[at + 1]
-        if last_far is not None and abs(turn) < step and not ends:
-            continue
-        if last_far is not None and abs(turn) > step:
-            between = last_far + turn * np.linspace(0, 1, int(abs(turn) / step) + 2)[1:-1]
-            keep.append(limit * np.stack([np.sin(between), np.cos(between)], axis=1))
-        keep.append(points[at : at + 1])
-        last_far = azimuth[at]
-    keep.append(points[position:])
-    return np.concatenate(keep)
+    return np.concatenate([*pieces, points[position:]])
 
 
 def _signed_area(ring: NDArray[np.float64]) -> float:
@@ -233,18 +259,12 @@ def _circle(radius_m: float) -> NDArray[np.float64]:
     return radius_m * np.stack([np.sin(angle), np.cos(angle)], axis=1)
 
 
-def _along_date_line(world: World) -> NDArray[np.bool_]:
-    """Shape (points,): True where the line from this point to the next only closes a polygon cut at 180 degrees."""
-    at_cut = np.abs(np.abs(world.longitude_deg) - 180.0) < 0.02
-    return at_cut & np.roll(at_cut, -1)
-
-
 def _pieces(
-    world: World, number: int, points: NDArray[np.float64], near: NDArray[np.bool_], false_cut: NDArray[np.bool_]
+    world: World, number: int, points: NDArray[np.float64], near: NDArray[np.bool_]
 ) -> list[NDArray[np.float64]]:
     """Split an arc where it leaves the neighbourhood or follows a false line."""
     index = _walk(world, number)
-    drawn = near[index[:-1]] & near[index[1:]] & ~false_cut[index[:-1]]
+    drawn = near[index[:-1]] & near[index[1:]] & ~world.false_cut[index[:-1]]
     if not drawn.any():
         return []
     edge = np.diff(np.concatenate([[False], drawn, [False]]).astype(np.int8))
