@@ -1,6 +1,6 @@
 """Side by side with pyprop8 in one run: seconds and misfit for 240 receivers, six components; and how our cost grows.
 
-Run as `python benchmarks/wavefield_speed.py [PICTURE.png]`; takes two to three minutes, nearly all of it pyprop8's.
+Run as `python docs/wavefield_speed.py [PICTURE.png]`; takes two to three minutes, nearly all of it pyprop8's.
 Both programs get the same model, band, window, wavenumber step and largest wavenumber, and both cores.
 """
 

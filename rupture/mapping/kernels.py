@@ -7,8 +7,8 @@ import numpy as np
 
 
 @numba.njit(parallel=True, cache=True)
-def add_shifted_rows(out, table, row, shift):  # pragma: no cover - compiled
-    """Add table[row[c], f + shift[c]] to out[c, f], linear in time, nothing beyond the table's ends.
+def add_shifted_rows(out, table, row, shift, stride):  # pragma: no cover - compiled
+    """Add table[row[c], f * stride + shift[c]] to out[c, f], linear in time, nothing beyond the table's ends.
 
     Each thread owns its cells, so that the sum does not depend on how many there are.
 
@@ -22,6 +22,8 @@ def add_shifted_rows(out, table, row, shift):  # pragma: no cover - compiled
         Row of each cell, int64, shape (C,); negative: nothing is added.
     shift
         Position in the table of frame 0, in samples, shape (C,).
+    stride
+        Samples of the table from frame to frame.
     """
     cells, frames = out.shape
     length = table.shape[1]
@@ -32,7 +34,8 @@ def add_shifted_rows(out, table, row, shift):  # pragma: no cover - compiled
         whole = int(np.floor(shift[c]))
         part = np.float32(shift[c] - whole)
         rest = np.float32(1.0) - part
-        first = max(0, -whole)
-        last = min(frames, length - 1 - whole)
+        first = max(0, -(whole // stride))
+        last = min(frames, (length - 2 - whole) // stride + 1)
         for f in range(first, last):
-            out[c, f] += rest * table[r, f + whole] + part * table[r, f + whole + 1]
+            at = f * stride + whole
+            out[c, f] += rest * table[r, at] + part * table[r, at + 1]

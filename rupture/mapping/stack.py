@@ -116,7 +116,7 @@ def stack_rays(
     hypocentre_s_time
         Arrival of S from the hypocentre at each site, s after the origin time.
     source_time_s
-        Frames at the directions' hop, shape (F,).
+        Frames, equally spaced by a whole multiple of the directions' hop, shape (F,).
     settings
         How.
     progress
@@ -128,19 +128,28 @@ def stack_rays(
     heard = np.zeros((cells, frames), np.float32)
     for k, direction in enumerate(directions):
         hop = float(direction.time_s[1] - direction.time_s[0])
+        stride = _stride(source_time_s, hop)
         for phase in settings.phases:
             until = hypocentre_s_time[k] - 0.5 * float(direction.window_s.min()) if phase == "P" else np.inf
             table = phase_table(direction, settings.slowness_spread, to_s=until)
             rows = table_rows(direction, geometry.back_azimuth_rad[k], geometry.slowness_s_m[phase][k])
             shift = (source_time_s[0] + geometry.travel_time_s[phase][k] - direction.time_s[0]) / hop
-            add_shifted_rows(total, table.reshape(-1, table.shape[-1]), rows, shift)
-        _add_power(level, heard, direction, geometry, k, source_time_s[0], hop, settings.phases)
+            add_shifted_rows(total, table.reshape(-1, table.shape[-1]), rows, shift, stride)
+        _add_power(level, heard, direction, geometry, k, source_time_s[0], hop, stride, settings.phases)
         if progress is not None:
             progress(k + 1, len(directions))
     probability, nothing = location_probability(total, settings.source_share)
     with np.errstate(invalid="ignore"):
         power = np.where(heard > 0, np.exp(level / np.maximum(heard, 1.0)), 0.0)
     return Stack(total, probability, nothing, (probability * power).astype(np.float32), np.asarray(source_time_s, float))
+
+
+def _stride(source_time_s: Array, hop_s: float) -> int:
+    step = float(source_time_s[1] - source_time_s[0])
+    stride = round(step / hop_s)
+    if stride < 1 or abs(stride * hop_s - step) > 1e-6:
+        raise InputError(f"frames every {step:g} s do not fit directions every {hop_s:g} s; a whole multiple is needed")
+    return stride
 
 
 def location_probability(log_ratio: Table, source_share: float) -> tuple[Table, Array]:
@@ -154,7 +163,7 @@ def location_probability(log_ratio: Table, source_share: float) -> tuple[Table, 
 
 
 def _add_power(
-    level: Table, heard: Table, direction: SiteDirection, geometry: Geometry, site: int, start_s: float, hop: float, phases: tuple[str, ...]
+    level: Table, heard: Table, direction: SiteDirection, geometry: Geometry, site: int, start_s: float, hop: float, stride: int, phases: tuple[str, ...]
 ) -> None:
     """Add the log of spreading-corrected power; every site counts relative to its own mean, so that amplification drops out."""
     phase = "S" if "S" in phases else "P"
@@ -169,7 +178,7 @@ def _add_power(
     shift = (start_s + geometry.travel_time_s[phase][site] - direction.time_s[0]) / hop
     spreading = np.log(np.maximum(geometry.distance_m[site], 1e3) ** 2)
     heard_before = heard.copy()
-    add_shifted_rows(level, table, np.zeros(cells, np.int64), shift)
-    add_shifted_rows(heard, table, np.ones(cells, np.int64), shift)
+    add_shifted_rows(level, table, np.zeros(cells, np.int64), shift, stride)
+    add_shifted_rows(heard, table, np.ones(cells, np.int64), shift, stride)
     # Body-wave energy falls with the square of distance; relative to the mean over cells only the pattern counts.
     level += (spreading - spreading.mean()).astype(np.float32)[:, None] * (heard - heard_before)
