@@ -31,6 +31,10 @@ _SPIKE_RATIO = 15.0
 """A sample off its neighbours' median by this many typical second differences is not ground motion (own choice)."""
 
 
+_BLOCK_S, _STEP_RATIO, _DRIFT_RATIO = 5.0, 10.0, 30.0
+"""Blocks for the resting level; a step or drift worth a note, over the motion beside it (own choice)."""
+
+
 @dataclass(frozen=True)
 class Checked:
     """Samples that are fit for filtering and the stretches that are not to be believed.
@@ -109,12 +113,45 @@ def check_channel(raw: RawChannel, settings: RecordSettings) -> Checked:
         notes.append(f"{flat_s:.1f} s without any change of the signal masked")
     if spikes:
         notes.append(f"{spikes} spikes masked")
+    notes += baseline_notes(raw.segments)
     holes = [(a.end_s, b.start_s) for a, b in itertools.pairwise(mended)]
     gap_s = sum(b - a - 1.0 / s.rate_hz for (a, b), s in zip(holes, mended, strict=False))
     if holes:
         notes.append(f"{len(holes)} gaps of {gap_s:.2f} s in all masked")
     pieces, bridged = _bridge(mended, settings.bridge_s)
     return Checked(tuple(pieces), tuple(sorted(masked + bridged)), share, tuple(notes), len(holes), gap_s)
+
+
+def baseline_notes(segments: Sequence[Segment]) -> list[str]:
+    """Return notes on steps and drift of the resting level; the pre-filter takes both away, the cause remains.
+
+    Medians of blocks of 5 s are compared: a step lasts, and is large against the motion on both sides of it.
+    """
+    said = []
+    for segment in segments:
+        block = round(_BLOCK_S * segment.rate_hz)
+        count = segment.samples.size // block
+        if count < 8:
+            continue
+        blocks = segment.samples[: count * block].reshape(count, block)
+        level = np.median(blocks, axis=1)
+        motion = np.median(np.abs(blocks - level[:, None]), axis=1)
+        for k in range(3, count - 3):
+            before, after = np.median(level[k - 3 : k]), np.median(level[k + 1 : k + 4])
+            around = max(np.ptp(level[k - 3 : k]), np.ptp(level[k + 1 : k + 4]), motion[k - 3 : k + 4].max())
+            jump = abs(after - before)
+            if jump > _STEP_RATIO * around and jump > 0:
+                time = segment.start_s + k * block / segment.rate_hz
+                said.append(
+                    f"the resting level steps by {after - before:.3g} counts about {time:.0f} s after the origin"
+                )
+                break
+        quiet = float(np.median(motion))
+        slope = np.polyfit(np.arange(count), level, 1)[0]
+        straight = np.abs(level - np.polyval(np.polyfit(np.arange(count), level, 1), np.arange(count)))
+        if abs(slope) * count > _DRIFT_RATIO * max(quiet, float(np.median(straight))) and not said:
+            said.append(f"the resting level drifts by {slope * count:.3g} counts over {count * _BLOCK_S:.0f} s")
+    return said
 
 
 def _span(segment: Segment, first: int, end: int) -> Span:

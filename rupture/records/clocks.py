@@ -19,6 +19,10 @@ _FINER = 8
 _LEAST_ERROR_S = 0.005
 _PICK_ERROR_S = 0.1
 """A pick on records through a zero-phase filter is no better than this (own choice)."""
+_NOISE_S, _AFTER_S = 4.0, 0.3
+"""Noise before the search, and record kept after the first loud sample."""
+_LOUD = 8.0
+"""A sample so many times the noise's standard deviation is no noise."""
 _PICK_RATIO = 4.0
 """Amplitude after the onset over that before it, for a pick to count."""
 
@@ -129,8 +133,9 @@ def _moving_power(rows: Array, window: Array, lags: NDArray[np.int_]) -> Array:
 def pick_onset(site: Site, expected_s: float, reach_s: float) -> Mean | None:
     """Return the onset of P on the vertical near an expected time.
 
-    The onset is where the record before and the record after it, each taken as white noise of its own power,
-    explain the whole best (Akaike information; Maeda 1985).
+    The first sample far above the noise brackets the onset. It is put where the record before and the record
+    after it, each taken as white noise of its own power, explain the bracket best (Akaike information;
+    Maeda 1985).
 
     Parameters
     ----------
@@ -147,22 +152,32 @@ def pick_onset(site: Site, expected_s: float, reach_s: float) -> Mean | None:
         Time and standard deviation; None where nothing stands out.
     """
     times = site.times_s
-    part = (times >= expected_s - reach_s - 5.0) & (times <= expected_s + reach_s)
+    part = (times >= expected_s - reach_s - _NOISE_S) & (times <= expected_s + reach_s + _AFTER_S)
     low = max(site.band_hz[0], min(0.5, 0.25 * site.band_hz[1]))
     # A causal filter: what comes before the onset stays before it.
     x = sosfilt(butter(2, low, "highpass", fs=1.0 / site.step_s, output="sos"), site.data[ACC_Z])[part]
-    if x.size < 50 or not site.valid[ACC_Z, part].all():
+    quiet = round(_NOISE_S / site.step_s)
+    if x.size < 2 * quiet or not site.valid[ACC_Z, part].all():
         return None
+    noise = float(np.sqrt(np.mean(x[:quiet] ** 2)))
+    loud = np.flatnonzero(np.abs(x[quiet:]) > _LOUD * noise)
+    if not loud.size:
+        return None
+    first = quiet + int(loud[0])
+    bracket = slice(max(first - quiet, 0), first + max(round(_AFTER_S / site.step_s), 4))
+    onset = bracket.start + _split(x[bracket])
+    after = float(np.sqrt(np.mean(x[onset + 1 : onset + 1 + max(round(1.0 / site.step_s), 4)] ** 2)))
+    if not after > _PICK_RATIO * noise:
+        return None
+    return Mean(float(times[part][onset]), _PICK_ERROR_S * (1.0 + 10.0 * noise / after), 1)
+
+
+def _split(x: Array) -> int:
+    """Return where a record falls best into two stretches of white noise."""
     power = np.cumsum(x**2)
     k = np.arange(1, x.size)
     tiny = 1e-12 * power[-1] / x.size + 1e-300
     first = k * np.log(power[:-1] / k + tiny)
     second = (x.size - k) * np.log((power[-1] - power[:-1]) / (x.size - k) + tiny)
-    inside = slice(10, x.size - 10)
-    best = int((first + second)[inside].argmin()) + 10
-    second_s = max(round(1.0 / site.step_s), 4)
-    before = np.sqrt(np.mean(x[max(best - 3 * second_s, 0) : best] ** 2))
-    after = np.sqrt(np.mean(x[best + 1 : best + 1 + second_s] ** 2))
-    if not after > _PICK_RATIO * before:
-        return None
-    return Mean(float(times[part][best]), _PICK_ERROR_S * (1.0 + 10.0 * float(before / after)), 1)
+    inside = slice(3, x.size - 3)
+    return int((first + second)[inside].argmin()) + 4

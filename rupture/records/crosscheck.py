@@ -22,7 +22,8 @@ _FEWEST = 4
 _LEAST_TIME_S = 0.4
 _STATION_TERM = 0.02
 """Share of the travel time by which the reference Earth may be off from site to site (common practice: 1-3 %)."""
-_SURE = 3.0
+_SEEN, _SURE = 2.5, 3.0
+"""Standard deviations beyond which a deviation is noticed, and beyond which it is applied."""
 _DECAY = 1.3
 """Body-wave amplitudes fall off about like distance to this power in the first hundreds of km (common practice)."""
 _LEAST_SIZE = 0.75
@@ -66,14 +67,15 @@ def travel_time_findings(sites: Sequence[Placed], apply: CorrectionSettings) -> 
 
 
 def _judged(site: Site, off: float, error: float, apply: CorrectionSettings) -> tuple[Site, Correction]:
-    seen = abs(off) > max(_LEAST_TIME_S, _SURE * error)
+    seen = abs(off) > max(_LEAST_TIME_S, _SEEN * error)
     note = f"P comes {abs(off):.2f} s {'late' if off > 0 else 'early'} against the other sites"
-    applied = seen and apply.travel_time
+    applied = seen and apply.travel_time and abs(off) > _SURE * error
     if applied:
         # Whole samples, so that all sites stay on one grid; the rest is far below the error.
         site = replace(site, start_s=site.start_s - round(off / site.step_s) * site.step_s)
     finding = Correction("travel time", off, error, "s", seen, applied, note)
-    return replace(site, time_error_s=float(np.hypot(site.time_error_s, error))), finding
+    left = error if applied or not seen else float(np.hypot(error, 0.5 * off))
+    return replace(site, time_error_s=float(np.hypot(site.time_error_s, left))), finding
 
 
 def common_part(travel_s: Array, residual_s: Array) -> tuple[np.poly1d, float] | None:

@@ -13,6 +13,7 @@ from numpy.typing import NDArray
 
 from rupture.errors import DataError, InputError, RecordWarning
 from rupture.event import Event
+from rupture.records.headers import HeaderNotes, read_headers
 
 _NOT_RECORDS = {".xml", ".json", ".toml", ".txt", ".md", ".csv", ".pdf", ".png", ".html", ".nc", ".gz", ".zip", ".py"}
 
@@ -157,6 +158,7 @@ def read_channels(
     origin = obspy.UTCDateTime(event.origin_time)
     traces: dict[str, list[Any]] = {}
     notes: dict[str, list[str]] = {}
+    timing: dict[str, float] = {}
     spans, unread = [], []
     for path, named in files:
         try:
@@ -166,6 +168,10 @@ def read_channels(
                 raise
             unread.append(str(error))
             continue
+        for name, said in _headers(path, stream, origin - before_s, origin + after_s).items():
+            notes.setdefault(name, []).extend(said.words)
+            if said.timing_quality_percent is not None:
+                timing[name] = min(timing.get(name, 100.0), said.timing_quality_percent)
         for trace in stream:
             spans.append((trace.stats.starttime, trace.stats.endtime))
             outside = trace.stats.endtime < origin - before_s or trace.stats.starttime > origin + after_s
@@ -185,7 +191,17 @@ def read_channels(
             f"the records cover {first} to {last}, but the event is of {origin}: no sample lies between {before_s:.0f} s"
             f" before and {after_s:.0f} s after it"
         )
-    return {name: _channel(name, traces[name], origin, notes.get(name, [])) for name in sorted(traces)}
+    return {
+        name: _channel(name, traces[name], origin, notes.get(name, []), timing.get(name)) for name in sorted(traces)
+    }
+
+
+def _headers(path: Path, stream: Any, start: Any, end: Any) -> dict[str, HeaderNotes]:
+    kinds = {(t.stats.mseed.record_length, t.stats.mseed.byteorder) for t in stream if "mseed" in t.stats}
+    if len(kinds) != 1:
+        return {}
+    length, order = kinds.pop()
+    return read_headers(path, length, order == ">", start.timestamp, end.timestamp)
 
 
 def _read_file(path: Path, start: Any, end: Any) -> tuple[Any, bool]:
@@ -225,7 +241,7 @@ def _why_unread(path: Path, error: Exception) -> str:
     return f"{path}: not a record format that ObsPy reads ({error})"
 
 
-def _channel(name: str, traces: list[Any], origin: Any, notes: list[str]) -> RawChannel:
+def _channel(name: str, traces: list[Any], origin: Any, notes: list[str], timing: float | None) -> RawChannel:
     pieces: list[Segment] = []
     bad = 0
     for trace in traces:
@@ -246,7 +262,7 @@ def _channel(name: str, traces: list[Any], origin: Any, notes: list[str]) -> Raw
     joined, conflict = _join(pieces)
     if conflict:
         notes = [*notes, f"{conflict:.2f} s of overlapping records that contradict each other masked"]
-    return RawChannel(name, tuple(joined), tuple(dict.fromkeys(notes)))
+    return RawChannel(name, tuple(joined), tuple(dict.fromkeys(notes)), timing)
 
 
 def _split(trace: Any, origin: Any) -> tuple[list[Segment], int]:

@@ -10,7 +10,7 @@ Cochard et al. (2006). A healthy site gives one answer three times.
 from __future__ import annotations
 
 from collections.abc import Sequence
-from dataclasses import dataclass
+from dataclasses import dataclass, replace
 from enum import Enum
 
 import numpy as np
@@ -29,6 +29,8 @@ _LOWEST_HZ = 0.1
 _SHORTEST_S, _PERIODS = 1.5, 2.5
 """Window: that many periods of the lowest frequency of a band, at least so many seconds."""
 _SNR_NEEDED = 3.0
+_NOISE_S = 40.0
+"""Record before P and after the last window that is filtered along."""
 
 
 class Relation(Enum):
@@ -97,6 +99,8 @@ def observe(site: Site, arrivals: Arrivals) -> list[Observation]:
         Windows without gaps that stand out of the noise before P.
     """
     found: list[Observation] = []
+    end = arrivals.s_s + max(arrivals.s_s - arrivals.p_s, 20.0)
+    site = _between(site, arrivals.p_s - _NOISE_S, end + _NOISE_S)
     low = max(site.band_hz[0], _LOWEST_HZ)
     high = min(site.band_hz[1], _HIGHEST_HZ, 0.4 / site.step_s)
     times = site.times_s
@@ -105,7 +109,6 @@ def observe(site: Site, arrivals: Arrivals) -> list[Observation]:
         data = sosfiltfilt(sos, site.data, axis=1)
         noise = _noise_power(data, site, times, arrivals)
         length = max(_SHORTEST_S, _PERIODS / band[0])
-        end = arrivals.s_s + max(arrivals.s_s - arrivals.p_s, 20.0)
         samples = max(round(length / site.step_s), 8)
         count = 2.0 * (band[1] - band[0]) * length
         for start in np.arange(arrivals.p_s - 0.25 * length, end, 0.5 * length):
@@ -118,6 +121,12 @@ def observe(site: Site, arrivals: Arrivals) -> list[Observation]:
             ok = np.asarray(site.valid[:, part].all(axis=1))
             found += _window(data[:, part], ok, noise, count, centre, band, phase)
     return found
+
+
+def _between(site: Site, start_s: float, end_s: float) -> Site:
+    keep = slice(*(int(i) for i in np.searchsorted(site.times_s, [start_s, end_s])))
+    start = site.start_s + keep.start * site.step_s
+    return replace(site, start_s=start, data=site.data[:, keep], valid=site.valid[:, keep])
 
 
 def _phase(start: float, length: float, arrivals: Arrivals) -> str:

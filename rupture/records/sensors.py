@@ -12,6 +12,7 @@ from rupture.records.checks import Checked, check_channel, mask_grid
 from rupture.records.metadata import STRONG_MOTION, ChannelMetadata, quantity_of
 from rupture.records.orient import channel_axis, to_east_north_up
 from rupture.records.read import RawChannel
+from rupture.records.relations import octaves
 from rupture.records.report import ChannelFound, ChannelReport, UnusableError
 from rupture.records.response import (
     TARGET_ORDER,
@@ -226,7 +227,8 @@ def motion_of(
         steps += (f"moved by {-late_s:+.3f} s",) if late_s else ()
         missing = (*channel.report.missing, note) if note else channel.report.missing
         ratio = signal_to_noise(values, good, grid, arrivals)
-        reports.append(replace(channel.report, done=steps, missing=missing, snr=ratio))
+        bands = snr_bands(values, good, grid, arrivals, (corners.low, corners.high))
+        reports.append(replace(channel.report, done=steps, missing=missing, snr=ratio, snr_bands=bands))
     axes = np.array([c.axis for c in sensor.channels])
     turned, turned_valid, _ = to_east_north_up(axes, np.array(data), np.array(valid))
     if not turned_valid.any():
@@ -297,3 +299,45 @@ def signal_to_noise(data: Array, valid: Bool, grid: Grid, arrivals: Arrivals) ->
         return None
     noise = float(np.sqrt(np.mean(data[before] ** 2)))
     return float(np.sqrt(np.mean(data[signal] ** 2))) / noise if noise > 0 else None
+
+
+def snr_bands(
+    data: Array, valid: Bool, grid: Grid, arrivals: Arrivals, band_hz: tuple[float, float]
+) -> tuple[tuple[float, float, float], ...]:
+    """Return the signal-to-noise ratio per octave, from the power spectra of both stretches.
+
+    Parameters
+    ----------
+    data, valid
+        Shape (samples,).
+    grid, arrivals
+        As for `signal_to_noise`.
+    band_hz
+        Usable band.
+
+    Returns
+    -------
+    tuple
+        (lowest Hz, highest Hz, ratio of amplitudes); empty where there is no noise to compare with.
+    """
+    times = grid.times_s
+    end = arrivals.s_s + max(arrivals.s_s - arrivals.p_s, 20.0)
+    stretches = [valid & (times < arrivals.p_s - 2.0), valid & (times >= arrivals.p_s) & (times <= end)]
+    spectra = []
+    for stretch in stretches:
+        if np.count_nonzero(stretch) * grid.step_s < 5.0:
+            return ()
+        part = data[stretch]
+        window = np.hanning(part.size)
+        spectra.append(
+            (np.fft.rfftfreq(part.size, grid.step_s), np.abs(np.fft.rfft(part * window)) ** 2 / (window @ window))
+        )
+    found = []
+    for low, high in octaves(*band_hz):
+        before, signal = (
+            float(power[(f >= low) & (f < high)].mean()) if ((f >= low) & (f < high)).any() else 0.0
+            for f, power in spectra
+        )
+        if before > 0:
+            found.append((round(low, 4), round(high, 4), float(np.sqrt(signal / before))))
+    return tuple(found)

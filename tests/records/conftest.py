@@ -225,15 +225,15 @@ def rough_waves(seed, back_azimuth=235.0, p_time=10.5, s_time=18.0, scatter=3.0)
             spread = 0.3 * scatter if i == 0 else scatter * (1.0 + late / length)
             waves.append(
                 Wave(
-                    start + late + 0.6,
+                    start + late + (0.3 if i == 0 else 0.6),
                     np.radians(back_azimuth + spread * rng.standard_normal()),
                     1.0 / (velocity * np.exp(0.05 * rng.standard_normal())),
                     radial,
                     transverse * rng.choice([-1, 1]),
                     vertical,
-                    width=rng.uniform(0.08, 0.5),
-                    amplitude=amplitude * rng.lognormal(0.0, 0.4),
-                )  # fmt: skip
+                    width=0.12 if i == 0 else rng.uniform(0.08, 0.5),
+                    amplitude=amplitude * (1.0 if i == 0 else rng.lognormal(-0.5, 0.4)),
+                )
             )
 
     sign = rng.choice([-1.0, 1.0])

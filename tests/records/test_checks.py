@@ -109,3 +109,17 @@ def test_mask_grid_guards_what_is_masked_and_what_is_tapered():
     t = np.arange(0.0, 20.0, 0.5)
     valid = mask_grid([(0.0, 19.5, 2.0)], [(10.0, 11.0)], 1.0, t)
     np.testing.assert_array_equal(t[valid], np.r_[2.0:9.0:0.5, 12.5:18.0:0.5])
+
+
+def test_step_and_drift_of_the_resting_level_are_told():
+    x = wave()
+    assert check_channel(raw((0.0, x)), SETTINGS).notes == ()
+    stepped = x.copy()
+    stepped[1000:] += 5e3
+    (note,) = check_channel(raw((0.0, stepped)), SETTINGS).notes
+    assert note.startswith("the resting level steps by")
+    assert "about 20 s" in note or "about 15 s" in note
+    (note,) = check_channel(
+        raw((0.0, 20 * np.random.default_rng(1).standard_normal(6000).round() + np.arange(6000))), SETTINGS
+    ).notes
+    assert note.startswith("the resting level drifts by 6e+03 counts") or "drifts by 5." in note

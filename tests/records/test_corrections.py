@@ -25,8 +25,8 @@ def rough(kit, tmp_path, six, event):
     """Write records of one site with a fault in the counts; return what the reader makes of them."""
 
     def make(spoil=lambda rows: None, seed=1, late=(0.0, 0.0), settings=None, **extra):
-        world = kit.World(tmp_path, kit.rough_waves(seed), length=260.0)
-        instruments = [replace(i, delay=0.0) for i in six]
+        world = kit.World(tmp_path, kit.rough_waves(seed), length=180.0)
+        instruments = [replace(i, rate=25.0) for i in six]
         stream = world.records(instruments)
         rows = {t.stats.channel: t.data for t in stream}
         spoil(rows)
@@ -34,7 +34,9 @@ def rough(kit, tmp_path, six, event):
             trace.data = rows[trace.stats.channel]
             trace.stats.starttime += late[trace.stats.channel[1] == "J"]
         data, metadata = world.write(instruments, stream)
-        found = read_sites([data], [metadata], event, settings or RecordSettings(), **extra)
+        found = read_sites(
+            [data], [metadata], event, replace(settings or RecordSettings(), before_s=60.0, after_s=110.0), **extra
+        )
         return world, found.sites[0], found.verdicts[0]
 
     return make
