@@ -113,7 +113,20 @@ def stack_and_fit(
             found, [s.longitude_deg for s in sites], [s.latitude_deg for s in sites], inputs.event, inputs.responses,
             job.fit, job.seed, report, prior,
         )  # fmt: skip
+    # Coda keeps frames coherent after the rupture has ended; when it ends, the fit of powers and directions knows better.
+    active = radiating_probability(fit, frames)
+    share = front.probability / np.maximum(front.probability.sum(axis=0), 1e-300)
+    front = replace(front, probability=share * active, active=active)
     return Tracked(tuple(found), position, grid, stack, front, fit)
+
+
+def radiating_probability(fit: RuptureFit, source_time_s: Array) -> Array:
+    """Return the probability that the rupture radiates at source times, over the draws of all kinds, shape (F,)."""
+    total = np.zeros(source_time_s.size)
+    for kind, share in fit.kind_probability.items():
+        start, length, rise = (fit.column(name, kind)[:, None] for name in ("start_time_s", "duration_s", "rise_time_s"))
+        total += share * ((source_time_s >= start) & (source_time_s <= start + length + rise)).mean(axis=0)
+    return total
 
 
 def rupture_summary(fit: RuptureFit) -> dict[str, Any]:
