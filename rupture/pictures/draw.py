@@ -3,7 +3,7 @@
 from __future__ import annotations
 
 import re
-from collections.abc import Callable, Sequence
+from collections.abc import Callable, Iterator, Sequence
 from dataclasses import dataclass
 from functools import partial
 from pathlib import Path
@@ -121,6 +121,7 @@ def draw_all(
     progress: Callable[[int, int], None] | None = None,
     formats: tuple[str, ...] = FORMATS,
     overlays: Sequence[str | Path | Overlay] = (),
+    workers: int = 1,
 ) -> list[Path]:
     """Draw every figure that the result has the data for, each with its data beside it as CSV, the map as KML too.
 
@@ -138,6 +139,9 @@ def draw_all(
         File formats: png (300 dpi), pdf, svg; none for the tables alone.
     overlays
         GeoJSON files of fault traces or aftershocks to draw on the maps.
+    workers
+        Processes that draw. More than one needs a main module that may be imported again (`if __name__ ==
+        "__main__"`), as Python's multiprocessing asks.
 
     Returns
     -------
@@ -151,24 +155,71 @@ def draw_all(
     """
     folder = Path(out_dir)
     folder.mkdir(parents=True, exist_ok=True)
-    todo = sheets(result, overlays)
+    job = _Job(result, tuple(read_overlays(overlays)), style, folder, formats)
+    todo = job.sheets()
     written: list[Path] = []
-    for done, sheet in enumerate(todo):
+    for done, files in enumerate(_draw_together(job, todo, workers) if workers > 1 else map(job.draw, todo)):
+        written += files
         if progress is not None:
-            progress(done, len(todo))
-        if formats:
-            picture = sheet.draw(style=style)
-        for suffix in formats:
-            path = folder / f"{sheet.name}.{suffix}"
-            picture.savefig(path)
-            written.append(path)
-        written += [
-            table.write(folder / f"{sheet.name}{'_' if table.name else ''}{table.name}.csv") for table in sheet.tables()
-        ]
+            progress(done + 1, len(todo) + 1)
     scene = Scene.of(result)
     written.append(write_kml(scene, folder / "map.kml"))
     if scene.field is not None and not scene.field.is_trace:
         written.append(write_areas_geojson(scene, folder / "map_areas.geojson"))
     if progress is not None:
-        progress(len(todo), len(todo))
+        progress(len(todo) + 1, len(todo) + 1)
     return written
+
+
+@dataclass(frozen=True)
+class _Job:
+    """What every process that draws has to know."""
+
+    result: Result
+    overlays: tuple[Overlay, ...]
+    style: str | Path | None
+    folder: Path
+    formats: tuple[str, ...]
+
+    def sheets(self) -> list[Sheet]:
+        return sheets(self.result, self.overlays)
+
+    def draw(self, sheet: Sheet) -> list[Path]:
+        """Write one figure and its tables."""
+        written = []
+        if self.formats:
+            picture = sheet.draw(style=self.style)
+        for suffix in self.formats:
+            path = self.folder / f"{sheet.name}.{suffix}"
+            picture.savefig(path)
+            written.append(path)
+        for table in sheet.tables():
+            written.append(table.write(self.folder / f"{sheet.name}{'_' if table.name else ''}{table.name}.csv"))  # noqa: PERF401
+        return written
+
+
+_prepared: list[_Job] = []
+
+
+def _prepare(job: _Job) -> None:
+    _prepared[:] = [job]
+
+
+def _draw_prepared(index: int) -> list[Path]:
+    job = _prepared[0]
+    return job.draw(job.sheets()[index])
+
+
+def _draw_together(job: _Job, todo: list[Sheet], workers: int) -> Iterator[list[Path]]:
+    """Draw from the first sheet on, while helpers draw from the last one back; yields in the order of the sheets."""
+    from concurrent.futures import ProcessPoolExecutor
+    from multiprocessing import get_context
+
+    # Started anew, not forked: a forked copy of a program with threads may hang.
+    with ProcessPoolExecutor(workers - 1, get_context("spawn"), _prepare, (job,)) as pool:
+        later = {index: pool.submit(_draw_prepared, index) for index in reversed(range(len(todo)))}
+        try:
+            for index, sheet in enumerate(todo):
+                yield job.draw(sheet) if later[index].cancel() else later[index].result()
+        finally:
+            pool.shutdown(cancel_futures=True)

@@ -113,8 +113,8 @@ def test_draw_all_writes_figures_and_tables(build: Callable[..., Result], tmp_pa
     } <= names
     assert all(path.stat().st_size > 0 for path in written)
     assert sorted(path.name for path in (tmp_path / "figures").iterdir()) == sorted(names)
-    assert seen[0][0] == 0
-    assert seen[-1][0] == seen[-1][1] == 2
+    assert seen[0][0] == 1
+    assert seen[-1][0] == seen[-1][1] == 3
     from PIL import Image
 
     with Image.open(tmp_path / "figures" / "map.png") as image:
@@ -304,3 +304,13 @@ def test_answers_of_every_sort_are_drawn(build: Callable[..., Result], tmp_path:
     pictures.write_report(changed, tmp_path / "report.html")
     if case in ("stationary", "bare event"):
         pictures.make_movie(changed, tmp_path / "movie.mp4")
+
+
+def test_two_processes_draw_the_same_files(build: Callable[..., Result], tmp_path: Path) -> None:
+    whole = small(build, sites=3)
+    result = Result({**whole.summary, "rupture": None}, whole.sites, whole.direction)
+    one = pictures.draw_all(result, tmp_path / "one", formats=("png",))
+    two = pictures.draw_all(result, tmp_path / "two", formats=("png",), workers=2)
+    assert [p.name for p in two] == [p.name for p in one]
+    for a, b in zip(one, two, strict=True):
+        assert a.read_bytes() == b.read_bytes()
