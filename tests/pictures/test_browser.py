@@ -232,3 +232,10 @@ def test_other_results_open_quietly(
     assert not browser.run("document.getElementById('site-section').hidden")
     assert browser.run("document.getElementById('no-map').hidden") == (case != "directions only")
     assert browser.errors == []
+
+
+def test_a_single_field_offers_no_choice(browser: Any, build: Callable[..., Result], tmp_path: Path) -> None:
+    browser.errors.clear()
+    browser.open(write_report(build(energy=False, sites=2, cells=15), tmp_path / "report.html"))
+    assert browser.run("document.getElementById('field-choice').getBoundingClientRect().height") == 0
+    assert browser.errors == []

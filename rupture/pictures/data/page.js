@@ -516,7 +516,7 @@
     }
     const simple = (child) => { const s = svg("svg", { viewBox: "0 0 26 20", "aria-hidden": "true" }); s.append(child); return s; };
     add(simple(svg("polygon", { points: "13,1 15.5,7.5 22,8 17,12.5 18.5,19 13,15.5 7.5,19 9,12.5 4,8 10.5,7.5", fill: "var(--accent)" })), "epicentre");
-    if (data.track) add(simple(svg("circle", { cx: 13, cy: 10, r: 7, fill: "none", stroke: "var(--accent)", "stroke-width": 2.5 })), "fitted front");
+    if (data.track && data.track.fronts.length) add(simple(svg("circle", { cx: 13, cy: 10, r: 7, fill: "none", stroke: "var(--accent)", "stroke-width": 2.5 })), "fitted front");
     if (data.track) add(simple(svg("circle", { cx: 13, cy: 10, r: 5, fill: timeColour((data.timeScale[0] + data.timeScale[1]) / 2) })), "front so far, smoothed");
     add(simple(svg("polygon", { points: "2,10 25,2 25,18", fill: timeColour(data.timeScale[0]), opacity: 0.3 })), "ray of a site, 68 % wide");
     for (const overlay of data.map.overlays) add(simple(svg("line", { x1: 2, x2: 24, y1: 10, y2: 10, stroke: "var(--overlay)", "stroke-width": 2.5 })), overlay.name);
