@@ -13,7 +13,7 @@ from rupture.errors import DataError, InputError
 from rupture.folder import output_folder
 from rupture.progress import Progress
 from rupture.result import Result
-from rupture.settings import InputSettings, Job, MapSettings, NullTestSettings, read_job
+from rupture.settings import InputSettings, Job, NullTestSettings, read_job
 from rupture.wording import SHORT_CAUTION, answer_sentences
 
 
@@ -55,11 +55,16 @@ def _changed(given: InputSettings, changes: dict[str, Any]) -> InputSettings:
 
 
 def _map_options(job: Job, options: argparse.Namespace) -> Job:
-    changes = {"half_width_km": getattr(options, "half_width", None), "spacing_km": getattr(options, "spacing", None)}
-    changes = {k: v for k, v in changes.items() if v is not None}
+    changes: dict[str, Any] = {
+        name: value
+        for name, value in (
+            ("half_width_km", getattr(options, "half_width", None)),
+            ("spacing_km", getattr(options, "spacing", None)),
+        )
+        if value is not None
+    }
     if changes:
-        settings: MapSettings = replace(job.map, **changes)
-        job = replace(job, map=settings)
+        job = replace(job, map=replace(job.map, **changes))
     return replace(job, null_tests=_null_tests(job.null_tests, options))
 
 
@@ -155,7 +160,9 @@ def print_quality(channels: list[dict[str, Any]], verdicts: list[dict[str, Any]]
         sites.add_column(name, overflow="fold")
     for v in verdicts:
         words = [v["summary"], *v["corrections"]]
-        sites.add_row(v["site"], v["components"], "yes" if v["used"] else f"no: {v['reason']}", "; ".join(w for w in words if w))
+        sites.add_row(
+            v["site"], v["components"], "yes" if v["used"] else f"no: {v['reason']}", "; ".join(w for w in words if w)
+        )
     console.print(sites)
 
 

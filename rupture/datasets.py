@@ -55,7 +55,9 @@ def site_dataset(rows: Sequence[Mapping[str, Any]]) -> xr.Dataset:
         "longitude": "degrees_east", "latitude": "degrees_north", "elevation": "m", "distance": "km",
         "azimuth": "degrees", "p_arrival": "s", "s_arrival": "s",
     }  # fmt: skip
-    variables: dict[str, Any] = {name: labelled("site", [row[name] for row in rows], unit) for name, unit in units.items()}
+    variables: dict[str, Any] = {
+        name: labelled("site", [row[name] for row in rows], unit) for name, unit in units.items()
+    }
     for name in ("used", "reason", "components"):
         variables[name] = ("site", np.asarray([row[name] for row in rows], bool if name == "used" else str))
     return xr.Dataset(variables, coords={"site": [row["code"] for row in rows]})
@@ -75,7 +77,13 @@ def direction_dataset(directions: Sequence[SiteDirection]) -> xr.Dataset:
     first = min(d.time_s[0] for d in directions)
     count = round((max(d.time_s[-1] for d in directions) - first) / hop) + 1
     time = first + hop * np.arange(count)
-    bands = sorted({(float(low), float(high), float(w)) for d in directions for (low, high), w in zip(d.band_hz, d.window_s, strict=True)})
+    bands = sorted(
+        {
+            (float(low), float(high), float(w))
+            for d in directions
+            for (low, high), w in zip(d.band_hz, d.window_s, strict=True)
+        }
+    )
     theta = directions[0].back_azimuth_rad
     shape = (len(directions), len(bands), count)
     names = ("back_azimuth_best", "back_azimuth_p05", "back_azimuth_p95",
@@ -87,7 +95,10 @@ def direction_dataset(directions: Sequence[SiteDirection]) -> xr.Dataset:
         start = round((d.time_s[0] - first) / hop)
         here = slice(start, start + d.time_s.size)
         found = intervals(d)
-        position = [bands.index((float(low), float(high), float(w))) for (low, high), w in zip(d.band_hz, d.window_s, strict=True)]
+        position = [
+            bands.index((float(low), float(high), float(w)))
+            for (low, high), w in zip(d.band_hz, d.window_s, strict=True)
+        ]
         angles = (found.back_azimuth_best_rad, found.back_azimuth_p05_rad, found.back_azimuth_p95_rad)
         speeds = (found.apparent_velocity_best_m_s, found.apparent_velocity_p05_m_s, found.apparent_velocity_p95_m_s)
         for name, angle in zip(names[:3], angles, strict=True):
@@ -134,13 +145,15 @@ def grid_coordinates(grid: Grid, source_time_s: Array) -> tuple[str, tuple[int, 
             plane = getattr(grid, f"{name}_deg").reshape(grid.shape)
             coordinates[name] = (["northing", "easting"], plane, _UNITS[name])
         return "northing easting", (rows, columns), coordinates
-    coordinates["along"] = ("cell", grid.along_m / KM, _UNITS["along"])
+    coordinates["along"] = ("cell", np.asarray(grid.along_m, float) / KM, _UNITS["along"])
     for name in ("longitude", "latitude"):
         coordinates[name] = ("cell", getattr(grid, f"{name}_deg"), _UNITS[name])
     return "cell", (grid.longitude_deg.size,), coordinates
 
 
-def map_dataset(grid: Grid, source_time_s: Array, cells: Mapping[str, tuple[Any, str, str]], series: Mapping[str, Any]) -> xr.Dataset:
+def map_dataset(
+    grid: Grid, source_time_s: Array, cells: Mapping[str, tuple[Any, str, str]], series: Mapping[str, Any]
+) -> xr.Dataset:
     """Return a group on the grid.
 
     Parameters
@@ -158,7 +171,9 @@ def map_dataset(grid: Grid, source_time_s: Array, cells: Mapping[str, tuple[Any,
 
     dimensions, shape, coordinates = grid_coordinates(grid, source_time_s)
     variables: dict[str, Any] = {
-        name: labelled(f"source_time {dimensions}", np.ascontiguousarray(values.T, np.float32).reshape(-1, *shape), units, text)
+        name: labelled(
+            f"source_time {dimensions}", np.ascontiguousarray(values.T, np.float32).reshape(-1, *shape), units, text
+        )
         for name, (values, units, text) in cells.items()
     }
     variables |= {name: labelled("source_time", values) for name, values in series.items()}
@@ -173,7 +188,7 @@ def map_dataset(grid: Grid, source_time_s: Array, cells: Mapping[str, tuple[Any,
 def along_axis_probability(grid: Grid, location_probability: NDArray[Any], azimuth_rad: float) -> tuple[Array, Array]:
     """Return km along an azimuth through the grid's centre and the probability there, shapes (L,), (F, L)."""
     if grid.kind == "trace":
-        return grid.along_m / KM, np.asarray(location_probability.T, float)
+        return np.asarray(grid.along_m, float) / KM, np.asarray(location_probability.T, float)
     along = grid.east_m * np.sin(azimuth_rad) + grid.north_m * np.cos(azimuth_rad)
     index = np.rint((along - along.min()) / grid.spacing_m).astype(int)
     total = np.zeros((location_probability.shape[1], index.max() + 1))

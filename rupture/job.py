@@ -40,7 +40,7 @@ def read_toml(path: str | Path) -> dict[str, Any]:
         raise InputError(f"{path}: not valid TOML: {error}") from error
 
 
-def settings_from_table(cls: type, table: Mapping[str, Any], where: str) -> Any:
+def settings_from_table(cls: Any, table: Mapping[str, Any], where: str) -> Any:
     """Build a settings dataclass from a TOML table.
 
     Parameters
@@ -66,7 +66,7 @@ def settings_from_table(cls: type, table: Mapping[str, Any], where: str) -> Any:
     for key, value in table.items():
         if key not in known:
             continue
-        nested = next((t for t in _members(hints[key]) if is_dataclass(t)), None)
+        nested: Any = next((t for t in _members(hints[key]) if is_dataclass(t)), None)
         if nested is not None and isinstance(value, Mapping):
             try:
                 values[key] = settings_from_table(nested, value, f"{where}.{key}")

@@ -107,9 +107,10 @@ class Result:
             raise InputError(f"{path}: no such result file")
         try:
             with xr.open_datatree(path, engine="h5netcdf", decode_timedelta=False) as tree:
-                groups = {g: tree[g].to_dataset(inherit=False).load() for g in GROUPS if g in tree.children}
+                found = dict(tree.children)
+                groups: dict[str, Any] = {g: found[g].to_dataset(inherit=False).load() for g in GROUPS if g in found}
                 attributes = dict(tree["provenance"].attrs)
-            texts = {key: json.loads(attributes[key]) for key in ("summary", "quality", "settings")}
+            texts: dict[str, Any] = {key: json.loads(attributes[key]) for key in ("summary", "quality", "settings")}
         except (OSError, KeyError, ValueError) as error:
             raise InputError(f"{path}: not a result of this program ({error}); give the result.nc of a run") from error
         missing = [g for g in ("sites", "direction") if g not in groups]

@@ -74,13 +74,19 @@ def load_event(job: Job) -> Event:
     given = job.input
     if (given.event is None) == (given.origin is None):
         raise InputError("give the earthquake once: --event FILE (QuakeML) or --origin TIME LON LAT DEPTH")
-    event = read_event(given.event) if given.event is not None else event_from_origin(*map(str, given.origin or ()))
+    if given.event is not None:
+        event = read_event(given.event)
+    else:
+        time, longitude, latitude, depth = map(str, given.origin or ())
+        event = event_from_origin(time, longitude, latitude, depth)
     if given.magnitude is not None:
         event = replace(event, magnitude=given.magnitude)
     if given.mechanism_deg is not None:
         strike, dip, rake = given.mechanism_deg
         if not (-360 <= strike <= 360 and 0 < dip <= 90 and -180 <= rake <= 180):
-            raise InputError(f"mechanism {strike:g} {dip:g} {rake:g}: strike -360 to 360, dip 0 to 90, rake -180 to 180 degrees")
+            raise InputError(
+                f"mechanism {strike:g} {dip:g} {rake:g}: strike -360 to 360, dip 0 to 90, rake -180 to 180 degrees"
+            )
         event = replace(event, mechanism_deg=given.mechanism_deg)
     return event
 
@@ -116,12 +122,18 @@ def load(job: Job, progress: Progress) -> Inputs:
         longest = float(distance.max()) / KM
         first_p = earth.table("P", event.depth_km, longest + 1).time(distance)
         regional = longest < 1500.0
-        responses = strong_waves(earth, event.depth_km, longest + 600.0) if regional else first_arrival_responses(earth, event.depth_km, longest + 600.0)
+        responses = (
+            strong_waves(earth, event.depth_km, longest + 600.0)
+            if regional
+            else first_arrival_responses(earth, event.depth_km, longest + 600.0)
+        )
         time_s, _ = responses.strongest("S")
     return Inputs(event, earth, responses, site_set, distance, azimuth, first_p, responses.at(time_s, distance))
 
 
-def directions(job: Job, inputs: Inputs, progress: Progress) -> tuple[tuple[SiteDirection, ...], NDArray[np.int64], dict[str, str]]:
+def directions(
+    job: Job, inputs: Inputs, progress: Progress
+) -> tuple[tuple[SiteDirection, ...], NDArray[np.int64], dict[str, str]]:
     """Return directions of the sites that have one, their positions among the sites, and why the others have none.
 
     Raises
@@ -208,7 +220,9 @@ def quality_rows(site_set: SiteSet) -> list[dict[str, Any]]:
         if f.start_s is not None and f.end_s is not None:
             parts.append(f"{f.start_s:.0f} to {f.end_s:.0f} s")
         if f.azimuth_deg is not None or f.dip_deg is not None:
-            parts.append("azimuth {}, dip {}".format(*("?" if v is None else f"{v:g}" for v in (f.azimuth_deg, f.dip_deg))))
+            parts.append(
+                "azimuth {}, dip {}".format(*("?" if v is None else f"{v:g}" for v in (f.azimuth_deg, f.dip_deg)))
+            )
         rows.append(
             {
                 "site": row.site, "channel": row.channel, "found": ", ".join(p for p in parts if p), "done": "; ".join(row.done),

@@ -152,4 +152,8 @@ def _beside(given: InputSettings, folder: Path) -> InputSettings:
 
 
 def _earth_beside(given: EarthSettings, folder: Path) -> EarthSettings:
-    return EarthSettings(str(folder / given.model)) if given.model.endswith(".nd") and not Path(given.model).is_absolute() else given
+    return (
+        EarthSettings(str(folder / given.model))
+        if given.model.endswith(".nd") and not Path(given.model).is_absolute()
+        else given
+    )

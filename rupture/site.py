@@ -63,12 +63,14 @@ class Site:
     @property
     def present(self) -> NDArray[np.bool_]:
         """Shape (6,): True for each component that has at least one valid sample."""
-        return self.valid.any(axis=1)
+        present: NDArray[np.bool_] = np.asarray(self.valid.any(axis=1), np.bool_)
+        return present
 
     @property
     def times_s(self) -> NDArray[np.float64]:
         """Sample times in s after the origin time, shape (samples,)."""
-        return self.start_s + self.step_s * np.arange(self.data.shape[1])
+        times: NDArray[np.float64] = self.start_s + self.step_s * np.arange(self.data.shape[1], dtype=float)
+        return times
 
     @property
     def kind(self) -> str:

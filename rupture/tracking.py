@@ -96,7 +96,13 @@ def cell_geometry(inputs: Inputs, position: NDArray[np.int64], grid: Grid) -> Ge
 
 
 def stack_and_fit(
-    job: Job, inputs: Inputs, found: Sequence[SiteDirection], position: NDArray[np.int64], grid: Grid, prior: LinePrior, progress: Progress
+    job: Job,
+    inputs: Inputs,
+    found: Sequence[SiteDirection],
+    position: NDArray[np.int64],
+    grid: Grid,
+    prior: LinePrior,
+    progress: Progress,
 ) -> Tracked:
     """Stack the rays, smooth the frames and fit line sources."""
     until = job.map.frames_until_s or float(np.clip(1.6 * prior.length_m / 2500.0, 20.0, 600.0))
@@ -124,7 +130,9 @@ def radiating_probability(fit: RuptureFit, source_time_s: Array) -> Array:
     """Return the probability that the rupture radiates at source times, over the draws of all kinds, shape (F,)."""
     total = np.zeros(source_time_s.size)
     for kind, share in fit.kind_probability.items():
-        start, length, rise = (fit.column(name, kind)[:, None] for name in ("start_time_s", "duration_s", "rise_time_s"))
+        start, length, rise = (
+            fit.column(name, kind)[:, None] for name in ("start_time_s", "duration_s", "rise_time_s")
+        )
         total += share * ((source_time_s >= start) & (source_time_s <= start + length + rise)).mean(axis=0)
     return total
 
@@ -156,14 +164,23 @@ def _interval(fit: RuptureFit, name: str, scale: float) -> dict[str, float]:
 
 
 def label(
-    job: Job, inputs: Inputs, tracked: Tracked, refused: dict[str, str], reliability: dict[str, Any] | None, progress: Progress
+    job: Job,
+    inputs: Inputs,
+    tracked: Tracked,
+    refused: dict[str, str],
+    reliability: dict[str, Any] | None,
+    progress: Progress,
 ) -> Result:
     """Put names, units and the summary on what the stages found."""
     rows = site_rows(inputs, refused)
     grid, stack, front = tracked.grid, tracked.stack, tracked.front
     direction = datasets.direction_dataset(tracked.directions)
     cells = {
-        "location_probability": (stack.location_probability, "1", "probability that the energy of the frame came from the cell"),
+        "location_probability": (
+            stack.location_probability,
+            "1",
+            "probability that the energy of the frame came from the cell",
+        ),
         "smoothed_probability": (front.probability, "1", "the same given all frames and the bound on front speed"),
         "energy_proxy": (stack.energy, "1", "location probability times spreading- and site-corrected power, relative"),
     }
@@ -290,6 +307,6 @@ def _draws(fit: RuptureFit) -> tuple[Array, NDArray[np.str_]]:
         chosen = np.linspace(0, draws.shape[0] - 1, round(share * DRAWS)).astype(int)
         scale = [180 / np.pi if label.endswith("_deg") else 1 / KM if "_km" in label else 1.0 for label, _ in _SAMPLED]
         columns = [fit.parameters.index(parameter) for _, parameter in _SAMPLED]
-        rows.append(draws[np.ix_(chosen, columns)] * scale)
+        rows.append(draws[chosen][:, columns] * scale)
         kinds += [name] * chosen.size
     return np.concatenate(rows), np.array(kinds)

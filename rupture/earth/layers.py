@@ -50,9 +50,13 @@ class LayeredModel:
                 raise InputError(f"Earth model {self.name}: {field} must hold one number for each layer")
             if field != "top_km" and not (value > 0).all():
                 layer = int(np.argmin(value > 0)) + 1
-                raise InputError(f"Earth model {self.name}: layer {layer} has {field} = {value[layer - 1]}; it must be positive")
+                raise InputError(
+                    f"Earth model {self.name}: layer {layer} has {field} = {value[layer - 1]}; it must be positive"
+                )
         if self.top_km[0] != 0:
-            raise InputError(f"Earth model {self.name}: the first layer starts at {self.top_km[0]} km, not at the surface")
+            raise InputError(
+                f"Earth model {self.name}: the first layer starts at {self.top_km[0]} km, not at the surface"
+            )
         if not (np.diff(self.top_km) > 0).all():
             layer = int(np.argmin(np.diff(self.top_km) > 0)) + 1
             raise InputError(f"Earth model {self.name}: layer {layer} has no positive thickness")

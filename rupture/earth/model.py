@@ -83,7 +83,9 @@ def build_earth(spec: str) -> Earth:
         return Earth(name, layers, _digest(name), lambda p, z, d: _taup_table(name, name, p, z, d))
     path = Path(spec)
     if not path.is_file():
-        raise InputError(f"unknown Earth model '{spec}': give uniform:SPEED, {', '.join(BUILT_IN)}, or the path of an .nd file")
+        raise InputError(
+            f"unknown Earth model '{spec}': give uniform:SPEED, {', '.join(BUILT_IN)}, or the path of an .nd file"
+        )
     profile = read_nd(path)
     layers = layers_from_profile(path.stem, profile)
     content = _digest(path.read_text(encoding="utf-8"))
@@ -100,13 +102,17 @@ def _uniform(spec: str) -> Earth:
     try:
         speed = float(spec.removeprefix("uniform:"))
     except ValueError:
-        raise InputError(f"Earth model '{spec}': the S speed must be a number in km/s, for example uniform:3.5") from None
+        raise InputError(
+            f"Earth model '{spec}': the S speed must be a number in km/s, for example uniform:3.5"
+        ) from None
     if not 0.1 <= speed <= 10:
         raise InputError(f"Earth model '{spec}': an S speed of {speed:g} km/s is not one of rock (0.1 to 10 km/s)")
     vp = VP_OVER_VS * speed
     one = np.ones(1)
     # Gardner's relation stands in for a density nobody gave; travel times do not use it.
-    layers = LayeredModel(spec, 0 * one, vp * one, speed * one, 310.0 * (1e3 * vp) ** 0.25 * one, np.inf * one, np.inf * one)
+    layers = LayeredModel(
+        spec, 0 * one, vp * one, speed * one, 310.0 * (1e3 * vp) ** 0.25 * one, np.inf * one, np.inf * one
+    )
     speeds = {"P": vp, "S": speed}
     return Earth(spec, layers, _digest(spec), lambda p, z, d: uniform_table(p, speeds[p], z, table_distances_m(d)))
 

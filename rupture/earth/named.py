@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+import itertools
 import tempfile
 from pathlib import Path
 
@@ -31,7 +32,9 @@ def profile_of_built_in(name: str) -> Array:
 
     layers = TauPyModel(name).model.s_mod.v_mod.layers
     tops, bottoms = (
-        np.stack([layers[f"{end}_{what}"] for what in ("depth", "p_velocity", "s_velocity", "density", "qp", "qs")], axis=1)
+        np.stack(
+            [layers[f"{end}_{what}"] for what in ("depth", "p_velocity", "s_velocity", "density", "qp", "qs")], axis=1
+        )
         for end in ("top", "bot")
     )
     profile: Array = np.stack([tops, bottoms], axis=1).reshape(-1, 6).astype(float)
@@ -60,9 +63,13 @@ def read_nd(path: Path) -> Array:
         try:
             values = [float(word) for word in words]
         except ValueError:
-            raise InputError(f"{path}, line {number}: '{line.strip()}' is neither numbers nor a discontinuity name") from None
+            raise InputError(
+                f"{path}, line {number}: '{line.strip()}' is neither numbers nor a discontinuity name"
+            ) from None
         if len(values) not in (4, 6):
-            raise InputError(f"{path}, line {number}: {len(values)} numbers; depth, vp, vs, density and perhaps Qp, Qs are needed")
+            raise InputError(
+                f"{path}, line {number}: {len(values)} numbers; depth, vp, vs, density and perhaps Qp, Qs are needed"
+            )
         if rows and values[0] < rows[-1][0]:
             raise InputError(f"{path}, line {number}: depth {values[0]:g} km lies above the line before")
         if not 0 <= values[2] < values[1] or not values[3] > 0:
@@ -77,14 +84,15 @@ def read_nd(path: Path) -> Array:
 
 def layers_from_profile(name: str, profile: Array) -> LayeredModel:
     """Cut a profile into homogeneous layers: gradients into steps of at most 40 km, mean values in each."""
-    tops, values = [], []
-    for upper, lower in zip(profile[:-1], profile[1:], strict=True):
+    tops: list[float] = []
+    values: list[Array] = []
+    for upper, lower in itertools.pairwise(profile):
         if lower[0] <= upper[0] or upper[0] >= DEEPEST_KM:
             continue
         bottom = min(lower[0], DEEPEST_KM)
         pieces = 1 if np.allclose(upper[1:3], lower[1:3]) else int(np.ceil((bottom - upper[0]) / _THICKEST_KM))
         edges = np.linspace(upper[0], bottom, pieces + 1)
-        for top, end in zip(edges[:-1], edges[1:], strict=True):
+        for top, end in itertools.pairwise(edges):
             share = (0.5 * (top + end) - upper[0]) / (lower[0] - upper[0])
             row = upper[1:] + share * (lower[1:] - upper[1:])
             if values and np.allclose(values[-1][:3], row[:3]):
@@ -98,7 +106,9 @@ def layers_from_profile(name: str, profile: Array) -> LayeredModel:
     solid = table[:, 1] > 0
     table, top = table[solid], np.array(tops)[solid]
     if top[0] != 0:
-        raise InputError(f"Earth model {name}: the uppermost layer is a fluid; the relations used here need a solid surface")
+        raise InputError(
+            f"Earth model {name}: the uppermost layer is a fluid; the relations used here need a solid surface"
+        )
     return LayeredModel(name, top, table[:, 0], table[:, 1], 1e3 * table[:, 2], table[:, 3], table[:, 4])
 
 
@@ -137,6 +147,8 @@ def taup_file(profile: Array, content: str, cache: Path) -> Path:
         try:
             build_taup_model(str(source), output_folder=folder, verbose=False)
         except Exception as error:
-            raise InputError(f"TauP cannot build the layered Earth model ({error}); check its depths and speeds") from error
+            raise InputError(
+                f"TauP cannot build the layered Earth model ({error}); check its depths and speeds"
+            ) from error
         (Path(folder) / f"{content}.npz").replace(path)
     return path

@@ -38,7 +38,9 @@ class TravelTimeTable:
             raise InputError(f"{where}: distances must increase")
         missing = ~(np.isfinite(self.time_s) & np.isfinite(self.slowness_s_m))
         if missing.any():
-            raise InputError(f"{where}: no arrival at {self.distance_m[missing][0] / 1e3:.0f} km; the Earth model has a gap there")
+            raise InputError(
+                f"{where}: no arrival at {self.distance_m[missing][0] / 1e3:.0f} km; the Earth model has a gap there"
+            )
         if not (np.diff(self.time_s) >= -1e-6).all():
             place = self.distance_m[int(np.argmin(np.diff(self.time_s)))] / 1e3
             raise InputError(f"{where}: times fall with distance near {place:.0f} km; the Earth model cannot be used")

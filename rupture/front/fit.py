@@ -193,7 +193,11 @@ def fit_rupture(
 
 
 def fit_windows(
-    windows: Windows, prior: LinePrior, settings: FitSettings, seed: int, progress: Callable[[int, int], None] | None = None
+    windows: Windows,
+    prior: LinePrior,
+    settings: FitSettings,
+    seed: int,
+    progress: Callable[[int, int], None] | None = None,
 ) -> RuptureFit:
     """Fit line sources to windows that are laid out already; see `fit_rupture`."""
     samples, likelihood, evidence = {}, {}, {}
@@ -204,14 +208,13 @@ def fit_windows(
             total: Array = settings.trust * windows.log_likelihood(to_parameters(kind, draws)).sum(axis=1)
             return total
 
-        found = temper(
-            lambda r, n, kind=kind: prior.draw(kind, r, n),
-            lambda d, kind=kind: prior.log_density(kind, d),
-            log_likelihood,
-            settings.particles,
-            settings.moves,
-            rng,
-        )
+        def draw(r: np.random.Generator, count: int, kind: str = kind) -> Array:
+            return prior.draw(kind, r, count)
+
+        def log_prior(draws: Array, kind: str = kind) -> Array:
+            return prior.log_density(kind, draws)
+
+        found = temper(draw, log_prior, log_likelihood, settings.particles, settings.moves, rng)
         samples[kind] = to_parameters(kind, found.draws)
         likelihood[kind] = settings.trust * windows.log_likelihood(samples[kind])
         evidence[kind] = found.log_evidence

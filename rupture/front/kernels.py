@@ -6,7 +6,23 @@ import numba
 import numpy as np
 
 # Columns of a parameter table (the order of rupture.front.lines.PARAMETERS).
-EAST, NORTH, START, AZIMUTH, SPEED, LENGTH, AZIMUTH_2, SPEED_2, LENGTH_2, DURATION, CODA, CODA_TIME, STRAY, P_SHARE, RISE = range(15)
+(
+    EAST,
+    NORTH,
+    START,
+    AZIMUTH,
+    SPEED,
+    LENGTH,
+    AZIMUTH_2,
+    SPEED_2,
+    LENGTH_2,
+    DURATION,
+    CODA,
+    CODA_TIME,
+    STRAY,
+    P_SHARE,
+    RISE,
+) = range(15)
 
 NODES = 24
 """Points that stand for one arm: a front of 100 km is then sampled every 4 km, finer than any window resolves."""
@@ -60,7 +76,23 @@ def _taper(x):  # pragma: no cover - compiled
 
 @numba.njit(cache=True)
 def _site_log_likelihood(
-    theta, count, east, north, time, weight, ratio, log_power, window_time, window_s, share, place, tables, primary, grid, power, pull
+    theta,
+    count,
+    east,
+    north,
+    time,
+    weight,
+    ratio,
+    log_power,
+    window_time,
+    window_s,
+    share,
+    place,
+    tables,
+    primary,
+    grid,
+    power,
+    pull,
 ):  # pragma: no cover - compiled
     """One site. `ratio` is (A, P, T): contiguous in time, as arrivals are; `tables` is (W, 3, D): time, log slowness, energy.
 
@@ -166,7 +198,21 @@ def _site_log_likelihood(
 
 @numba.njit(parallel=True, cache=True)
 def log_likelihoods(
-    particles, first, ratio, angles, nodes_p, log_power, window_time, window_s, share, places, tables, primary, grid, power_sigma, power_share
+    particles,
+    first,
+    ratio,
+    angles,
+    nodes_p,
+    log_power,
+    window_time,
+    window_s,
+    share,
+    places,
+    tables,
+    primary,
+    grid,
+    power_sigma,
+    power_share,
 ):  # pragma: no cover - compiled
     """Return the log-likelihood of each row of a parameter table, shape (particles, sites).
 
@@ -214,10 +260,23 @@ def log_likelihoods(
         for s in range(sites):
             a, b = first[s], first[s + 1]
             total, number, mean, square = _site_log_likelihood(
-                particles[i], nodes, east, north, time, weight,
+                particles[i],
+                nodes,
+                east,
+                north,
+                time,
+                weight,
                 ratio[angles * nodes_p * a : angles * nodes_p * b].reshape(angles, nodes_p, b - a),
-                log_power[a:b], window_time[a:b],
-                window_s[s], share[s], places[s], tables, primary, grid, power, pull,
+                log_power[a:b],
+                window_time[a:b],
+                window_s[s],
+                share[s],
+                places[s],
+                tables,
+                primary,
+                grid,
+                power,
+                pull,
             )
             if number > 1.0:
                 # The site's amplification is unknown: its mean misfit is free.

@@ -8,8 +8,22 @@ import numpy as np
 from numpy.typing import NDArray
 
 from rupture.front.kernels import (
-    AZIMUTH, AZIMUTH_2, CODA, CODA_TIME, DURATION, EAST, LENGTH, LENGTH_2, NORTH, P_SHARE, RISE, SPEED, SPEED_2, START, STRAY,
-)  # fmt: skip
+    AZIMUTH,
+    AZIMUTH_2,
+    CODA,
+    CODA_TIME,
+    DURATION,
+    EAST,
+    LENGTH,
+    LENGTH_2,
+    NORTH,
+    P_SHARE,
+    RISE,
+    SPEED,
+    SPEED_2,
+    START,
+    STRAY,
+)
 
 Array = NDArray[np.float64]
 
@@ -85,7 +99,8 @@ class LinePrior:
                 return rng.uniform(0, 2 * np.pi, count)
             return self.axis_rad + np.pi * rng.integers(2, size=count) + rng.normal(0, AXIS_WIDTH_RAD, count)
         if parameter in (SPEED, SPEED_2):
-            return rng.uniform(*np.log(self.speed_m_s), count)
+            low, high = np.log(self.speed_m_s)
+            return rng.uniform(low, high, count)
         if parameter == LENGTH_2:
             return rng.uniform(self.shortest_ratio, 1.0, count)
         centre, width = self._normal(parameter)

@@ -98,7 +98,9 @@ def smooth_front(
     over = 0.0
     forward = np.empty((frames, grid.east_m.size))
     forward_over = np.empty(frames)
-    emission = np.exp(weight * (log_ratio[:, first:] - np.maximum(log_ratio[:, first:].max(axis=0), 0.0))).T.astype(float)
+    emission = np.exp(weight * (log_ratio[:, first:] - np.maximum(log_ratio[:, first:].max(axis=0), 0.0))).T.astype(
+        float
+    )
     nothing = np.exp(-weight * np.maximum(log_ratio[:, first:].max(axis=0), 0.0)).astype(float)
     for f in range(frames):
         if f:

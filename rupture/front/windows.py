@@ -103,7 +103,7 @@ def lay_out(
         stride = max(1, round(hop_s / float(d.time_s[1] - d.time_s[0])))
         begin, end = onset["P"][k] - 1.0, onset["S"][k] + longest_s
         chosen = np.flatnonzero((d.time_s >= begin) & (d.time_s <= end))[::stride]
-        masked = np.isnan(d.coherent).all(axis=0)[chosen]
+        masked = np.isnan(d.coherent[:, chosen]).all(axis=0)
         table = np.exp(phase_table(d, slowness_spread)[:, :, chosen])
         ratios.append(np.ascontiguousarray(table, np.float32).ravel())
         power = d.power[chosen]

@@ -102,9 +102,15 @@ class Network:
         step = self.sites[0].step_s
         start = min(s.start_s for s in self.sites)
         end = max(s.start_s + s.step_s * s.data.shape[1] for s in self.sites)
-        high = min(0.3 / step, 1.5 * max((b for _, b in self.direction.bands_hz), default=2.0)) if self.direction.bands_hz else min(0.3 / step, 2.0)
+        high = (
+            min(0.3 / step, 1.5 * max((b for _, b in self.direction.bands_hz), default=2.0))
+            if self.direction.bands_hz
+            else min(0.3 / step, 2.0)
+        )
         sampling = Sampling(start, step, int((end - start) / step), high)
-        receivers = Receivers(*(np.array([getattr(s, n) for s in self.sites]) for n in ("longitude_deg", "latitude_deg")))
+        receivers = Receivers(
+            *(np.array([getattr(s, n) for s in self.sites]) for n in ("longitude_deg", "latitude_deg"))
+        )
         engine = ScatteringEngine(ray_records, self.coda, trial.seed) if self.coda.energy_ratio > 0 else ray_records
         motion = engine(source, receivers, self.layers, sampling)
         out = []
@@ -153,7 +159,7 @@ def noise_like(site: Site, window_s: tuple[float, float], samples: int, rng: np.
 
 
 def _smooth(power: Array, width: int = 9) -> Array:
-    """Running mean: a single stretch's periodogram scatters by its own size."""
+    """Return the running mean: a single stretch's periodogram scatters by its own size."""
     padded = np.pad(power, width // 2, mode="edge")
     smoothed: Array = np.convolve(padded, np.full(width, 1.0 / width), mode="valid")
     return smoothed

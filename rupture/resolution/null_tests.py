@@ -1,4 +1,4 @@
-"""Null tests: would these very sites have told a direction anyway?"""
+"""Null tests: whether these very sites would have told a direction anyway."""
 
 from __future__ import annotations
 
@@ -47,7 +47,9 @@ def make_trials(count: int, length_km: float, seed: int, azimuth_deg: float | No
         first = total if kind == "unilateral" else total / (1 + rng.uniform(1 / 3, 1)) if kind == "bilateral" else 0.0
         second = total - first if kind == "bilateral" else 0.0
         duration = max(2.0, 0.6 * length_km / 2.8)
-        trials.append(Trial(kind, float(azimuth % 360), speed, float(first), float(second), duration, int(rng.integers(2**31))))
+        trials.append(
+            Trial(kind, float(azimuth % 360), speed, float(first), float(second), duration, int(rng.integers(2**31)))
+        )
     return trials
 
 
@@ -103,7 +105,10 @@ def summarise(rows: Sequence[dict[str, Any]]) -> dict[str, Any]:
     speed = [abs(r["speed_km_s"] / r["true_speed_km_s"] - 1) for r in known]
     length = [abs(r["length_km"] / r["true_length_km"] - 1) for r in known]
     confusion = {
-        true: {found: sum(r["true_kind"] == true and r["kind"] == found for r in rows) for found in (*KINDS, "undetermined")}
+        true: {
+            found: sum(r["true_kind"] == true and r["kind"] == found for r in rows)
+            for found in (*KINDS, "undetermined")
+        }
         for true in KINDS
     }
     result: dict[str, Any] = {
@@ -112,7 +117,11 @@ def summarise(rows: Sequence[dict[str, Any]]) -> dict[str, Any]:
         "wrong_kind_probability": wrong / len(named) if named else None,
         "confusion": confusion,
     }
-    for name, errors in (("direction_error_deg", direction), ("speed_error_share", speed), ("length_error_share", length)):
+    for name, errors in (
+        ("direction_error_deg", direction),
+        ("speed_error_share", speed),
+        ("length_error_share", length),
+    ):
         for q in (50, 90):
             result[f"{name}_p{q}"] = round(float(np.percentile(errors, q)), 4) if errors else None
     result["sentence"] = _sentence(result, len(stationary), false, len(moving))
