@@ -11,6 +11,7 @@ if TYPE_CHECKING:
     from rupture.records.events import event_from_origin, read_event
     from rupture.records.report import Calibration, ChannelFound, ChannelReport, Correction, SiteSet, SiteVerdict
     from rupture.records.settings import CorrectionSettings, RecordSettings
+    from rupture.records.sources import FdsnSource, Fetched, FetchSettings, sds_files
 
 _PLACES = {
     "Arrivals": "arrivals",
@@ -19,6 +20,9 @@ _PLACES = {
     "ChannelReport": "report",
     "Correction": "report",
     "CorrectionSettings": "settings",
+    "FdsnSource": "sources",
+    "FetchSettings": "sources",
+    "Fetched": "sources",
     "RecordSettings": "settings",
     "SiteSet": "report",
     "SiteVerdict": "report",
@@ -26,6 +30,7 @@ _PLACES = {
     "event_from_origin": "events",
     "read_event": "events",
     "read_sites": "assemble",
+    "sds_files": "sources",
 }
 
 __all__ = [
@@ -35,6 +40,9 @@ __all__ = [
     "ChannelReport",
     "Correction",
     "CorrectionSettings",
+    "FdsnSource",
+    "FetchSettings",
+    "Fetched",
     "RecordSettings",
     "SiteSet",
     "SiteVerdict",
@@ -42,6 +50,7 @@ __all__ = [
     "event_from_origin",
     "read_event",
     "read_sites",
+    "sds_files",
 ]
 
 

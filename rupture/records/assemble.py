@@ -25,6 +25,7 @@ from rupture.records.read import RawChannel, read_channels, read_inventories, re
 from rupture.records.report import Calibration, ChannelFound, ChannelReport, SiteSet, SiteVerdict, UnusableError
 from rupture.records.sensors import Grid, Prepared, Sensor, prepare
 from rupture.records.settings import RecordSettings
+from rupture.records.sources import resolve
 from rupture.site import Site
 
 _FASTEST_HZ = 20.0
@@ -45,7 +46,7 @@ def read_sites(
     Parameters
     ----------
     records
-        Files, folders or globs of anything that ObsPy reads.
+        Files, folders or globs of anything that ObsPy reads; `sds:FOLDER` for an SDS archive.
     inventory
         StationXML files at response level.
     event
@@ -75,7 +76,8 @@ def read_sites(
     model = arrival_model or first_arrivals
     metadata = read_inventories(inventory)
     after_s = settings.after_s or _farthest_end(metadata, event)
-    raw = read_channels(record_files(records), event, settings.before_s, after_s)
+    files = resolve(records, metadata, event, settings.before_s, after_s)
+    raw = read_channels(record_files(files), event, settings.before_s, after_s)
     sensors, rows, arrivals = _sensors(raw, MetadataIndex(metadata), event, settings, model)
     plan = plan_sites(sensors, event, arrivals, settings)
     rows += plan.left_out
