@@ -8,7 +8,8 @@ from typing import TYPE_CHECKING, Any
 if TYPE_CHECKING:
     from rupture.records.arrivals import Arrivals, arrivals_from_times
     from rupture.records.assemble import read_sites
-    from rupture.records.events import event_from_origin, read_event
+    from rupture.records.calibration import calibrate
+    from rupture.records.events import event_from_origin, read_event, read_events
     from rupture.records.report import Calibration, ChannelFound, ChannelReport, Correction, SiteSet, SiteVerdict
     from rupture.records.settings import CorrectionSettings, RecordSettings
     from rupture.records.sources import FdsnSource, Fetched, FetchSettings, sds_files
@@ -27,8 +28,10 @@ _PLACES = {
     "SiteSet": "report",
     "SiteVerdict": "report",
     "arrivals_from_times": "arrivals",
+    "calibrate": "calibration",
     "event_from_origin": "events",
     "read_event": "events",
+    "read_events": "events",
     "read_sites": "assemble",
     "sds_files": "sources",
 }
@@ -47,8 +50,10 @@ __all__ = [
     "SiteSet",
     "SiteVerdict",
     "arrivals_from_times",
+    "calibrate",
     "event_from_origin",
     "read_event",
+    "read_events",
     "read_sites",
     "sds_files",
 ]

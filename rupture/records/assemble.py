@@ -189,21 +189,22 @@ def _build(
             (sites if verdict.used else rejected).append(site)
         if report is not None:
             report(number + 1, len(jobs))
-    sites, verdicts = _compared(sites, verdicts, event, settings, model)
+    sites, verdicts = _compared(sites, verdicts, context, model)
     return sites, rejected, verdicts
 
 
 def _compared(
-    sites: list[Site], verdicts: list[SiteVerdict], event: Event, settings: RecordSettings, model: ArrivalModel
+    sites: list[Site], verdicts: list[SiteVerdict], context: Context, model: ArrivalModel
 ) -> tuple[list[Site], list[SiteVerdict]]:
     """Hold the sites against each other and put all findings into the verdicts' words."""
+    event = context.event
     placed = []
     for site in sites:
         distance, _, _ = distance_azimuth(
             event.longitude_deg, event.latitude_deg, site.longitude_deg, site.latitude_deg
         )
         placed.append(Placed(site, float(distance), event.depth_km * KM, model(float(distance), event.depth_km)))
-    timed = travel_time_findings(placed, settings.corrections)
+    timed = travel_time_findings(placed, context.settings.corrections, context.calibration)
     sizes = amplitude_findings(placed)
     added = {
         site.code: tuple(c for c in (time, size) if c is not None)

@@ -2,7 +2,7 @@
 
 from __future__ import annotations
 
-from collections.abc import Sequence
+from collections.abc import Mapping, Sequence
 from dataclasses import dataclass, replace
 
 import numpy as np
@@ -11,7 +11,8 @@ from numpy.typing import NDArray
 from rupture.conventions import ACC_Z, KM
 from rupture.records.arrivals import Arrivals
 from rupture.records.clocks import pick_onset
-from rupture.records.report import Correction
+from rupture.records.relations import Mean, mean_or_none
+from rupture.records.report import Calibration, Correction
 from rupture.records.settings import CorrectionSettings
 from rupture.site import Site
 
@@ -40,7 +41,9 @@ class Placed:
     arrivals: Arrivals
 
 
-def travel_time_findings(sites: Sequence[Placed], apply: CorrectionSettings) -> list[tuple[Site, Correction | None]]:
+def travel_time_findings(
+    sites: Sequence[Placed], apply: CorrectionSettings, calibration: Mapping[str, Calibration]
+) -> list[tuple[Site, Correction | None]]:
     """Compare the onsets of P of all sites; return each site, moved where its clock is off, and the finding.
 
     A common part of the residuals is the origin's or the Earth's and is taken out: the median, and with six
@@ -52,17 +55,18 @@ def travel_time_findings(sites: Sequence[Placed], apply: CorrectionSettings) -> 
     ]
     residual = np.array([m.value - p.arrivals.p_s if m else np.nan for m, p in zip(picks, sites, strict=True)])
     travel = np.array([p.arrivals.p_s for p in sites])
-    known = np.isfinite(residual)
-    common = common_part(travel[known], residual[known])
+    picked = np.isfinite(residual)
+    common = common_part(travel[picked], residual[picked])
     results: list[tuple[Site, Correction | None]] = []
     for placed, pick, value in zip(sites, picks, residual, strict=True):
-        if pick is None or common is None:
-            results.append((placed.site, None))
-            continue
-        level, scatter = common
-        off = float(value - level(placed.arrivals.p_s))
-        error = float(np.hypot(pick.error, max(scatter, _STATION_TERM * placed.arrivals.p_s)))
-        results.append(_judged(placed.site, off, error, apply))
+        known = calibration.get(placed.site.code, Calibration()).travel_time_s
+        means = [Mean(*known, 1)] if known is not None else []
+        if pick is not None and common is not None:
+            level, scatter = common
+            error = float(np.hypot(pick.error, max(scatter, _STATION_TERM * placed.arrivals.p_s)))
+            means.append(Mean(float(value - level(placed.arrivals.p_s)), error, 1))
+        off = mean_or_none(means)
+        results.append((placed.site, None) if off is None else _judged(placed.site, off.value, off.error, apply))
     return results
 
 

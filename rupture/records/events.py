@@ -34,22 +34,36 @@ def read_event(path: str | Path, event_id: str | None = None) -> Event:
     InputError
         When the file cannot be read, holds no or several events, or the origin lacks time, place or depth.
     """
-    import obspy
-
     path = Path(path)
-    if not path.is_file():
-        raise InputError(f"{path}: no such event file")
-    try:
-        catalogue = obspy.read_events(str(path))
-    except Exception as error:
-        raise InputError(f"{path}: ObsPy cannot read this as an event file (QuakeML): {error}") from error
-    events = [e for e in catalogue if event_id is None or str(e.resource_id).rpartition("/")[2].endswith(event_id)]
+    events = [
+        e for e in _catalogue(path) if event_id is None or str(e.resource_id).rpartition("/")[2].endswith(event_id)
+    ]
     if not events:
         wanted = f" with identifier {event_id}" if event_id else ""
         raise InputError(f"{path}: the file holds no event{wanted}")
     if len(events) > 1:
         raise InputError(f"{path}: the file holds {len(events)} events; name one by its identifier, or keep one only")
     return _convert(events[0], path)
+
+
+def read_events(path: str | Path) -> tuple[Event, ...]:
+    """Read all events of a file, for example small ones that calibrate the sites; errors as for `read_event`."""
+    path = Path(path)
+    found = _catalogue(path)
+    if not len(found):
+        raise InputError(f"{path}: the file holds no event")
+    return tuple(_convert(event, path) for event in found)
+
+
+def _catalogue(path: Path) -> Any:
+    import obspy
+
+    if not path.is_file():
+        raise InputError(f"{path}: no such event file")
+    try:
+        return obspy.read_events(str(path))
+    except Exception as error:
+        raise InputError(f"{path}: ObsPy cannot read this as an event file (QuakeML): {error}") from error
 
 
 def _convert(found: Any, path: Path) -> Event:
