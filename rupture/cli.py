@@ -90,6 +90,44 @@ def build_parser() -> argparse.ArgumentParser:
     simulate.add_argument("--seed", type=int, help="seed of all random numbers (wins over the file)")
     _out(simulate)
 
+    resolve = _command(
+        commands, "resolve", "what these sites, real or planned, could have resolved", "rupture.planning:resolve"
+    )
+    _inputs(resolve)
+    resolve.add_argument("--trace", metavar="FILE", help="fault trace (GeoJSON LineString): ruptures run along it")
+    _out(resolve)
+    group = resolve.add_argument_group("study (wins over [resolve.study] of the job file)")
+    group.add_argument("--ruptures", type=int, metavar="N", help="synthetic ruptures per magnitude and noise factor")
+    group.add_argument("--at-magnitude", nargs="+", type=float, metavar="M", help="magnitudes; by default the event's")
+    group.add_argument(
+        "--noise-factor", nargs="+", type=float, metavar="F", help="rotation noise relative to that of the sites"
+    )
+    group.add_argument("--leave-one-out", action="store_true", help="again without each site in turn")
+    group.add_argument("--workers", type=int, metavar="N", help="processes on this machine")
+    group.add_argument("--scheduler", metavar="ADDRESS", help="use an existing Dask scheduler")
+    resolve.add_argument("--json", action="store_true", help="print resolution.json on stdout instead of sentences")
+
+    siting = _command(commands, "siting", "where one more site helps most", "rupture.planning:siting")
+    _inputs(siting)
+    siting.add_argument("--trace", metavar="FILE", help="fault trace (GeoJSON LineString): ruptures run along it")
+    _out(siting)
+    places = siting.add_mutually_exclusive_group(required=True)
+    places.add_argument(
+        "--candidates", metavar="FILE", help="places: CSV (code, longitude_deg, latitude_deg, cost) or GeoJSON points"
+    )
+    places.add_argument(
+        "--candidate-grid",
+        nargs=2,
+        type=float,
+        metavar=("KM", "KM"),
+        help="half width and spacing of a grid around the epicentre",
+    )
+    siting.add_argument("--next", type=int, default=3, metavar="N", help="how many sites to choose (default 3)")
+    siting.add_argument(
+        "--components", default="6C", choices=["6C", "3C+rotZ", "Z+rotH"], help="what a new site records (default 6C)"
+    )
+    siting.add_argument("--json", action="store_true", help="print the ranking as JSON")
+
     template = _command(commands, "template", "a commented job or scenario file on stdout", "rupture.commands:template")
     template.add_argument("kind", choices=["track", "simulate"], help="which file")
 

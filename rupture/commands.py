@@ -17,9 +17,9 @@ from rupture.settings import InputSettings, Job, NullTestSettings, read_job
 from rupture.wording import SHORT_CAUTION, answer_sentences
 
 
-def job_from(options: argparse.Namespace) -> Job:
-    """Return the job of a command line; options given there win over the job file."""
-    job = read_job(options.job) if options.job else Job()
+def job_from(options: argparse.Namespace, base: Job | None = None) -> Job:
+    """Return the job of a command line; options given there win over the job file, or over `base`."""
+    job = base or (read_job(options.job) if options.job else Job())
     given: dict[str, Any] = {}
     if options.records:
         given["records"] = tuple(options.records)
@@ -252,7 +252,7 @@ def _draw(result: Result, folder: Path, progress: Progress, style: str | None = 
     from rupture.pictures import draw_all, write_report
 
     with progress.stage("figures") as report:
-        draw_all(result, folder / "figures", style, report)
+        draw_all(result, folder / "figures", style, report, workers=2)
     with progress.stage("report page"):
         write_report(result, folder / "report.html")
 

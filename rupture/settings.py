@@ -14,6 +14,7 @@ from rupture.front import FitSettings, SmoothSettings
 from rupture.job import nearest_key, read_toml, settings_from_table
 from rupture.mapping import StackSettings
 from rupture.records import RecordSettings
+from rupture.resolution.settings import PlannedSite, StudySettings
 
 
 @dataclass(frozen=True)
@@ -78,8 +79,20 @@ class NullTestSettings:
 
 
 @dataclass(frozen=True)
+class ResolveSettings:
+    """A resolution study, and how much scattered energy its records have over the direct."""
+
+    study: StudySettings = field(default_factory=StudySettings)
+    coda_energy_ratio: float = 0.3
+
+    def __post_init__(self) -> None:
+        if not 0 <= self.coda_energy_ratio <= 3:
+            raise InputError("coda_energy_ratio must lie between 0 and 3")
+
+
+@dataclass(frozen=True)
 class Job:
-    """A whole run; every field but the seed is a table of the job file."""
+    """A whole run; every field but seed and planned sites is a table of the job file."""
 
     input: InputSettings = field(default_factory=InputSettings)
     records: RecordSettings = field(default_factory=RecordSettings)
@@ -90,6 +103,8 @@ class Job:
     smooth: SmoothSettings = field(default_factory=SmoothSettings)
     fit: FitSettings = field(default_factory=FitSettings)
     null_tests: NullTestSettings = field(default_factory=NullTestSettings)
+    resolve: ResolveSettings = field(default_factory=ResolveSettings)
+    planned: tuple[PlannedSite, ...] = ()
     seed: int = 1
 
     def as_table(self) -> dict[str, Any]:
@@ -112,7 +127,12 @@ def read_job(path: str | Path) -> Job:
         When the file cannot be read or taken.
     """
     path = Path(path)
-    table = read_toml(path)
+    job = job_from_table(read_toml(path), str(path))
+    return replace(job, input=_beside(job.input, path.parent), earth=_earth_beside(job.earth, path.parent))
+
+
+def job_from_table(table: Mapping[str, Any], path: str) -> Job:
+    """Return the job that a table holds; `path` names it in errors."""
     sections = {f.name: f for f in fields(Job)}
     wrong = [f"{path}: unknown table '{name}'{nearest_key(name, sections)}" for name in table if name not in sections]
     values: dict[str, Any] = {}
@@ -125,6 +145,8 @@ def read_job(path: str | Path) -> Job:
                 wrong.append(f"{path}: 'seed' = {content!r}: a whole number from 0 up is needed")
             else:
                 values[name] = content
+        elif name == "planned":
+            values[name] = _planned(content, path, wrong)
         elif not isinstance(content, Mapping):
             wrong.append(f"{path}: '{name}' must be a table, [{name}]")
         else:
@@ -134,8 +156,20 @@ def read_job(path: str | Path) -> Job:
                 wrong.append(str(error))
     if wrong:
         raise InputError("\n".join(wrong))
-    job = Job(**values)
-    return replace(job, input=_beside(job.input, path.parent), earth=_earth_beside(job.earth, path.parent))
+    return Job(**values)
+
+
+def _planned(content: Any, path: str, wrong: list[str]) -> tuple[PlannedSite, ...]:
+    if not isinstance(content, list | tuple) or not all(isinstance(site, Mapping) for site in content):
+        wrong.append(f"{path}: planned sites are [[planned]] tables")
+        return ()
+    sites = []
+    for number, site in enumerate(content, start=1):
+        try:
+            sites.append(settings_from_table(PlannedSite, site, f"{path} [[planned]] {number}"))
+        except InputError as error:
+            wrong.append(str(error))
+    return tuple(sites)
 
 
 def _beside(given: InputSettings, folder: Path) -> InputSettings:
