@@ -109,7 +109,10 @@ class Job:
 
     def as_table(self) -> dict[str, Any]:
         """Return plain values, keys without a value left out, as they go into job.toml."""
-        return _plain(dataclasses.asdict(self))
+        table = _plain(dataclasses.asdict(self))
+        if not self.planned:
+            del table["planned"]
+        return table
 
 
 def _plain(value: Any) -> Any:
