@@ -2,11 +2,12 @@
 
 from __future__ import annotations
 
+import itertools
 from dataclasses import dataclass
 
 import numpy as np
 from numpy.typing import NDArray
-from scipy import fft, ndimage
+from scipy import ndimage
 
 from rupture.conventions import ACC_E, ACC_N, ACC_Z, ROT_E, ROT_N, ROT_Z, slowness_vector
 from rupture.direction.covariance import (
@@ -16,7 +17,8 @@ from rupture.direction.covariance import (
     mean_covariance,
     sliding_covariances,
 )
-from rupture.direction.likelihood import horizontal_form, radial_form, scale_free, vertical_form
+from rupture.direction.likelihood import horizontal_form, vertical_form
+from rupture.direction.posterior import fill_posterior, plane_wave_equation, polarisation_equation, turn_weights
 from rupture.errors import DataError, InputError
 from rupture.site import Site
 
@@ -128,7 +130,7 @@ def default_bands(site: Site) -> tuple[tuple[float, float], ...]:
     low, high = max(site.band_hz[0], 0.05), min(site.band_hz[1], 1.0 / (3.0 * site.step_s), 5.0)
     corners = (0.2, 0.5, 1.2)
     bands = []
-    for a, b in zip(corners[:-1], corners[1:], strict=True):
+    for a, b in itertools.pairwise(corners):
         inside = max(a, low), min(b, high)
         if inside[1] >= 1.4 * inside[0]:
             bands.append(inside)
@@ -162,7 +164,9 @@ def estimate_direction(site: Site, noise_window_s: tuple[float, float], settings
     nyquist = 0.5 / site.step_s
     for low, high in bands:
         if high * 7 / 6 > nyquist:
-            raise DataError(f"site {site.code}: band {low:g} to {high:g} Hz reaches above its Nyquist frequency {nyquist:g} Hz")
+            raise DataError(
+                f"site {site.code}: band {low:g} to {high:g} Hz reaches above its Nyquist frequency {nyquist:g} Hz"
+            )
     has = site.present
     horizontal = bool(has[[ACC_Z, ROT_E, ROT_N]].all())
     vertical = bool(has[[ACC_E, ACC_N, ROT_Z]].all())
@@ -193,18 +197,23 @@ def estimate_direction(site: Site, noise_window_s: tuple[float, float], settings
             power += np.maximum(sum(covariance[entry(k, k)] - noise[entry(k, k)] for k in (ACC_E, ACC_N, ACC_Z)), 0.0)
         degrees = independent_samples(band, window_s)
         error = float(np.hypot(settings.model_error_share, site.rotation_error_share))
-        gain = np.zeros((trial.shape[1], time.size))
+        equations = []
         if horizontal:
-            gain += _equation_gain(horizontal_form(trial), (ROT_E, ROT_N), covariance, noise, 2 * degrees, error)
+            equations.append(plane_wave_equation(horizontal_form(trial), (ROT_E, ROT_N), covariance, noise, error))
         if vertical:
-            gain += _equation_gain(vertical_form(trial), (ROT_Z,), covariance, noise, degrees, error)
+            equations.append(plane_wave_equation(vertical_form(trial), (ROT_Z,), covariance, noise, error))
         if vertical and not horizontal:
-            gain += _polarisation(grid[0].ravel(), covariance, settings.polarisation_ratio, degrees)
-        ratio, coherent[b] = _posterior_ratio(gain, settings.stray_share)
-        ratio = ratio.reshape(shape[1:])
-        if site.azimuth_error_rad > 0:
-            ratio = _turn_blur(ratio, site.azimuth_error_rad)
-        ratios[b] = np.log(ratio)
+            equations.append(
+                polarisation_equation(theta, slowness.size, covariance, settings.polarisation_ratio, degrees)
+            )
+        fill_posterior(
+            ratios[b],
+            coherent[b],
+            equations,
+            degrees,
+            settings.stray_share,
+            turn_weights(site.azimuth_error_rad, theta.size),
+        )
         ratios[b][..., ~clear] = 0.0
         coherent[b, ~clear] = np.nan
         power[~clear] = 0.0
@@ -213,51 +222,6 @@ def estimate_direction(site: Site, noise_window_s: tuple[float, float], settings
     return SiteDirection(
         site.code, time, np.array(bands), np.array(windows), theta, slowness, total, ratios, coherent, power, overlap
     )  # fmt: skip
-
-
-def _equation_gain(
-    form: Array, rows: tuple[int, ...], covariance: Array, noise: Array, degrees: float, error: float
-) -> Array:
-    """Log-likelihood of each trial over that of rotation which no translation explains, shape (trials, T)."""
-    floor = error**2 * sum(covariance[entry(k, k)] for k in rows)
-    expected = (form @ noise)[:, None] + floor
-    unexplained = sum(noise[entry(k, k)] for k in rows) + floor
-    tiny = np.finfo(float).tiny
-    trial = scale_free(form @ covariance / np.maximum(expected, tiny), degrees)
-    total = sum(covariance[entry(k, k)] for k in rows)
-    # Unknown error scales are compared at equal scale: what counts is how much residual power a trial leaves.
-    trial -= 0.5 * degrees * np.log(np.maximum(expected, tiny))
-    null = scale_free(total / np.maximum(unexplained, tiny), degrees) - 0.5 * degrees * np.log(np.maximum(unexplained, tiny))
-    return trial - null
-
-
-def _polarisation(back_azimuth_rad: Array, covariance: Array, ratio: float, degrees: float) -> Array:
-    along = radial_form(back_azimuth_rad) @ covariance
-    floor = 0.05 * (covariance[entry(ACC_E, ACC_E)] + covariance[entry(ACC_N, ACC_N)])
-    limit = ratio**2 * covariance[entry(ACC_Z, ACC_Z)] + floor
-    gain = scale_free(along / np.maximum(limit, np.finfo(float).tiny), degrees)
-    # A preference among directions is no evidence for a wave: the mean over directions stays one.
-    return gain - np.log(np.exp(gain).mean(axis=0))
-
-
-def _posterior_ratio(gain: Array, stray_share: float) -> tuple[Array, Array]:
-    """Posterior over prior with the share of windows that hold no coherent wave mixed in, and that share."""
-    largest = np.maximum(gain.max(axis=0), 0.0)
-    weight = np.exp(gain - largest)
-    evidence = weight.mean(axis=0)
-    null = np.exp(-largest)
-    coherent = evidence / (evidence + null)
-    believed = coherent * (1.0 - stray_share)
-    return believed * weight / evidence + (1.0 - believed), coherent
-
-
-def _turn_blur(ratio: Array, sigma_rad: float) -> Array:
-    """Blur over back-azimuth with a wrapped Gaussian, in probability."""
-    count = ratio.shape[0]
-    order = np.minimum(np.arange(count), count - np.arange(count))
-    damping = np.exp(-0.5 * (order * sigma_rad) ** 2)
-    blurred = fft.ifft(fft.fft(ratio, axis=0) * damping[:, None, None], axis=0).real
-    return np.maximum(blurred, ratio.min(axis=0, keepdims=True))
 
 
 def _window_times(site: Site, window_s: float, hop_s: float) -> Array:

@@ -59,20 +59,3 @@ def radial_form(back_azimuth_rad: Array) -> Array:
     form[:, entry(ACC_N, ACC_N)] = cosine**2
     form[:, entry(ACC_E, ACC_N)] = 2 * sine * cosine
     return form
-
-
-def scale_free(misfit: Array, degrees: float) -> Array:
-    """Return the log-likelihood of a misfit with an unknown error scale of at least one.
-
-    `misfit` is residual power over expected error power. The scale k >= 1 of the error has a Jeffreys prior and is
-    taken at its most likely value: above the expected errors the result is that of a Student distribution, below
-    them nothing more is gained, so that no trial is rewarded for fitting noise.
-
-    Parameters
-    ----------
-    misfit
-        Residual power over expected error power, any shape.
-    degrees
-        Independent residuals in the window.
-    """
-    return -0.5 * degrees * (np.log(np.maximum(misfit, 1.0)) + np.minimum(misfit, 1.0) - 1.0)

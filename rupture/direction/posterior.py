@@ -1,0 +1,159 @@
+"""From the equations of a plane wave to the posterior of its slowness, window by window."""
+
+from __future__ import annotations
+
+from collections.abc import Sequence
+from dataclasses import dataclass
+
+import numpy as np
+from numpy.typing import NDArray
+from scipy import special
+
+from rupture.conventions import ACC_E, ACC_N, ACC_Z
+from rupture.direction.covariance import entry
+from rupture.direction.kernels import BLOCK, posterior_log_ratio
+from rupture.direction.likelihood import radial_form
+
+Array = NDArray[np.float64]
+
+_TINY = np.finfo(float).tiny ** 0.25
+"""Power that is as good as none; its fourth power still is a number."""
+
+
+@dataclass(frozen=True)
+class Equation:
+    """A relation that a plane wave fulfils, as powers of its residual.
+
+    The error of the relation has an unknown scale of at least one with a Jeffreys prior, taken at its most likely
+    value: above the expected errors the result is that of a Student distribution, below them nothing more is gained
+    than a Gaussian of the expected width would, so that no trial is rewarded without bound for fitting noise.
+
+    Attributes
+    ----------
+    form
+        Coefficients of the residual power, shape (trials, 21).
+    covariance
+        Shape (21, T).
+    noise, floor
+        Expected residual power of each trial, shape (trials,), and of each window, shape (T,).
+    unit
+        Power that the residual is compared with, shape (T,).
+    power
+        Number of residuals in it.
+    null
+        Log-likelihood for one independent sample, times -2, when there is no wave, shape (T,).
+    """
+
+    form: Array
+    covariance: Array
+    noise: Array
+    floor: Array
+    unit: Array
+    power: int
+    null: Array
+
+
+def plane_wave_equation(form: Array, rows: tuple[int, ...], covariance: Array, noise: Array, error: float) -> Equation:
+    """Return a rotation equation; without a wave, rotation of `rows` is left as no translation explains it.
+
+    Parameters
+    ----------
+    form
+        Coefficients of the residual power, shape (trials, 21).
+    rows
+        Rotation components in it.
+    covariance, noise
+        Shapes (21, T) and (21,).
+    error
+        Model error as a share of the rotation's amplitude.
+    """
+    total = np.maximum(np.sum([covariance[entry(k, k)] for k in rows], axis=0), _TINY)
+    floor = np.maximum(error**2 * total, _TINY)
+    alone = sum(float(noise[entry(k, k)]) for k in rows) + floor
+    null = len(rows) * (np.log(np.maximum(total, alone) / total) + np.minimum(total / alone, 1.0) - 1.0)
+    return Equation(form, covariance, np.maximum(form @ noise, 0.0), floor, total, len(rows), null)
+
+
+def polarisation_equation(
+    back_azimuth_rad: Array, speeds: int, covariance: Array, ratio: float, degrees: float
+) -> Equation:
+    """Return the soft rule that horizontal motion along the ray stays below `ratio` times the vertical motion.
+
+    A preference among directions is no evidence for a wave: its likelihood is one in the mean over directions.
+
+    Parameters
+    ----------
+    back_azimuth_rad
+        Trial directions, shape (A,).
+    speeds
+        How many trial slownesses there are for each.
+    covariance
+        Shape (21, T).
+    ratio
+        Horizontal over vertical amplitude.
+    degrees
+        Independent samples in a window.
+    """
+    form = radial_form(back_azimuth_rad)
+    shake = covariance[entry(ACC_E, ACC_E)] + covariance[entry(ACC_N, ACC_N)]
+    limit = np.maximum(ratio**2 * covariance[entry(ACC_Z, ACC_Z)] + 0.05 * shake, _TINY)
+    misfit = form @ covariance / limit
+    gain = -0.5 * degrees * (np.log(np.maximum(misfit, 1.0)) + np.minimum(misfit, 1.0) - 1.0)
+    largest = gain.max(axis=0)
+    null = -2.0 / degrees * (largest + np.log(np.exp(gain - largest).mean(axis=0)))
+    form = np.repeat(form, speeds, axis=0)
+    return Equation(form, covariance, np.zeros(len(form)), limit, limit, 1, null)
+
+
+def fill_posterior(
+    log_ratio: NDArray[np.float32],
+    coherent: Array,
+    equations: Sequence[Equation],
+    degrees: float,
+    stray_share: float,
+    blur: Array,
+) -> None:
+    """Fill the log of posterior over prior, shape (A, P, T), and the probability of a coherent wave, shape (T,).
+
+    Parameters
+    ----------
+    log_ratio, coherent
+        Filled.
+    equations
+        What the wave fulfils.
+    degrees
+        Independent samples in a window.
+    stray_share
+        Share of coherent windows whose wave comes from elsewhere.
+    blur
+        As `turn_weights` gives it.
+    """
+    angles, speeds, windows = log_ratio.shape
+    entries = [np.flatnonzero(e.form.any(axis=0)) for e in equations]
+    most = max(k.size for k in entries)
+    form = np.zeros((len(equations), angles * speeds, most))
+    whole = -(-windows // BLOCK) * BLOCK
+    covariance = np.zeros((len(equations), most, whole))
+    floor, unit = np.ones((2, len(equations), whole))
+    for n, (equation, used) in enumerate(zip(equations, entries, strict=True)):
+        form[n, :, : used.size] = equation.form[:, used]
+        covariance[n, : used.size, :windows] = equation.covariance[used]
+        floor[n, :windows], unit[n, :windows] = equation.floor, equation.unit
+    noise = np.stack([e.noise for e in equations])
+    offset = np.zeros(whole)
+    offset[:windows] = -0.5 * degrees * np.sum([e.null for e in equations], axis=0)
+    posterior_log_ratio(
+        log_ratio, coherent, form.reshape(-1, angles, speeds, most), covariance, noise.reshape(-1, angles, speeds),
+        floor, unit, np.array([e.power for e in equations]), degrees, offset, stray_share, blur,
+    )  # fmt: skip
+
+
+def turn_weights(sigma_rad: float, angles: int) -> Array:
+    """Return a blur over back-azimuth for a site turned by an unknown angle, shape (2 reach + 1,), sum one.
+
+    The discrete Gaussian (Lindeberg 1990): its variance is right however narrow it is against the step.
+    """
+    variance = (sigma_rad * angles / (2 * np.pi)) ** 2
+    reach = min(int(np.ceil(4.5 * np.sqrt(variance) + (variance > 0))), (angles - 1) // 2)
+    weights = special.ive(np.abs(np.arange(-reach, reach + 1)), variance)
+    return np.asarray(weights / weights.sum())
