@@ -117,7 +117,7 @@ def _sensors(
         station = ".".join(name.split(".")[:2])
         row = ChannelReport(station, name, _seen(channel))
         if quantity_of(name) is None:
-            rows.append(replace(row, reason="its instrument code is neither translation (H, L, N) nor rotation (J)"))
+            rows.append(replace(row, reason="its instrument code is neither translation (H, L, N, P) nor rotation (J)"))
             continue
         try:
             found = index.look_up(name, origin)

@@ -9,8 +9,15 @@ from typing import Any
 
 from rupture.records.report import UnusableError
 
-QUANTITY_OF_CODE = {"J": "rotation", "H": "translation", "L": "translation", "N": "translation"}
-"""FDSN source identifiers: instrument codes of rotation and translation sensors."""
+QUANTITY_OF_CODE = {
+    "J": "rotation",
+    "H": "translation",
+    "L": "translation",
+    "N": "translation",
+    "P": "translation",
+}
+"""FDSN source identifiers: instrument codes of rotation sensors, of seismometers of high and low gain, of
+accelerometers, and of geophones."""
 
 STRONG_MOTION = "N"
 

@@ -29,6 +29,7 @@ _LOWEST_HZ = 0.1
 _SHORTEST_S, _PERIODS = 1.5, 2.5
 """Window: that many periods of the lowest frequency of a band, at least so many seconds."""
 _SNR_NEEDED = 3.0
+_FEWEST_SAMPLES = 64
 _NOISE_S = 40.0
 """Record before P and after the last window that is filtered along."""
 
@@ -101,6 +102,8 @@ def observe(site: Site, arrivals: Arrivals) -> list[Observation]:
     found: list[Observation] = []
     end = arrivals.s_s + max(arrivals.s_s - arrivals.p_s, 20.0)
     site = _between(site, arrivals.p_s - _NOISE_S, end + _NOISE_S)
+    if site.data.shape[1] < _FEWEST_SAMPLES:
+        return found
     low = max(site.band_hz[0], _LOWEST_HZ)
     high = min(site.band_hz[1], _HIGHEST_HZ, 0.4 / site.step_s)
     times = site.times_s
@@ -113,8 +116,8 @@ def observe(site: Site, arrivals: Arrivals) -> list[Observation]:
         count = 2.0 * (band[1] - band[0]) * length
         for start in np.arange(arrivals.p_s - 0.25 * length, end, 0.5 * length):
             first = int(np.searchsorted(times, start))
-            if first + samples > times.size:
-                break
+            if start < times[0] or first + samples > times.size:
+                continue
             part = slice(first, first + samples)
             phase = _phase(start, length, arrivals)
             centre = start + 0.5 * length

@@ -176,7 +176,7 @@ class Corners:
 
 def edge_s(duration_s: float, low_hz: float) -> float:
     """Return the length in s of the cosine taper at each end of a piece of record."""
-    return min(0.05 * duration_s, 0.5 / low_hz, 5.0)
+    return min(0.02 * duration_s, 0.5 / low_hz, 5.0)
 
 
 def deconvolve(

@@ -22,7 +22,7 @@ from rupture.records.metadata import quantity_of
 SDS = "sds:"
 FDSN = "fdsn:"
 
-_CHANNELS = "?H?,?L?,?N?,?J?"
+_CHANNELS = "?H?,?L?,?N?,?P?,?J?"
 """Translation and rotation by their FDSN instrument codes."""
 _MIDNIGHT = timedelta(minutes=30)
 """Day files of an archive may begin and end this far from midnight."""

@@ -9,7 +9,7 @@ import numpy as np
 import pytest
 
 from rupture.records import CorrectionSettings, RecordSettings, read_sites
-from rupture.records.corrections import wiring_faults
+from rupture.records.wiring import wiring_faults
 
 NONE = CorrectionSettings(*(False,) * 6)
 

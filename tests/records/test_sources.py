@@ -141,7 +141,7 @@ def test_fetched_files_become_sites(service, tmp_path):
     assert [s.kind for s in sites] == ["6C", "6C"]
     assert steps == [(1, 2), (2, 2)]
     asked = dict(service.asked)
-    assert asked["station"]["channel"] == "?H?,?L?,?N?,?J?"
+    assert asked["station"]["channel"] == "?H?,?L?,?N?,?P?,?J?"
     assert asked["station"]["level"] == "response"
     ledger = json.loads((tmp_path / "cache" / "requests.json").read_text())
     assert set(ledger) == {"event_quake7.xml", "stations.xml", "records/XX.AAA.mseed", "records/XX.BBB.mseed"}

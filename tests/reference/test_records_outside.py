@@ -121,7 +121,7 @@ def test_array_rotation_against_obspy_sample_by_sample(level):
     ("code", "quantity"),
     [
         ("HJZ", "rotation"), ("BJE", "rotation"), ("EJ3", "rotation"), ("HHZ", "translation"), ("SLN", "translation"),
-        ("HNE", "translation"), ("EHZ", "translation"), ("LDO", None), ("HDF", None), ("LKS", None), ("VMU", None),
+        ("HNE", "translation"), ("EHZ", "translation"), ("DPZ", "translation"), ("LDO", None), ("HDF", None), ("LKS", None), ("VMU", None),
         ("Z", None),
     ],
 )  # fmt: skip
