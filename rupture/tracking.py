@@ -14,8 +14,7 @@ from rupture.conventions import KM
 from rupture.direction import SiteDirection
 from rupture.errors import DataError
 from rupture.front import FrontTrack, RuptureFit, fit_rupture, prior_for, smooth_front
-from rupture.front.kernels import NODES, place_nodes
-from rupture.front.lines import LinePrior
+from rupture.front.lines import PARAMETERS, LinePrior
 from rupture.geodesy import LocalPlane, distance_azimuth
 from rupture.mapping import Geometry, Grid, Stack, map_grid, read_trace, site_geometry, stack_rays, trace_grid
 from rupture.progress import Progress
@@ -24,6 +23,9 @@ from rupture.run import Inputs, directions, event_summary, load, provenance, qua
 from rupture.settings import Job
 
 Array = NDArray[np.float64]
+
+CURVE_POINTS = 80
+"""Points of a front's predicted back-azimuth curve."""
 
 DRAWS = 600
 """Draws of the posterior that a result keeps."""
@@ -206,12 +208,15 @@ def label(
 
 def front_positions(parameters: Array, source_time_s: Array) -> tuple[Array, Array, Array]:
     """Return east, north (m) and distance (m) of each arm at source times, NaN while it does not run; (arms, F)."""
-    x0, y0, t0, azimuth, speed, length, azimuth_2, speed_2, length_2 = parameters[:9]
+    named = dict(zip(PARAMETERS, parameters, strict=True))
+    x0, y0, t0 = named["east_m"], named["north_m"], named["start_time_s"]
+    azimuth, speed, length = named["azimuth_rad"], named["speed_m_s"], named["length_m"]
+    azimuth_2, speed_2, length_2 = (named[f"second_{name}"] for name in ("azimuth_rad", "speed_m_s", "length_m"))
     arms = [(azimuth, speed, length)] if length > 0 else []
     arms += [(azimuth_2, speed_2, length_2)] if length_2 > 0 else []
     east, north, run = np.full((3, max(1, len(arms)), source_time_s.size), np.nan)
     if not arms:
-        alive = (source_time_s >= t0) & (source_time_s <= t0 + parameters[9])
+        alive = (source_time_s >= t0) & (source_time_s <= t0 + named["duration_s"])
         east[0, alive], north[0, alive], run[0, alive] = x0, y0, 0.0
     for k, (angle, pace, reach) in enumerate(arms):
         distance = pace * (source_time_s - t0)
@@ -223,23 +228,24 @@ def front_positions(parameters: Array, source_time_s: Array) -> tuple[Array, Arr
 
 def predicted_back_azimuths(inputs: Inputs, position: NDArray[np.int64], parameters: Array, time_s: Array) -> Array:
     """Return the back-azimuth at which each site hears the strongest S of each arm; degrees, (arms, sites, T)."""
-    east, north, time, weight = np.empty((4, 2 * NODES))
-    count = place_nodes(parameters, east, north, time, weight)
-    arms = max(1, count // NODES)
+    named = dict(zip(PARAMETERS, parameters, strict=True))
+    begin, rise = named["start_time_s"], named["rise_time_s"]
+    tau = begin + np.linspace(0.0, named["duration_s"], CURVE_POINTS)
+    east, north, _ = front_positions(parameters, tau)
     plane = LocalPlane(inputs.event.longitude_deg, inputs.event.latitude_deg)
-    longitude, latitude = plane.to_geographic(east[:count], north[:count])
     travel, _ = inputs.responses.strongest("S")
-    out = np.full((arms, position.size, time_s.size), np.nan)
-    for row, k in enumerate(position):
-        site = inputs.sites[k]
-        distance, _, back = distance_azimuth(longitude, latitude, site.longitude_deg, site.latitude_deg)
-        arrival = time[:count] + inputs.responses.at(travel, distance)
-        for arm in range(arms):
-            part = slice(arm * NODES, (arm + 1) * NODES)
+    out = np.full((east.shape[0], position.size, time_s.size), np.nan)
+    for arm in range(east.shape[0]):
+        runs = np.isfinite(east[arm])
+        longitude, latitude = plane.to_geographic(east[arm, runs], north[arm, runs])
+        for row, k in enumerate(position):
+            site = inputs.sites[k]
+            distance, _, back = distance_azimuth(longitude, latitude, site.longitude_deg, site.latitude_deg)
+            arrival = tau[runs] + 0.5 * rise + inputs.responses.at(travel, distance)
             # Toward a supershear front the order of arrival is not the order of emission.
-            order = np.argsort(arrival[part])
-            curve = np.unwrap(back[part][order])
-            out[arm, row] = np.degrees(np.interp(time_s, arrival[part][order], curve, np.nan, np.nan)) % 360.0
+            order = np.argsort(arrival)
+            curve = np.unwrap(back[order])
+            out[arm, row] = np.degrees(np.interp(time_s, arrival[order], curve, np.nan, np.nan)) % 360.0
     return out
 
 
@@ -255,7 +261,7 @@ def track_dataset(inputs: Inputs, tracked: Tracked, time_s: Array) -> Any:
     alive = np.isfinite(run)
     lon, lat = np.full((2, *run.shape), np.nan)
     lon[alive], lat[alive] = plane.to_geographic(east[alive], north[alive])
-    along, share = datasets.along_axis_probability(grid, tracked.stack.location_probability, float(best[3]))
+    along, share = datasets.along_axis_probability(grid, tracked.stack.location_probability, float(best[PARAMETERS.index("azimuth_rad")]))
     covariance = front.covariance_m2 / KM**2
     put = datasets.labelled
     sample, kind = _draws(fit)
