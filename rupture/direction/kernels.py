@@ -87,8 +87,13 @@ def posterior_log_ratio(
     for block in numba.prange((windows + BLOCK - 1) // BLOCK):
         start = block * BLOCK
         count = min(BLOCK, windows - start)
-        gain = np.empty((angles, speeds * BLOCK))
-        linear = np.empty(speeds * BLOCK)
+        # Copies of this block: indices that start at zero keep the inner loops vectorised.
+        here = covariance[:, :, start : start + BLOCK].copy()
+        base = floor[:, start : start + BLOCK].copy()
+        scale = 1.0 / unit[:, start : start + BLOCK]
+        null = offset[start : start + BLOCK].copy()
+        gain = np.empty((angles, speeds, BLOCK))
+        linear = np.empty((speeds, BLOCK))
         residual = np.empty(BLOCK)
         largest = np.zeros(BLOCK)
         evidence = np.zeros(BLOCK)
@@ -96,42 +101,42 @@ def posterior_log_ratio(
             product = gain[a]
             product[:] = 1.0
             linear[:] = 0.0
-            for p in range(speeds):
-                first = p * BLOCK
-                for e in range(equations):
+            for e in range(equations):
+                factor = float(power[e])
+                other = factor - 1.0
+                for p in range(speeds):
                     residual[:] = 0.0
                     for k in range(entries):
                         share = form[e, a, p, k]
                         for w in range(BLOCK):
-                            residual[w] += share * covariance[e, k, start + w]
-                    factor = float(power[e])
-                    squared = power[e] == 2
+                            residual[w] += share * here[e, k, w]
+                    quiet = noise[e, a, p]
                     for w in range(BLOCK):
-                        expected = noise[e, a, p] + floor[e, start + w]
+                        expected = quiet + base[e, w]
                         misfit = residual[w] / expected
                         # Written out: max and min look after NaN, which keeps the loop from being vectorised.
                         above = misfit if misfit > 1.0 else 1.0
-                        ratio = above * expected / unit[e, start + w]
-                        product[first + w] *= ratio * (ratio if squared else 1.0)
-                        linear[first + w] += factor * (misfit - above)
-            _log_in_place(product)
+                        ratio = above * expected * scale[e, w]
+                        # The ratio itself, or its square where there are two residuals.
+                        product[p, w] *= ratio * (1.0 + other * (ratio - 1.0))
+                        linear[p, w] += factor * (misfit - above)
+            _log_in_place(product.reshape(-1))
             for p in range(speeds):
-                first = p * BLOCK
                 for w in range(BLOCK):
-                    value = -half * (product[first + w] + linear[first + w]) - offset[start + w]
-                    product[first + w] = value
+                    value = -half * (product[p, w] + linear[p, w]) - null[w]
+                    product[p, w] = value
                     largest[w] = value if value > largest[w] else largest[w]
         for a in range(angles):
             row = gain[a]
             for p in range(speeds):
                 for w in range(BLOCK):
-                    below = row[p * BLOCK + w] - largest[w]
-                    row[p * BLOCK + w] = below if below > -600.0 else -600.0
-            _exp_in_place(row)
+                    below = row[p, w] - largest[w]
+                    row[p, w] = below if below > -600.0 else -600.0
+            _exp_in_place(row.reshape(-1))
             for p in range(speeds):
                 for w in range(BLOCK):
-                    evidence[w] += row[p * BLOCK + w]
-        scale = np.empty(BLOCK)
+                    evidence[w] += row[p, w]
+        gained = np.empty(BLOCK)
         stray = np.empty(BLOCK)
         for w in range(BLOCK):
             mean = evidence[w] / (angles * speeds)
@@ -139,19 +144,20 @@ def posterior_log_ratio(
             if w < count:
                 coherent[start + w] = share
             believed = share * (1.0 - stray_share)
-            scale[w] = believed / max(mean, 1e-300)
+            gained[w] = believed / max(mean, 1e-300)
             stray[w] = 1.0 - believed
         for a in range(angles):
             linear[:] = 0.0
             for k in range(-reach, reach + 1):
                 source = gain[(a + k) % angles]
                 share = blur[k + reach]
-                for n in range(speeds * BLOCK):
-                    linear[n] += share * source[n]
+                for p in range(speeds):
+                    for w in range(BLOCK):
+                        linear[p, w] += share * source[p, w]
             for p in range(speeds):
                 for w in range(BLOCK):
-                    linear[p * BLOCK + w] = linear[p * BLOCK + w] * scale[w] + stray[w]
-            _log_in_place(linear)
+                    linear[p, w] = linear[p, w] * gained[w] + stray[w]
+            _log_in_place(linear.reshape(-1))
             for p in range(speeds):
                 for w in range(count):
-                    out[a, p, start + w] = linear[p * BLOCK + w]
+                    out[a, p, start + w] = linear[p, w]

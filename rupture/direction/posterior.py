@@ -67,11 +67,12 @@ def plane_wave_equation(form: Array, rows: tuple[int, ...], covariance: Array, n
     error
         Model error as a share of the rotation's amplitude.
     """
-    total = np.maximum(np.sum([covariance[entry(k, k)] for k in rows], axis=0), _TINY)
+    total = np.sum([covariance[entry(k, k)] for k in rows], axis=0)
+    unit = np.maximum(total, _TINY)
     floor = np.maximum(error**2 * total, _TINY)
     alone = sum(float(noise[entry(k, k)]) for k in rows) + floor
-    null = len(rows) * (np.log(np.maximum(total, alone) / total) + np.minimum(total / alone, 1.0) - 1.0)
-    return Equation(form, covariance, np.maximum(form @ noise, 0.0), floor, total, len(rows), null)
+    null = len(rows) * (np.log(np.maximum(total, alone) / unit) + np.minimum(total / alone, 1.0) - 1.0)
+    return Equation(form, covariance, np.maximum(form @ noise, 0.0), floor, unit, len(rows), null)
 
 
 def polarisation_equation(
@@ -154,6 +155,7 @@ def turn_weights(sigma_rad: float, angles: int) -> Array:
     The discrete Gaussian (Lindeberg 1990): its variance is right however narrow it is against the step.
     """
     variance = (sigma_rad * angles / (2 * np.pi)) ** 2
-    reach = min(int(np.ceil(4.5 * np.sqrt(variance) + (variance > 0))), (angles - 1) // 2)
-    weights = special.ive(np.abs(np.arange(-reach, reach + 1)), variance)
+    half = special.ive(np.arange((angles - 1) // 2 + 1), variance)
+    half = half[half > 1e-9 * half[0]]
+    weights = np.concatenate([half[:0:-1], half])
     return np.asarray(weights / weights.sum())
