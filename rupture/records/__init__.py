@@ -10,11 +10,14 @@ if TYPE_CHECKING:
     from rupture.records.assemble import read_sites
     from rupture.records.calibration import calibrate
     from rupture.records.events import event_from_origin, read_event, read_events
+    from rupture.records.fk import ArrayDirections, array_directions
     from rupture.records.report import Calibration, ChannelFound, ChannelReport, Correction, SiteSet, SiteVerdict
     from rupture.records.settings import CorrectionSettings, RecordSettings
     from rupture.records.sources import FdsnSource, Fetched, FetchSettings, sds_files
 
 _PLACES = {
+    "ArrayDirections": "fk",
+    "array_directions": "fk",
     "Arrivals": "arrivals",
     "Calibration": "report",
     "ChannelFound": "report",
@@ -37,6 +40,7 @@ _PLACES = {
 }
 
 __all__ = [
+    "ArrayDirections",
     "Arrivals",
     "Calibration",
     "ChannelFound",
@@ -49,6 +53,7 @@ __all__ = [
     "RecordSettings",
     "SiteSet",
     "SiteVerdict",
+    "array_directions",
     "arrivals_from_times",
     "calibrate",
     "event_from_origin",

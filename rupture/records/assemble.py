@@ -74,14 +74,8 @@ def read_sites(
     """
     settings = settings or RecordSettings()
     model = arrival_model or first_arrivals
-    metadata = read_inventories(inventory)
-    after_s = settings.after_s or _farthest_end(metadata, event)
-    files = resolve(records, metadata, event, settings.before_s, after_s)
-    raw = read_channels(record_files(files), event, settings.before_s, after_s)
-    sensors, rows, arrivals = _sensors(raw, MetadataIndex(metadata), event, settings, model)
-    plan = plan_sites(sensors, event, arrivals, settings)
-    rows += plan.left_out
-    sites, rejected, verdicts = _build(plan, arrivals, event, after_s, settings, rows, report, calibration or {}, model)
+    plan, context, rows = prepare_run(records, inventory, event, settings, calibration or {}, model)
+    sites, rejected, verdicts = _build(plan, context, rows, report, model)
     rows.sort(key=lambda r: (r.site, r.channel))
     verdicts.sort(key=lambda v: v.code)
     result = SiteSet(
@@ -93,6 +87,33 @@ def read_sites(
     if settings.need_rotation:
         _demand_rotation(result)
     return result
+
+
+def prepare_run(
+    records: Sequence[str | Path],
+    inventory: Sequence[str | Path],
+    event: Event,
+    settings: RecordSettings,
+    calibration: Mapping[str, Calibration],
+    model: ArrivalModel,
+) -> tuple[Plan, Context, list[ChannelReport]]:
+    """Read and check all channels and plan the sites; nothing is filtered yet.
+
+    Returns
+    -------
+    plan, context, rows
+        What is to be made, what all sites share, and the table rows of what is left out.
+    """
+    metadata = read_inventories(inventory)
+    after_s = settings.after_s or _farthest_end(metadata, event)
+    files = resolve(records, metadata, event, settings.before_s, after_s)
+    raw = read_channels(record_files(files), event, settings.before_s, after_s)
+    sensors, rows, arrivals = _sensors(raw, MetadataIndex(metadata), event, settings, model)
+    plan = plan_sites(sensors, event, arrivals, settings)
+    rate = settings.rate_hz or min(_FASTEST_HZ, max((s.rate_hz for s in plan.all_sensors()), default=_FASTEST_HZ))
+    first = math.ceil(-settings.before_s * rate)
+    grid = Grid(first, math.floor(after_s * rate) - first + 1, 1.0 / rate)
+    return plan, Context(grid, settings, arrivals, event, calibration), [*rows, *plan.left_out]
 
 
 def _farthest_end(metadata: Any, event: Event) -> float:
@@ -160,26 +181,11 @@ def _in_time(channel: RawChannel, arrivals: Arrivals) -> None:
 
 
 def _build(
-    plan: Plan,
-    arrivals: dict[str, Arrivals],
-    event: Event,
-    after_s: float,
-    settings: RecordSettings,
-    rows: list[ChannelReport],
-    report: Report | None,
-    calibration: Mapping[str, Calibration],
-    model: ArrivalModel,
+    plan: Plan, context: Context, rows: list[ChannelReport], report: Report | None, model: ArrivalModel
 ) -> tuple[list[Site], list[Site], list[SiteVerdict]]:
-    chosen = plan.all_sensors()
-    if not chosen:
-        return [], [], []
-    rate = settings.rate_hz or min(_FASTEST_HZ, max(s.rate_hz for s in chosen))
-    first = math.ceil(-settings.before_s * rate)
-    grid = Grid(first, math.floor(after_s * rate) - first + 1, 1.0 / rate)
     sites: list[Site] = []
     rejected: list[Site] = []
     verdicts: list[SiteVerdict] = []
-    context = Context(grid, settings, arrivals, event, calibration)
     jobs = [partial(single_site, single) for single in plan.singles] + [partial(array_site, a) for a in plan.arrays]
     for number, job in enumerate(jobs):
         site, verdict, made = job(context)

@@ -35,7 +35,7 @@ _WORST_RAD = np.radians(20.0)
 _PRIOR_RAD = np.radians(5.0)
 """Axes named N and E may be off by this (FDSN source identifiers); the prior of what is left uncorrected."""
 _LEAST_RAD = np.radians(5.0)
-_SURE = 2.0
+_SURE = 1.7
 """A turn is noticed when larger than `_LEAST_RAD` and than so many standard deviations."""
 _SURE_ENOUGH = 3.0
 """It is applied only beyond so many: a healthy site must not be spoilt by a chance deviation."""
@@ -112,6 +112,7 @@ def examine(
         What other earthquakes have said; averaged with what this one says.
     """
     findings: list[Correction] = []
+    before = site
     found = observe(site, arrivals)
     angles = deviations(found, travel_azimuth_rad)
     wiring = find_wiring(site, found, arrivals, travel_azimuth_rad)
@@ -125,7 +126,8 @@ def examine(
         findings.append(Correction("polarity", np.nan, np.nan, "1", True, False, note))
     site, angles = _relative(site, angles, apply, known, findings)
     site = _bias(site, angles, apply, known, findings)
-    found = observe(site, arrivals)
+    if site.data is not before.data:
+        found = observe(site, arrivals)
     site = _gain(site, found, arrivals, apply, findings)
     return Examined(site, tuple(findings), coherence(found))
 

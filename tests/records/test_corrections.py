@@ -54,7 +54,7 @@ def error_of(world, site):
     return float((np.abs(site.data - truth) * site.valid / scale).max())
 
 
-@pytest.mark.parametrize("seed", range(1, 7))
+@pytest.mark.parametrize("seed", range(1, 4))
 def test_healthy_site(rough, seed):
     world, site, verdict = rough(seed=seed)
     assert [c.kind for c in verdict.corrections if c.noticed] == []

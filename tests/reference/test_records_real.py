@@ -11,7 +11,7 @@ import pytest
 from scipy.signal import butter, sosfiltfilt
 
 from rupture.geodesy import distance_azimuth
-from rupture.records import RecordSettings, read_event, read_sites
+from rupture.records import RecordSettings, array_directions, read_event, read_sites
 
 REAL = Path(__file__).resolve().parents[3] / "shared" / "real"
 NAME = "yellowknife_2012-08-14"
@@ -62,3 +62,20 @@ def test_site_of_verticals(site):
     assert site.kind == "Z+rotH"
     assert site.band_hz[1] == pytest.approx(0.84, abs=0.05)  # a quarter of the wavelength at 15.5 km/s and 5 km
     assert site.rotation_error_share == pytest.approx(0.1, abs=0.01)
+
+
+def test_six_components_agree_with_array_fk(site):
+    """Expected to agree (common practice): f-k of all 18 sensors against the plane through a few, in the first P."""
+    if site.code.count("+4") == 0:
+        pytest.skip("once is enough")
+    event = read_event(REAL / f"{NAME}_event.xml")
+    names = [f"YKR{i}" for i in range(1, 10)] + [f"YKB{i}" for i in (0, 1, 2, 3, 4, 6, 7, 8, 9)]
+    found = array_directions(
+        [REAL / f"{NAME}.mseed"], [REAL / f"{NAME}_stations.xml"], event, names, (0.4, 1.2), 5.0, 1.5,
+        (P_S - 0.5, P_S + 8.2), slowest_km_s=12.0, settings=RecordSettings(after_s=560.0),
+    )  # fmt: skip
+    for time, back_azimuth, slowness in zip(found.time_s, found.back_azimuth_rad, found.slowness_s_m, strict=True):
+        assert np.degrees(back_azimuth) == pytest.approx(305.7, abs=4.0)
+        six, size, _ = direction(site, time - 2.5)
+        assert np.degrees(back_azimuth) == pytest.approx(six, abs=5.0)
+        assert slowness * 1000 == pytest.approx(size, rel=0.2)
