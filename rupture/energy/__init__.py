@@ -17,7 +17,16 @@ _HOME = {
     "Waves": "settings", "build_kernels": "build", "invert_energy": "invert", "line_answer": "lines",
 }  # fmt: skip
 
-__all__ = ["EnergyInversion", "EnergySettings", "KernelTable", "LineAnswer", "Waves", "build_kernels", "invert_energy", "line_answer"]
+__all__ = [
+    "EnergyInversion",
+    "EnergySettings",
+    "KernelTable",
+    "LineAnswer",
+    "Waves",
+    "build_kernels",
+    "invert_energy",
+    "line_answer",
+]
 
 
 def __getattr__(name: str) -> Any:

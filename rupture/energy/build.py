@@ -86,8 +86,12 @@ def build_kernels(
     make = _ray_records if settings.waves is Waves.RAY else _wavefield_records
     mechanisms = BASIS_DEG if mechanism_deg is None else (mechanism_deg,)
     turns = 1 if mechanism_deg is None else MECHANISM_AZIMUTHS
-    records = make(model, depth, distance, step, last_s, settings, mechanisms, 2 * np.pi * np.arange(turns) / turns, report)
-    harmonics = _averaged(records[:, 0], step, settings, lag) if turns == 1 else _turned(records[0], step, settings, lag)
+    records = make(
+        model, depth, distance, step, last_s, settings, mechanisms, 2 * np.pi * np.arange(turns) / turns, report
+    )
+    harmonics = (
+        _averaged(records[:, 0], step, settings, lag) if turns == 1 else _turned(records[0], step, settings, lag)
+    )
     return finished(depth, distance, settings.bands_hz, settings.window_s, settings.hop_s, lag, harmonics)
 
 

@@ -43,8 +43,8 @@ class EnergyInversion:
         rotation), shape (S, 4).
     model_error_share
         Model error as a share of amplitude, shape (S, B).
-    coda_share
-        Energy of scattered over that of direct waves, shape (B,).
+    band_share
+        Weight of each band: the source spectrum, mean one, shape (B,).
     observed_power, predicted_power
         Mean square ground acceleration, sum of bands and components, (m/s^2)^2, shape (S, T); NaN where it does not count.
     time_s
@@ -59,7 +59,7 @@ class EnergyInversion:
     held_out: Array
     gains: Array
     model_error_share: Array
-    coda_share: Array
+    band_share: Array
     observed_power: Array
     predicted_power: Array
     time_s: Array
@@ -92,7 +92,7 @@ def pose(
     hop = kernels.hop_s
     source_time = hop * np.arange(-np.ceil(3.0 / hop), np.ceil(until_s / hop) + 1)
     last = min(max(s.start_s + s.step_s * s.data.shape[1] for s in sites), until_s + kernels.lag_s[-1])
-    model = build_model(kernels, distance, back, source_time, last, settings.coda)
+    model = build_model(kernels, distance, back, source_time, last, settings.coda_share)
     return Problem(model, observe(sites, noise_windows_s, kernels, model.time_s), settings, grid)
 
 
@@ -111,8 +111,8 @@ def invert_energy(
     """Find the energy over place and source time that explains the covariances of all windows.
 
     Sigma = sum over cells and source times of e K + N + eps^2 floor, e >= 0, under a Wishart likelihood, by multiplicative
-    updates of majorisation-minimisation type (cf. Sawada et al. 2013). Gains of sites and component groups, the strength of
-    scattered waves and the model error of each site and band are found along.
+    updates of majorisation-minimisation type (cf. Sawada et al. 2013). The weight of each band, the model error of each site
+    and band, and, where asked for, gains of sites and component groups are found along.
 
     Parameters
     ----------
@@ -153,7 +153,9 @@ def default_until_s(event: Event) -> float:
     from rupture.mapping.grid import subsurface_length_km
 
     if event.magnitude is None:
-        raise InputError("the event has no magnitude, so the energy inversion does not know how long to look; give --magnitude")
+        raise InputError(
+            "the event has no magnitude, so the energy inversion does not know how long to look; give --magnitude"
+        )
     return float(np.clip(1.6 * subsurface_length_km(event.magnitude) / 2.5, 20.0, 600.0))
 
 
@@ -208,5 +210,5 @@ def _finished(problem: Problem, fit: Fit, held: Array) -> EnergyInversion:
         power[name] = np.where(rows.any(axis=(1, 3)), total, np.nan)
     return EnergyInversion(
         fit.energy.astype(float), problem.model.source_time_s, fit.objective, held, fit.gains, np.sqrt(fit.error_power),
-        fit.share[:, 1:].sum(axis=1) / fit.share[:, 0], power["seen"], power["told"], problem.model.time_s, problem.grid,
+        fit.share, power["seen"], power["told"], problem.model.time_s, problem.grid,
     )  # fmt: skip

@@ -13,13 +13,15 @@ from rupture.energy.table import KernelTable, basis
 
 Array = NDArray[np.float64]
 
-CODA_TERMS = ((4.0, None), (12.0, None), (4.0, 0.6))
-"""Decay in s and angular spread in rad (None: from everywhere) of the scattered waves that a kernel may trail behind it. Their
-strengths are estimated, so that the mixture finds its own decay; multiple forward scattering keeps early coda near the
-direct path (common practice)."""
+CODA_TERMS = ((4.0, 0.6, 5 / 6), (10.0, None, 1 / 6))
+"""Decay in s, angular spread in rad (None: from everywhere) and share of the scattered waves that every wave of a kernel
+trails. Multiple forward scattering keeps early coda near the direct path (common practice); the split was the best of
+those tried on complete synthetic seismograms with scattered waves (docs/energy.md)."""
 
 
-def coda_kernels(harmonics: NDArray[np.float32], hop_s: float, decay_s: float, spread_rad: float | None) -> NDArray[np.float32]:
+def coda_kernels(
+    harmonics: NDArray[np.float32], hop_s: float, decay_s: float, spread_rad: float | None
+) -> NDArray[np.float32]:
     """Return the kernels of scattered waves: every wave of the direct kernel trails exp(-t / decay) / decay.
 
     A normal spread of azimuths multiplies the harmonics of order m by exp(-m^2 spread^2 / 2).
@@ -36,7 +38,9 @@ def coda_kernels(harmonics: NDArray[np.float32], hop_s: float, decay_s: float, s
     edge = hop_s * np.arange(lags + 1)
     response = -np.diff(np.exp(-edge / decay_s))
     length = fft.next_fast_len(2 * lags, real=True)
-    spectrum = fft.rfft(harmonics * damp[:, None, None].astype(np.float32), length, axis=-1) * fft.rfft(response, length)
+    spectrum = fft.rfft(harmonics * damp[:, None, None].astype(np.float32), length, axis=-1) * fft.rfft(
+        response, length
+    )
     return np.asarray(fft.irfft(spectrum, length, axis=-1)[..., :lags], np.float32)
 
 
@@ -51,8 +55,9 @@ class EnergyModel:
     low, part, phi
         Distance node, weight of the next one (S, C) and azimuthal basis (S, C, H).
     spectra
-        Per band, per term (direct, then coda), shape (frequencies, D H, 21), complex64; coda from everywhere keeps the
-        rows of order 0 only.
+        Kernels per band, shape (frequencies, D H, 21), complex64.
+    nodes, length
+        Number of distance nodes D, and of samples of a transform in time.
     """
 
     source_time_s: Array
@@ -60,28 +65,9 @@ class EnergyModel:
     low: NDArray[np.int64]
     part: NDArray[np.float32]
     phi: NDArray[np.float32]
-    spectra: list[list[NDArray[np.complex64]]]
+    spectra: list[NDArray[np.complex64]]
     nodes: int
     length: int
-
-    @property
-    def terms(self) -> int:
-        """Number of kernel terms: direct and coda."""
-        return len(self.spectra[0])
-
-    def mixed(self, share: Array) -> list[NDArray[np.complex64]]:
-        """Return one kernel per band, terms weighted by `share` (B, terms)."""
-        out = []
-        for spectra, weights in zip(self.spectra, share, strict=True):
-            total = spectra[0] * np.float32(weights[0])
-            for spectrum, weight in zip(spectra[1:], weights[1:], strict=True):
-                self._rows(total, spectrum)[...] += spectrum * np.float32(weight)
-            out.append(total)
-        return out
-
-    def _rows(self, full: NDArray[np.complex64], like: NDArray[np.complex64]) -> NDArray[np.complex64]:
-        """The rows of all harmonics that a term holds: all, or those of order 0."""
-        return full if full.shape[1] == like.shape[1] else full[:, :: self.phi.shape[2]]
 
     def gathered(self, energy: NDArray[np.float32]) -> NDArray[np.complex64]:
         """Return the spectra of the energy on nodes and harmonics, shape (frequencies, S, D H)."""
@@ -91,23 +77,20 @@ class EnergyModel:
         spectrum = fft.rfft(out.reshape(sites, self.nodes * harmonics, -1), self.length, axis=-1)
         return np.ascontiguousarray(spectrum.transpose(2, 0, 1))
 
-    def forward(self, gathered: NDArray[np.complex64], kernels: list[NDArray[np.complex64]]) -> Array:
-        """Return covariances, shape (S, B, T, 21), of gathered energy under one kernel per band."""
+    def forward(self, gathered: NDArray[np.complex64]) -> Array:
+        """Return covariances, shape (S, B, T, 21), of gathered energy."""
         out = [
-            fft.irfft(self._rows_of(gathered, kernel) @ kernel, self.length, axis=0)[: self.time_s.size].transpose(1, 0, 2)
-            for kernel in kernels
+            fft.irfft(gathered @ kernel, self.length, axis=0)[: self.time_s.size].transpose(1, 0, 2)
+            for kernel in self.spectra
         ]
         return np.stack(out, axis=1).astype(float)
 
-    def _rows_of(self, gathered: NDArray[np.complex64], kernel: NDArray[np.complex64]) -> NDArray[np.complex64]:
-        return gathered if gathered.shape[2] == kernel.shape[1] else np.ascontiguousarray(gathered[:, :, :: self.phi.shape[2]])
-
-    def adjoint(self, weights: Array, kernels: list[NDArray[np.complex64]]) -> NDArray[np.float32]:
+    def adjoint(self, weights: Array) -> NDArray[np.float32]:
         """Return the adjoint of `forward` after `gathered`, shape (C, F); `weights` has shape (S, B, T, 21)."""
         sites, _, harmonics = self.phi.shape
         frames = self.source_time_s.size
         total = None
-        for b, kernel in enumerate(kernels):
+        for b, kernel in enumerate(self.spectra):
             spectrum = fft.rfft(weights[:, b].astype(np.float32), self.length, axis=1).transpose(1, 0, 2)
             product = np.ascontiguousarray(spectrum) @ kernel.conj().swapaxes(1, 2)
             total = product if total is None else total + product
@@ -119,7 +102,12 @@ class EnergyModel:
 
 
 def build_model(
-    table: KernelTable, distance_m: Array, back_azimuth_rad: Array, source_time_s: Array, last_s: float, coda: bool
+    table: KernelTable,
+    distance_m: Array,
+    back_azimuth_rad: Array,
+    source_time_s: Array,
+    last_s: float,
+    coda_share: float,
 ) -> EnergyModel:
     """Return the model of cells and sites.
 
@@ -133,8 +121,8 @@ def build_model(
         Uniform, step of the table's hop, shape (F,).
     last_s
         Last window centre wanted, s after the origin time.
-    coda
-        Whether kernels trail scattered waves.
+    coda_share
+        Energy of the scattered waves that kernels trail, over that of the direct ones.
 
     Raises
     ------
@@ -152,11 +140,10 @@ def build_model(
     cut[..., :lags] = table.harmonics[:, first_node : first_node + nodes, ..., :lags]
     spectra = []
     for direct in cut:
-        terms = [_spectrum(direct, length)]
-        for decay, spread in CODA_TERMS if coda else ():
-            scattered = coda_kernels(direct, table.hop_s, decay, spread)
-            terms.append(_spectrum(scattered[:, :1] if spread is None else scattered, length))
-        spectra.append(terms)
+        kernel = direct.copy()
+        for decay, spread, share in CODA_TERMS if coda_share > 0 else ():
+            kernel += np.float32(coda_share * share) * coda_kernels(direct, table.hop_s, decay, spread)
+        spectra.append(_spectrum(kernel, length))
     phi = basis(back_azimuth_rad, table.order).astype(np.float32)
     return EnergyModel(source_time_s, time, low - first_node, part.astype(np.float32), phi, spectra, nodes, length)
 

@@ -26,7 +26,7 @@ GROUPS = np.array([0, 0, 1, 2, 2, 3])
 """Component group of each component: horizontal and vertical translation, horizontal and vertical rotation."""
 
 
-DYNAMIC_SHARE = 1e-4
+DYNAMIC_SHARE = 1e-3
 """No Earth model tells the quiet parts of a record to better than this share of its loudest window's power."""
 
 
@@ -74,15 +74,22 @@ def observe(
     noise = np.zeros((len(sites), len(bands), 21))
     for s, (site, quiet) in enumerate(zip(sites, noise_windows_s, strict=True)):
         for b, (low, high) in enumerate(bands):
-            covariance[s, b], present[s, b], noise[s, b] = _one(site, quiet, (float(low), float(high)), table.window_s, time_s)
+            covariance[s, b], present[s, b], noise[s, b] = _one(
+                site, quiet, (float(low), float(high)), table.window_s, time_s
+            )
     if not present.any():
-        raise DataError("no window of any site can be used for the energy inversion: the records end before the waves arrive")
+        raise DataError(
+            "no window of any site can be used for the energy inversion: the records end before the waves arrive"
+        )
     power = covariance[..., _DIAGONAL].sum(axis=-1)
     scale = float(np.max(power)) / 6
     if not scale > 0:
         raise DataError("the records are zero in the bands of the energy inversion")
     share = np.array(
-        [independent_samples((float(a), float(b)), table.window_s) * min(1.0, table.hop_s / table.window_s) / 2 for a, b in bands]
+        [
+            independent_samples((float(a), float(b)), table.window_s) * min(1.0, table.hop_s / table.window_s) / 2
+            for a, b in bands
+        ]
     )
     return Observed(time_s, covariance / scale, noise / scale, present, share, scale)
 

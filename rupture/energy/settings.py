@@ -37,15 +37,16 @@ class EnergySettings:
         Most multiplicative updates.
     held_out_share
         Share of the windows that is held out to decide when to stop; 0 runs all updates.
-    coda
-        Whether scattered waves are part of the kernels; their strength and decay are estimated.
+    coda_share
+        Energy of scattered waves over that of the direct ones in the kernels; 0 leaves them out. Held, not estimated: free
+        energy on the map outbids any coda term for the scattered waves, and is then wrong.
     gains
         Whether gains of sites and component groups are estimated.
     gain_spread
         Standard deviation of the natural logarithm of such a gain before the records are looked at.
-    least_model_error
-        The model error, as a share of amplitude, is estimated but never below this: in design trials 0.1 to 0.3 made
-        no difference and 0.03 broke down.
+    least_model_error, most_model_error
+        The model error of a site and band, as a share of amplitude, is estimated between these: below, the smallest mismatch
+        rules the true place out; above, the error explains what energy should.
     most_distant_km
         Sites farther than this from any cell are left out.
     resamples
@@ -58,28 +59,37 @@ class EnergySettings:
     hop_s: float = 1.0
     cells: int = 25
     waves: Waves = Waves.WAVEFIELD
-    updates: int = 100
+    updates: int = 60
     held_out_share: float = 0.1
-    coda: bool = True
-    gains: bool = True
+    coda_share: float = 0.6
+    gains: bool = False
     gain_spread: float = 0.4
     least_model_error: float = 0.1
+    most_model_error: float = 0.3
     most_distant_km: float = 300.0
     resamples: int = 8
 
     def __post_init__(self) -> None:
         if not self.bands_hz:
-            raise InputError("bands_hz of the energy inversion is empty; give at least one band, for example [[0.2, 1.2]]")
+            raise InputError(
+                "bands_hz of the energy inversion is empty; give at least one band, for example [[0.2, 1.2]]"
+            )
         for low, high in self.bands_hz:
             if not 0 < low < high <= 5:
-                raise InputError(f"band {low:g} to {high:g} Hz of the energy inversion: corners must rise, from above 0 to 5 Hz")
+                raise InputError(
+                    f"band {low:g} to {high:g} Hz of the energy inversion: corners must rise, from above 0 to 5 Hz"
+                )
         if not 0 < self.hop_s <= self.window_s / 2:
             raise InputError("hop_s of the energy inversion must be positive and at most half of window_s")
         if not 5 <= self.cells <= 201:
             raise InputError("cells of the energy inversion must lie between 5 and 201")
         if self.updates < 1 or not 0 <= self.held_out_share <= 0.5:
             raise InputError("updates must be at least 1 and held_out_share between 0 and 0.5")
-        if not self.gain_spread > 0 or not 0 < self.least_model_error < 1:
-            raise InputError("gain_spread must be positive and least_model_error between 0 and 1")
+        if not self.gain_spread > 0 or not 0 < self.least_model_error <= self.most_model_error < 1:
+            raise InputError(
+                "gain_spread must be positive; least_model_error and most_model_error must rise, between 0 and 1"
+            )
+        if not 0 <= self.coda_share <= 5:
+            raise InputError("coda_share must lie between 0 and 5")
         if not 10 <= self.most_distant_km <= 1000 or self.resamples < 0:
             raise InputError("most_distant_km must lie between 10 and 1000, and resamples not be negative")

@@ -19,14 +19,11 @@ Array = NDArray[np.float64]
 _DIAGONAL = PAIRS[:, 0] == PAIRS[:, 1]
 _FIRST_GROUP, _SECOND_GROUP = GROUPS[PAIRS[:, 0]], GROUPS[PAIRS[:, 1]]
 
-OTHERS_EVERY = 4
-"""Gains and coda are updated after so many updates of the energy: they move little, and cost as much."""
+OTHERS_EVERY = 6
+"""Gains and band weights are updated after so many updates of the energy: they move little."""
 
 BOLD = 0.95
 """Exponent of a bold update; where the objective rises, the update is taken again with the safe exponent 1/2."""
-
-FIRST_CODA = 0.1
-"""Energy of each coda term over the direct, before the first update."""
 
 UNSEEN = 1e-4
 """Where the denominator is below this share of its median, no window sees the place and time: they hold no energy."""
@@ -41,7 +38,7 @@ class Fit:
     energy
         Shape (C, F).
     share
-        Weight of the kernel terms per band, shape (B, terms).
+        Weight of each band: the source spectrum, mean one, shape (B,).
     error_power
         Squared model error share, shape (S, B).
     log_gains
@@ -80,11 +77,17 @@ class Wishart:
         self.spread = settings.gain_spread
         self.floor = _floor(observed)
 
+    def factor(self, fit: Fit) -> Array:
+        """Return what gains and bands multiply the entries of a signal by, shape (S, B, 1, 21)."""
+        gain = fit.gains
+        both = gain[:, _FIRST_GROUP] * gain[:, _SECOND_GROUP]
+        return np.asarray((both[:, None] * fit.share[:, None])[:, :, None])
+
     def total(self, signal: Array, fit: Fit) -> Array:
         """Return Sigma, shape (S, B, T, 21), of a signal without gains."""
-        gain = fit.gains
-        factor = gain[:, _FIRST_GROUP] * gain[:, _SECOND_GROUP]
-        return signal * factor[:, None, None] + self.observed.noise[:, :, None] + fit.error_power[:, :, None, None] * self.floor
+        return (
+            signal * self.factor(fit) + self.observed.noise[:, :, None] + fit.error_power[:, :, None, None] * self.floor
+        )
 
     def terms(self, sigma: Array) -> tuple[Array, Array, Array]:
         """Return value (S, B, T) and the packed gradients Sigma^-1, Sigma^-1 C Sigma^-1 (S, B, T, 21)."""
@@ -110,15 +113,17 @@ def _floor(observed: Observed) -> Array:
     return out
 
 
-def start_energy(model: EnergyModel, observed: Observed, start: Array | None, share: Array) -> NDArray[np.float32]:
+def start_energy(model: EnergyModel, observed: Observed, start: Array | None) -> NDArray[np.float32]:
     """Return the first energy, scaled so that the predicted power is the observed."""
     shape = (model.low.shape[1], model.source_time_s.size)
     energy = np.ones(shape) if start is None else np.broadcast_to(start.reshape(shape[0], -1), shape).astype(float)
     # Nothing that starts at zero ever grows: everything keeps a small chance.
     energy = np.maximum(energy, 0.05 * energy.mean())
     energy = energy.astype(np.float32)
-    told = model.forward(model.gathered(energy), model.mixed(share))[..., _DIAGONAL]
-    return np.asarray(energy * (observed.covariance[..., _DIAGONAL].sum() / (told * observed.present).sum()), np.float32)
+    told = model.forward(model.gathered(energy))[..., _DIAGONAL]
+    return np.asarray(
+        energy * (observed.covariance[..., _DIAGONAL].sum() / (told * observed.present).sum()), np.float32
+    )
 
 
 def solve(
@@ -150,28 +155,26 @@ def solve(
     """
     wishart = Wishart(observed, settings, weight)
     sites, bands = observed.covariance.shape[:2]
-    share = np.full((bands, model.terms), FIRST_CODA)
-    share[:, 0] = 1.0
-    fit = Fit(
-        start_energy(model, observed, start, share), share, np.full((sites, bands), max(0.3, settings.least_model_error) ** 2), np.zeros((sites, 4))
-    )
-    kernels = model.mixed(fit.share)
-    gathered = model.gathered(fit.energy)
-    signal = model.forward(gathered, kernels)
+    error = np.full((sites, bands), settings.most_model_error**2)
+    fit = Fit(start_energy(model, observed, start), np.ones(bands), error, np.zeros((sites, 4)))
+    signal = model.forward(model.gathered(fit.energy))
     value, inverse, sandwich = wishart.terms(wishart.total(signal, fit))
     best, _ = wishart.objective(value, fit)
     history, held = [], []
     for update in range(updates):
-        factor, error_factor = _factors(model, wishart, fit, kernels, inverse, sandwich)
+        factor, error_factor = _factors(model, wishart, fit, inverse, sandwich)
         for exponent in (BOLD, 0.5) if bold else (0.5,):
             trial = Fit(
-                fit.energy * factor**np.float32(exponent),
+                fit.energy * factor ** np.float32(exponent),
                 fit.share,
-                np.maximum(fit.error_power * error_factor**exponent, settings.least_model_error**2),
+                np.clip(
+                    fit.error_power * error_factor**exponent,
+                    settings.least_model_error**2,
+                    settings.most_model_error**2,
+                ),
                 fit.log_gains,
             )
-            gathered = model.gathered(trial.energy)
-            signal = model.forward(gathered, kernels)
+            signal = model.forward(model.gathered(trial.energy))
             terms = wishart.terms(wishart.total(signal, trial))
             now, left_out = wishart.objective(terms[0], trial)
             if now <= best:
@@ -179,10 +182,8 @@ def solve(
         fit, best = trial, now
         value, inverse, sandwich = terms
         if update % OTHERS_EVERY == OTHERS_EVERY - 1:
-            if settings.coda or bands > 1:
-                _update_share(model, wishart, fit, gathered)
-                kernels = model.mixed(fit.share)
-                signal = model.forward(gathered, kernels)
+            if bands > 1:
+                signal *= _update_share(wishart, fit, signal, inverse, sandwich)
             if settings.gains:
                 _update_gains(wishart, fit, signal)
             value, inverse, sandwich = wishart.terms(wishart.total(signal, fit))
@@ -197,13 +198,11 @@ def solve(
 
 
 def _factors(
-    model: EnergyModel, wishart: Wishart, fit: Fit, kernels: list[NDArray[np.complex64]], inverse: Array, sandwich: Array
+    model: EnergyModel, wishart: Wishart, fit: Fit, inverse: Array, sandwich: Array
 ) -> tuple[NDArray[np.float32], Array]:
     """Ratio of both sums of the update for every energy and for the model errors."""
-    gain = fit.gains
-    weight = wishart.weight[..., None] * (gain[:, _FIRST_GROUP] * gain[:, _SECOND_GROUP])[:, None, None]
-    top = model.adjoint(weight * sandwich, kernels)
-    bottom = model.adjoint(weight * inverse, kernels)
+    weight = wishart.weight[..., None] * wishart.factor(fit)
+    top, bottom = model.adjoint(weight * sandwich), model.adjoint(weight * inverse)
     seen = bottom > UNSEEN * np.median(np.abs(bottom))
     factor = np.where(seen, np.maximum(top, 0) / np.where(seen, bottom, 1), 0).astype(np.float32)
     both = [(wishart.weight[..., None] * part * wishart.floor).sum(axis=(2, 3)) for part in (sandwich, inverse)]
@@ -211,24 +210,18 @@ def _factors(
     return factor, error
 
 
-def _update_share(model: EnergyModel, wishart: Wishart, fit: Fit, gathered: NDArray[np.complex64]) -> None:
-    """Three safe updates of the weights of direct and coda kernels, the energy standing still."""
-    gain = fit.gains
-    factor = (gain[:, _FIRST_GROUP] * gain[:, _SECOND_GROUP])[:, None, None]
-    parts = [model.forward(gathered, [band[j] for band in model.spectra]) for j in range(model.terms)]
-    for _ in range(3):
-        signal = sum(part * fit.share[None, :, j, None, None] for j, part in enumerate(parts))
-        _, inverse, sandwich = wishart.terms(wishart.total(np.asarray(signal), fit))
-        weight = wishart.weight[..., None] * factor
-        for j, part in enumerate(parts):
-            top, bottom = ((weight * g * part).sum(axis=(0, 2, 3)) for g in (sandwich, inverse))
-            fit.share[:, j] *= np.sqrt(np.maximum(top, 0) / np.maximum(bottom, 1e-300))
-    # Only products of energy and weight matter: the direct weights keep a mean of one.
-    mean = fit.share[:, 0].mean()
-    if mean > 0:
-        fit.share /= mean
-        fit.energy *= np.float32(mean)
-        gathered *= np.float32(mean)
+def _update_share(wishart: Wishart, fit: Fit, signal: Array, inverse: Array, sandwich: Array) -> float:
+    """One safe update of the weights of the bands, the energy standing still; returns what the energy is multiplied by.
+
+    Only products of energy and weight matter: the weights keep a mean of one.
+    """
+    weight = wishart.weight[..., None] * wishart.factor(fit) * signal
+    top, bottom = ((weight * part).sum(axis=(0, 2, 3)) for part in (sandwich, inverse))
+    fit.share *= np.sqrt(np.maximum(top, 0) / np.maximum(bottom, 1e-300))
+    mean = float(fit.share.mean())
+    fit.share /= mean
+    fit.energy *= np.float32(mean)
+    return mean
 
 
 def _update_gains(wishart: Wishart, fit: Fit, signal: Array) -> None:

@@ -78,7 +78,9 @@ class KernelTable:
                 f"a cell lies {farthest / 1e3:.0f} km from a site, but the kernels end at {self.distance_m[-1] / 1e3:.0f} km; "
                 "make the map smaller, leave the site out, or build the kernels for longer distances"
             )
-        at = np.clip((distance_m - self.distance_m[0]) / (self.distance_m[1] - self.distance_m[0]), 0, self.distance_m.size - 1)
+        at = np.clip(
+            (distance_m - self.distance_m[0]) / (self.distance_m[1] - self.distance_m[0]), 0, self.distance_m.size - 1
+        )
         low = np.minimum(at.astype(np.int64), self.distance_m.size - 2)
         return low, at - low
 
@@ -161,7 +163,9 @@ def unpack(packed: Array) -> Array:
     return full
 
 
-def averaged_kernel(basis_records: Array, step_s: float, band: tuple[float, float], window_s: float, lag_s: Array) -> Array:
+def averaged_kernel(
+    basis_records: Array, step_s: float, band: tuple[float, float], window_s: float, lag_s: Array
+) -> Array:
     """Return a kernel averaged over all double couples, radial frame.
 
     For double couples of any orientation <M_ij M_kl> = (d_ik d_jl + d_il d_jk - 2/3 d_ij d_kl) / 5, the one isotropic
@@ -194,7 +198,13 @@ def averaged_harmonics(kernel: Array) -> Array:
 
 
 def finished(
-    depth_km: float, distance_m: Array, bands_hz: Sequence[tuple[float, float]], window_s: float, hop_s: float, lag_s: Array, harmonics: Array
+    depth_km: float,
+    distance_m: Array,
+    bands_hz: Sequence[tuple[float, float]],
+    window_s: float,
+    hop_s: float,
+    lag_s: Array,
+    harmonics: Array,
 ) -> KernelTable:
     """Return the table with its common factor taken out; `harmonics` has shape (B, D, H, 21, L)."""
     middle = harmonics[:, distance_m.size // 2, 0]
@@ -203,5 +213,12 @@ def finished(
     if not scale > 0:
         raise InputError("the kernels are zero: no wave of the chosen bands reaches the middle distance")
     return KernelTable(
-        depth_km, distance_m, np.asarray(bands_hz, float), window_s, hop_s, lag_s, (harmonics / scale).astype(np.float32), scale
+        depth_km,
+        distance_m,
+        np.asarray(bands_hz, float),
+        window_s,
+        hop_s,
+        lag_s,
+        (harmonics / scale).astype(np.float32),
+        scale,
     )

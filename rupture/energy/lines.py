@@ -1,0 +1,254 @@
+"""Line sources in an energy movie: direction, speed, length and kind, with intervals from resampled inversions."""
+
+from __future__ import annotations
+
+from collections.abc import Callable, Sequence
+from dataclasses import dataclass
+from typing import Any
+
+import numpy as np
+from numpy.typing import NDArray
+from scipy.optimize import differential_evolution, minimize
+
+Array = NDArray[np.float64]
+
+KINDS = ("stationary", "unilateral", "bilateral")
+
+SPEED_M_S = (700.0, 7000.0)
+"""Published rupture speeds run from under 1 to about 6 km/s."""
+
+LEAST_ARM = 0.2
+"""Least ratio of the shorter to the longer arm of a bilateral rupture."""
+
+SURE = 0.7
+"""A kind that is less probable than this leaves the answer undetermined (common practice has no figure)."""
+
+_FAINT = 2e-3
+_TAPER_S = 1.5
+
+
+@dataclass(frozen=True)
+class LineFit:
+    """The best line source of one kind.
+
+    Attributes
+    ----------
+    kind
+        Stationary, unilateral or bilateral.
+    parameters
+        East, north (m), start (s), log spread (m), stray share, then duration (s) for a stationary source, or azimuth (rad),
+        log speed, log length, and for a second arm bend (rad), log speed, ratio of lengths.
+    score
+        Log-likelihood less what its parameters cost (Schwarz 1978).
+    """
+
+    kind: str
+    parameters: Array
+    score: float
+
+
+@dataclass(frozen=True)
+class LineAnswer:
+    """What the energy movie says of the rupture.
+
+    Attributes
+    ----------
+    kind, kind_probability, reason
+        As in summary.json; `undetermined` with a reason where no kind is sure.
+    best
+        The best fit of the likeliest kind.
+    values
+        Name to (best, p05, p95): azimuth_rad, speed_m_s, length_m, duration_s and, of a second arm, second_azimuth_rad,
+        second_speed_m_s, second_length_m. Without resampled inversions the ends are NaN.
+    """
+
+    kind: str
+    kind_probability: dict[str, float]
+    reason: str
+    best: LineFit
+    values: dict[str, tuple[float, float, float]]
+
+
+def line_density(kind: str, parameters: Array, east_m: Array, north_m: Array, time_s: Array, volume: float) -> Array:
+    """Return the density of energy per m^2 and s at points, all of shape (n,); its integral is one.
+
+    A front at its place has a normal spread; `volume` (m^2 s) carries the stray share evenly.
+    """
+    x0, y0, start, log_spread, stray = parameters[:5]
+    spread2 = np.exp(2 * log_spread)
+    total = np.zeros(time_s.size)
+    for azimuth, speed, duration, share in arms(kind, parameters):
+        # Soft ends: source times are only known to a window's length.
+        age = time_s - start
+        alive = 0.5 * (np.tanh(age / _TAPER_S) - np.tanh((age - duration) / _TAPER_S)) / duration
+        reach = speed * np.clip(age, 0.0, duration)
+        off = (east_m - x0 - reach * np.sin(azimuth)) ** 2 + (north_m - y0 - reach * np.cos(azimuth)) ** 2
+        total += share * alive * np.exp(-0.5 * off / spread2) / (2 * np.pi * spread2)
+    return np.asarray((1 - stray) * total + stray / volume)
+
+
+def arms(kind: str, parameters: Array) -> list[tuple[float, float, float, float]]:
+    """Return azimuth, speed, duration and share of energy of each arm; one of speed 0 for a stationary source."""
+    if kind == "stationary":
+        return [(0.0, 0.0, float(parameters[5]), 1.0)]
+    azimuth, speed, length = float(parameters[5]), float(np.exp(parameters[6])), float(np.exp(parameters[7]))
+    if kind == "unilateral":
+        return [(azimuth, speed, length / speed, 1.0)]
+    bend, speed_2, ratio = float(parameters[8]), float(np.exp(parameters[9])), float(parameters[10])
+    return [
+        (azimuth, speed, length / speed, 1 / (1 + ratio)),
+        (azimuth + np.pi + bend, speed_2, ratio * length / speed_2, ratio / (1 + ratio)),
+    ]
+
+
+def fit_lines(
+    energy: Array,
+    east_m: Array,
+    north_m: Array,
+    time_s: Array,
+    independent: float,
+    seed: int = 1,
+    near: LineFit | None = None,
+) -> list[LineFit]:
+    """Return the best line source of each kind, best first.
+
+    Parameters
+    ----------
+    energy
+        Shape (C, F).
+    east_m, north_m, time_s
+        Cells (C,) from the epicentre, and source times (F,).
+    independent
+        How many independent pieces of evidence the whole energy stands for.
+    seed
+        Of the global search.
+    near
+        Search near this fit and for its kind only.
+    """
+    cells, frames = np.nonzero(energy > _FAINT * energy.max())
+    weight = energy[cells, frames] / energy[cells, frames].sum()
+    east, north, time = east_m[cells], north_m[cells], time_s[frames]
+    width = max(float(np.ptp(east_m)), 1e4)
+    volume = width * max(float(np.ptp(north_m)), 1e4) * max(float(np.ptp(time_s)), 1.0)
+
+    def cost(parameters: Array, kind: str) -> float:
+        return -float(weight @ np.log(line_density(kind, parameters, east, north, time, volume)))
+
+    found = []
+    for kind in KINDS if near is None else (near.kind,):
+        bounds = _bounds(kind, width, float(np.ptp(time_s)))
+        if near is None:
+            first = differential_evolution(
+                cost, bounds, (kind,), maxiter=70, popsize=8, tol=1e-4, rng=seed, polish=False
+            ).x
+        else:
+            first = near.parameters
+        best = minimize(
+            cost, first, (kind,), "Nelder-Mead", bounds=bounds, options={"maxiter": 600, "xatol": 1e-3, "fatol": 1e-6}
+        )
+        score = -independent * float(best.fun) - 0.5 * len(bounds) * np.log(independent)
+        found.append(LineFit(kind, np.asarray(best.x), score))
+    return sorted(found, key=lambda fit: -fit.score)
+
+
+def _bounds(kind: str, width_m: float, span_s: float) -> list[tuple[float, float]]:
+    place = 0.1 * width_m
+    common = [(-place, place), (-place, place), (-2.0, 5.0), (np.log(3e3), np.log(0.15 * width_m)), (0.01, 0.9)]
+    if kind == "stationary":
+        return [*common, (1.0, span_s)]
+    speed = (float(np.log(SPEED_M_S[0])), float(np.log(SPEED_M_S[1])))
+    one = [*common, (-np.pi, 3 * np.pi), speed, (float(np.log(5e3)), float(np.log(0.7 * width_m)))]
+    return one if kind == "unilateral" else [*one, (-0.5, 0.5), speed, (LEAST_ARM, 1.0)]
+
+
+def line_answer(
+    energy: Array,
+    east_m: Array,
+    north_m: Array,
+    time_s: Array,
+    independent: float,
+    resampled: Sequence[Array] = (),
+    seed: int = 1,
+    progress: Callable[[int, int], None] | None = None,
+) -> LineAnswer:
+    """Return kind, direction, speed and length of the rupture in an energy movie.
+
+    Parameters
+    ----------
+    energy, east_m, north_m, time_s, independent, seed
+        As `fit_lines`.
+    resampled
+        Energies (C, F) inverted from resampled windows and sites.
+    progress
+        Called with (done, total).
+    """
+    fits = fit_lines(energy, east_m, north_m, time_s, independent, seed)
+    scores = np.array([fit.score for fit in fits])
+    odds = np.exp(scores - scores.max())
+    odds /= odds.sum()
+    best = fits[0]
+    probability = {fit.kind: float(p) for fit, p in zip(fits, odds, strict=True)}
+    rows = [_values(best)]
+    for number, movie in enumerate(resampled):
+        rows.append(_values(fit_lines(movie, east_m, north_m, time_s, independent, seed, best)[0]))
+        if progress is not None:
+            progress(number + 1, len(resampled))
+    values = {name: _interval([row[name] for row in rows], name.endswith("azimuth_rad")) for name in rows[0]}
+    reason = ""
+    if max(probability.values()) < SURE:
+        reason = "the energy movie does not tell the kinds of rupture apart"
+    elif best.parameters[4] > 0.6:
+        reason = f"{100 * best.parameters[4]:.0f} % of the inverted energy lies away from any line source"
+    return LineAnswer("undetermined" if reason else best.kind, probability, reason, best, values)
+
+
+def _values(fit: LineFit) -> dict[str, float]:
+    parts = arms(fit.kind, fit.parameters)
+    parts.sort(key=lambda arm: -arm[1] * arm[2])
+    out = {"duration_s": max(arm[2] for arm in parts)}
+    for prefix, (azimuth, speed, duration, _) in zip(("", "second_"), parts, strict=False):
+        if fit.kind != "stationary":
+            out |= {
+                f"{prefix}azimuth_rad": azimuth % (2 * np.pi),
+                f"{prefix}speed_m_s": speed,
+                f"{prefix}length_m": speed * duration,
+            }
+    return out
+
+
+def _interval(values: Sequence[float], circular: bool) -> tuple[float, float, float]:
+    best, others = values[0], np.array(values[1:])
+    if not others.size:
+        return best, np.nan, np.nan
+    off = np.angle(np.exp(1j * (others - best))) if circular else others - best
+    # Few resamples: a normal spread about the best rather than their order statistics.
+    half = 1.645 * float(np.sqrt(np.mean(off**2)))
+    low, high = best - half, best + half
+    return (best, low % (2 * np.pi), high % (2 * np.pi)) if circular else (best, max(low, 0.0), high)
+
+
+def line_summary(answer: LineAnswer) -> dict[str, Any]:
+    """Return the answer in the words of summary.json."""
+
+    def part(name: str, scale: float) -> dict[str, float | None] | None:
+        if name not in answer.values:
+            return None
+        numbers = zip(("best", "p05", "p95"), answer.values[name], strict=True)
+        return {key: round(float(v) * scale, 3) if np.isfinite(v) else None for key, v in numbers}
+
+    return {
+        "kind": answer.kind,
+        "kind_probability": {name: round(p, 4) for name, p in answer.kind_probability.items()},
+        "reason": answer.reason,
+        "direction_deg": part("azimuth_rad", 180 / np.pi),
+        "speed_km_s": part("speed_m_s", 1e-3),
+        "length_km": part("length_m", 1e-3),
+        "duration_s": part("duration_s", 1.0),
+        "second_arm": {
+            "direction_deg": part("second_azimuth_rad", 180 / np.pi),
+            "speed_km_s": part("second_speed_m_s", 1e-3),
+            "length_km": part("second_length_m", 1e-3),
+        }
+        if "second_azimuth_rad" in answer.values
+        else None,
+    }
