@@ -17,7 +17,7 @@ from rupture.direction.covariance import (
     mean_covariance,
     sliding_covariances,
 )
-from rupture.direction.likelihood import horizontal_form, vertical_form
+from rupture.direction.likelihood import horizontal_forms, vertical_form
 from rupture.direction.posterior import fill_posterior, plane_wave_equation, polarisation_equation, turn_weights
 from rupture.errors import DataError, InputError
 from rupture.site import Site
@@ -199,9 +199,13 @@ def estimate_direction(site: Site, noise_window_s: tuple[float, float], settings
         error = float(np.hypot(settings.model_error_share, site.rotation_error_share))
         equations = []
         if horizontal:
-            equations.append(plane_wave_equation(horizontal_form(trial), (ROT_E, ROT_N), covariance, noise, error))
+            equations.append(
+                plane_wave_equation(
+                    horizontal_forms(grid[0].ravel(), grid[1].ravel()), (ROT_E, ROT_N), covariance, noise, error
+                )
+            )
         if vertical:
-            equations.append(plane_wave_equation(vertical_form(trial), (ROT_Z,), covariance, noise, error))
+            equations.append(plane_wave_equation((vertical_form(trial),), (ROT_Z,), covariance, noise, error))
         if vertical and not horizontal:
             equations.append(
                 polarisation_equation(theta, slowness.size, covariance, settings.polarisation_ratio, degrees)

@@ -48,12 +48,13 @@ def _exp_in_place(x):  # pragma: no cover - compiled
 
 @numba.njit(parallel=True, cache=True, error_model="numpy")
 def posterior_log_ratio(
-    out, coherent, form, covariance, noise, floor, unit, power, degrees, offset, stray_share, blur
+    out, coherent, form, covariance, noise, floor, unit, parts, degrees, offset, stray_share, blur
 ):  # pragma: no cover - compiled
     """Fill log of posterior over prior and the probability of a coherent wave.
 
-    The gain of trial j in window t is -degrees/2 times the sum over equations of power x (log(max(r, x) / unit) +
-    min(r / x, 1) - 1), r = form . covariance and x = noise + floor, less the window's offset. Each thread owns its
+    The gain of trial j in window t is -degrees/2 times the sum over equations of sum(log(x / unit)) +
+    n (log(max(m, 1)) + min(m, 1) - 1), where r = form . covariance are the powers of the n residuals of an equation,
+    x = noise + floor what is expected of them and m the mean of r / x, less the window's offset. Each thread owns its
     windows, so that nothing depends on how many there are.
 
     Parameters
@@ -63,11 +64,11 @@ def posterior_log_ratio(
     coherent
         Shape (T,), filled.
     form, covariance
-        Shapes (equations, A, P, entries) and (equations, entries, T').
+        Shapes (residuals, A, P, entries) and (residuals, entries, T').
     noise, floor, unit
-        Expected residual power: shapes (equations, A, P), (equations, T'); `unit` (equations, T') keeps the
+        Expected residual power: shapes (residuals, A, P), (equations, T'); `unit` (equations, T') keeps the
         products of residuals from underflowing.
-    power
+    parts
         How many residuals each equation has, 1 or 2, shape (equations,).
     degrees
         Independent samples in a window.
@@ -81,7 +82,8 @@ def posterior_log_ratio(
     T' is T rounded up to whole blocks.
     """
     angles, speeds, windows = out.shape
-    equations, entries = covariance.shape[:2]
+    entries = covariance.shape[1]
+    equations = parts.size
     reach = blur.size // 2
     half = 0.5 * degrees
     for block in numba.prange((windows + BLOCK - 1) // BLOCK):
@@ -95,31 +97,39 @@ def posterior_log_ratio(
         gain = np.empty((angles, speeds, BLOCK))
         linear = np.empty((speeds, BLOCK))
         residual = np.empty(BLOCK)
+        misfit = np.empty(BLOCK)
         largest = np.zeros(BLOCK)
         evidence = np.zeros(BLOCK)
         for a in range(angles):
             product = gain[a]
             product[:] = 1.0
             linear[:] = 0.0
+            row = 0
             for e in range(equations):
-                factor = float(power[e])
+                count_parts = parts[e]
+                factor = float(count_parts)
                 other = factor - 1.0
                 for p in range(speeds):
-                    residual[:] = 0.0
-                    for k in range(entries):
-                        share = form[e, a, p, k]
+                    misfit[:] = 0.0
+                    for n in range(row, row + count_parts):
+                        residual[:] = 0.0
+                        for k in range(entries):
+                            share = form[n, a, p, k]
+                            for w in range(BLOCK):
+                                residual[w] += share * here[n, k, w]
+                        quiet = noise[n, a, p]
                         for w in range(BLOCK):
-                            residual[w] += share * here[e, k, w]
-                    quiet = noise[e, a, p]
+                            expected = quiet + base[e, w]
+                            misfit[w] += residual[w] / expected
+                            product[p, w] *= expected * scale[e, w]
                     for w in range(BLOCK):
-                        expected = quiet + base[e, w]
-                        misfit = residual[w] / expected
+                        mean = misfit[w] / factor
                         # Written out: max and min look after NaN, which keeps the loop from being vectorised.
-                        above = misfit if misfit > 1.0 else 1.0
-                        ratio = above * expected * scale[e, w]
-                        # The ratio itself, or its square where there are two residuals.
-                        product[p, w] *= ratio * (1.0 + other * (ratio - 1.0))
-                        linear[p, w] += factor * (misfit - above)
+                        above = mean if mean > 1.0 else 1.0
+                        # The excess itself, or its square where there are two residuals.
+                        product[p, w] *= above * (1.0 + other * (above - 1.0))
+                        linear[p, w] += factor * (mean - above)
+                row += count_parts
             _log_in_place(product.reshape(-1))
             for p in range(speeds):
                 for w in range(BLOCK):

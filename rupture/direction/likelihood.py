@@ -11,28 +11,33 @@ from rupture.direction.covariance import PAIRS, entry
 Array = NDArray[np.float64]
 
 
-def horizontal_form(slowness: Array) -> Array:
-    """Return the coefficients of the residual power of both horizontal rotation equations.
+def horizontal_forms(back_azimuth_rad: Array, slowness_s_m: Array) -> tuple[Array, Array]:
+    """Return the coefficients of the residual powers of the horizontal rotation, about two axes.
 
-    Residuals rot_E + p_N acc_Z and rot_N - p_E acc_Z (Aki & Richards 2002 ch. 5; Cochard et al. 2006).
+    Residuals rot_E + p_N acc_Z and rot_N - p_E acc_Z (Aki & Richards 2002 ch. 5; Cochard et al. 2006), turned to the
+    axis across the ray, about which the wave rocks, and the axis along it, about which it does not: the vertical
+    sensor's noise is in the first alone.
 
     Parameters
     ----------
-    slowness
-        East and north slowness in s/m, shape (2, trials).
+    back_azimuth_rad, slowness_s_m
+        Trials, shape (trials,).
 
     Returns
     -------
-    ndarray
+    across, along
         Shape (trials, 21): times the 21 entries of a covariance gives the power.
     """
-    east, north = slowness
-    form = np.zeros((east.size, len(PAIRS)))
-    form[:, entry(ROT_E, ROT_E)] = form[:, entry(ROT_N, ROT_N)] = 1.0
-    form[:, entry(ROT_E, ACC_Z)] = 2 * north
-    form[:, entry(ROT_N, ACC_Z)] = -2 * east
-    form[:, entry(ACC_Z, ACC_Z)] = east**2 + north**2
-    return form
+    sine, cosine = np.sin(back_azimuth_rad), np.cos(back_azimuth_rad)
+    across, along = np.zeros((2, sine.size, len(PAIRS)))
+    across[:, entry(ROT_E, ROT_E)] = along[:, entry(ROT_N, ROT_N)] = cosine**2
+    across[:, entry(ROT_N, ROT_N)] = along[:, entry(ROT_E, ROT_E)] = sine**2
+    along[:, entry(ROT_E, ROT_N)] = 2 * sine * cosine
+    across[:, entry(ROT_E, ROT_N)] = -2 * sine * cosine
+    across[:, entry(ROT_E, ACC_Z)] = -2 * slowness_s_m * cosine
+    across[:, entry(ROT_N, ACC_Z)] = 2 * slowness_s_m * sine
+    across[:, entry(ACC_Z, ACC_Z)] = slowness_s_m**2
+    return across, along
 
 
 def vertical_form(slowness: Array) -> Array:

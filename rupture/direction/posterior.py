@@ -30,49 +30,50 @@ class Equation:
 
     Attributes
     ----------
-    form
-        Coefficients of the residual power, shape (trials, 21).
+    forms
+        Coefficients of each residual's power, shapes (trials, 21).
     covariance
         Shape (21, T).
-    noise, floor
-        Expected residual power of each trial, shape (trials,), and of each window, shape (T,).
+    noise
+        Expected power of each residual from noise, shapes (trials,).
+    floor
+        What is expected of each residual on top, in each window, shape (T,).
     unit
-        Power that the residual is compared with, shape (T,).
-    power
-        Number of residuals in it.
+        Power that residuals are compared with, shape (T,).
     null
         Log-likelihood for one independent sample, times -2, when there is no wave, shape (T,).
     """
 
-    form: Array
+    forms: tuple[Array, ...]
     covariance: Array
-    noise: Array
+    noise: tuple[Array, ...]
     floor: Array
     unit: Array
-    power: int
     null: Array
 
 
-def plane_wave_equation(form: Array, rows: tuple[int, ...], covariance: Array, noise: Array, error: float) -> Equation:
+def plane_wave_equation(
+    forms: tuple[Array, ...], rows: tuple[int, ...], covariance: Array, noise: Array, error: float
+) -> Equation:
     """Return a rotation equation; without a wave, rotation of `rows` is left as no translation explains it.
 
     Parameters
     ----------
-    form
-        Coefficients of the residual power, shape (trials, 21).
+    forms
+        Coefficients of the residual powers, one for each rotation component, shapes (trials, 21).
     rows
-        Rotation components in it.
+        Rotation components in them.
     covariance, noise
         Shapes (21, T) and (21,).
     error
         Model error as a share of the rotation's amplitude.
     """
-    total = np.sum([covariance[entry(k, k)] for k in rows], axis=0)
+    total = np.mean([covariance[entry(k, k)] for k in rows], axis=0)
     unit = np.maximum(total, _TINY)
     floor = np.maximum(error**2 * total, _TINY)
-    alone = sum(float(noise[entry(k, k)]) for k in rows) + floor
+    alone = float(np.mean([noise[entry(k, k)] for k in rows])) + floor
     null = len(rows) * (np.log(np.maximum(total, alone) / unit) + np.minimum(total / alone, 1.0) - 1.0)
-    return Equation(form, covariance, np.maximum(form @ noise, 0.0), floor, unit, len(rows), null)
+    return Equation(forms, covariance, tuple(np.maximum(f @ noise, 0.0) for f in forms), floor, unit, null)
 
 
 def polarisation_equation(
@@ -103,7 +104,7 @@ def polarisation_equation(
     largest = gain.max(axis=0)
     null = -2.0 / degrees * (largest + np.log(np.exp(gain - largest).mean(axis=0)))
     form = np.repeat(form, speeds, axis=0)
-    return Equation(form, covariance, np.zeros(len(form)), limit, limit, 1, null)
+    return Equation((form,), covariance, (np.zeros(len(form)),), limit, limit, null)
 
 
 def fill_posterior(
@@ -130,22 +131,24 @@ def fill_posterior(
         As `turn_weights` gives it.
     """
     angles, speeds, windows = log_ratio.shape
-    entries = [np.flatnonzero(e.form.any(axis=0)) for e in equations]
+    parts = [(e, form) for e in equations for form in e.forms]
+    entries = [np.flatnonzero(form.any(axis=0)) for _, form in parts]
     most = max(k.size for k in entries)
-    form = np.zeros((len(equations), angles * speeds, most))
+    form = np.zeros((len(parts), angles * speeds, most))
     whole = -(-windows // BLOCK) * BLOCK
-    covariance = np.zeros((len(equations), most, whole))
+    covariance = np.zeros((len(parts), most, whole))
     floor, unit = np.ones((2, len(equations), whole))
-    for n, (equation, used) in enumerate(zip(equations, entries, strict=True)):
-        form[n, :, : used.size] = equation.form[:, used]
+    for n, ((equation, coefficients), used) in enumerate(zip(parts, entries, strict=True)):
+        form[n, :, : used.size] = coefficients[:, used]
         covariance[n, : used.size, :windows] = equation.covariance[used]
+    for n, equation in enumerate(equations):
         floor[n, :windows], unit[n, :windows] = equation.floor, equation.unit
-    noise = np.stack([e.noise for e in equations])
+    noise = np.stack([n for e in equations for n in e.noise])
     offset = np.zeros(whole)
     offset[:windows] = -0.5 * degrees * np.sum([e.null for e in equations], axis=0)
     posterior_log_ratio(
         log_ratio, coherent, form.reshape(-1, angles, speeds, most), covariance, noise.reshape(-1, angles, speeds),
-        floor, unit, np.array([e.power for e in equations]), degrees, offset, stray_share, blur,
+        floor, unit, np.array([len(e.forms) for e in equations]), degrees, offset, stray_share, blur,
     )  # fmt: skip
 
 

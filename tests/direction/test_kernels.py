@@ -7,7 +7,7 @@ from scipy.special import logsumexp
 
 from rupture.conventions import slowness_vector
 from rupture.direction.covariance import PAIRS, band_signal, mean_covariance, sliding_covariances
-from rupture.direction.likelihood import horizontal_form, vertical_form
+from rupture.direction.likelihood import horizontal_forms, vertical_form
 from rupture.direction.posterior import fill_posterior, plane_wave_equation, polarisation_equation, turn_weights
 
 ANGLES, SPEEDS, WINDOWS = 36, 7, 53
@@ -54,10 +54,14 @@ def twin(theta, trial, packed, noise, names, blur_rad=0.0):
         for j, (east, north) in enumerate(trial.T):
             if "horizontal" in names:
                 rows = np.array([[0, 0, north, 1, 0, 0], [0, 0, -east, 0, 1, 0]])
-                total = c[3, 3] + c[4, 4]
-                expected = np.trace(rows @ background @ rows.T) + ERROR**2 * total
-                alone = background[3, 3] + background[4, 4] + ERROR**2 * total
-                gain[j] -= DEGREES * (student(np.trace(rows @ c @ rows.T), expected) - student(total, alone))
+                total = (c[3, 3] + c[4, 4]) / 2
+                across = np.array([-north, east]) / np.hypot(east, north)
+                axes = np.array([across, [across[1], -across[0]]]) @ rows
+                expected = np.diag(axes @ background @ axes.T) + ERROR**2 * total
+                alone = (background[3, 3] + background[4, 4]) / 2 + ERROR**2 * total
+                misfit = np.mean(np.diag(axes @ c @ axes.T) / expected)
+                trial_cost = np.log(expected).sum() + 2 * student(misfit, 1.0)
+                gain[j] -= 0.5 * DEGREES * (trial_cost - 2 * student(total, alone))
             if "vertical" in names:
                 row = np.array([-north / 2, east / 2, 0, 0, 0, 1])
                 expected = row @ background @ row + ERROR**2 * c[5, 5]
@@ -82,8 +86,10 @@ def twin(theta, trial, packed, noise, names, blur_rad=0.0):
 
 def compiled(theta, trial, packed, noise, names, blur_rad=0.0):
     build = {
-        "horizontal": lambda: plane_wave_equation(horizontal_form(trial), (3, 4), packed, noise, ERROR),
-        "vertical": lambda: plane_wave_equation(vertical_form(trial), (5,), packed, noise, ERROR),
+        "horizontal": lambda: plane_wave_equation(
+            horizontal_forms(np.repeat(theta, SPEEDS), np.hypot(*trial)), (3, 4), packed, noise, ERROR
+        ),
+        "vertical": lambda: plane_wave_equation((vertical_form(trial),), (5,), packed, noise, ERROR),
         "polarisation": lambda: polarisation_equation(theta, SPEEDS, packed, KAPPA, DEGREES),
     }
     out, coherent = np.zeros((ANGLES, SPEEDS, packed.shape[1]), np.float32), np.zeros(packed.shape[1])

@@ -44,11 +44,16 @@ def test_horizontally_polarised_waves_have_no_180_degree_ambiguity(waves, kind, 
 
 
 def test_love_wave_on_six_components_fills_the_line_that_the_vertical_rotation_allows(waves):
-    """With no vertical motion the horizontal rotations say nothing; the truth must stay inside the 90 % interval."""
-    found = estimate_direction(waves.record("Love", 130.0, 3300.0, noise=0.003), NOISE_S, ONE_BAND)
-    answer, use = intervals(found), windows(found)
-    low, high = np.degrees(answer.back_azimuth_p05_rad[0, use]), np.degrees(answer.back_azimuth_p95_rad[0, use])
-    assert ((130.0 - low) % 360 <= (high - low) % 360).all()
+    """With no vertical motion the horizontal rotations say nothing; the truth stays inside most 90 % intervals."""
+    held, width = [], []
+    for seed in range(4):
+        found = estimate_direction(waves.record("Love", 130.0, 3300.0, noise=0.003, seed=seed), NOISE_S, ONE_BAND)
+        answer, use = intervals(found), windows(found)
+        low, high = (np.degrees(getattr(answer, f"back_azimuth_{p}_rad")[0, use]) for p in ("p05", "p95"))
+        held.append((130.0 - low) % 360 <= (high - low) % 360)
+        width.append((high - low) % 360)
+    assert np.mean(held) > 0.8
+    assert 30 < np.median(width) < 180
 
 
 @pytest.mark.parametrize(
