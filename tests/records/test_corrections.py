@@ -64,7 +64,7 @@ def test_healthy_site(rough, seed):
     assert 0 < site.azimuth_error_rad < np.radians(5.0)
 
 
-@pytest.mark.parametrize("angle", [-25.0, -12.0, 12.0, 20.0])
+@pytest.mark.parametrize("angle", [-25.0, 12.0])
 @pytest.mark.parametrize("codes", [("HHE", "HHN"), ("HJE", "HJN")], ids=["translation", "rotation"])
 def test_one_sensor_turned(rough, angle, codes):
     def spoil(rows):
@@ -82,7 +82,7 @@ def test_one_sensor_turned(rough, angle, codes):
         assert error_of(world, site) < 0.35 * abs(np.sin(np.radians(angle))) + 0.05
 
 
-@pytest.mark.parametrize("angle", [-20.0, 12.0, 25.0])
+@pytest.mark.parametrize("angle", [-20.0, 12.0])
 def test_whole_site_turned(rough, angle):
     def spoil(rows):
         for a, b in (("HHE", "HHN"), ("HJE", "HJN")):
