@@ -37,11 +37,20 @@ def main() -> None:
             found = run_track(job, Progress()).summary["rupture"]
             truth = json.loads(files.truth.read_text(encoding="utf-8"))["rupture"]
         likely = max(found["kind_probability"], key=found["kind_probability"].get)
-        cells = [name, scenario.engine, f"{scenario.coda.energy_ratio:g}", f"{found['kind']} ({likely} {found['kind_probability'][likely]:.0%})"]
+        cells = [
+            name,
+            scenario.engine,
+            f"{scenario.coda.energy_ratio:g}",
+            f"{found['kind']} ({likely} {found['kind_probability'][likely]:.0%})",
+        ]
         for key, digits in (("direction_deg", 0), ("speed_km_s", 1), ("length_km", 0)):
             true = "none" if truth.get(key) is None else f"{truth[key]:.{digits}f}"
             value = found[key]
-            answer = "none" if value is None else f"{value['best']:.{digits}f} ({value['p05']:.{digits}f} to {value['p95']:.{digits}f})"
+            answer = (
+                "none"
+                if value is None
+                else f"{value['best']:.{digits}f} ({value['p05']:.{digits}f} to {value['p95']:.{digits}f})"
+            )
             cells.append(f"{true}; {answer}")
         if found["second_arm"]:
             arm = found["second_arm"]

@@ -16,6 +16,7 @@ from rupture.errors import DataError
 from rupture.front import FrontTrack, RuptureFit, fit_rupture, prior_for, smooth_front
 from rupture.front.lines import PARAMETERS, LinePrior
 from rupture.geodesy import LocalPlane, distance_azimuth
+from rupture.inverting import EnergyStage, agreement, energy_stage
 from rupture.mapping import Geometry, Grid, Stack, map_grid, read_trace, site_geometry, stack_rays, trace_grid
 from rupture.progress import Progress
 from rupture.result import Result
@@ -62,13 +63,16 @@ def run_track(job: Job, progress: Progress) -> Result:
             + ("\n  " + "\n  ".join(reasons) if reasons else "")
         )
     tracked = stack_and_fit(job, inputs, found, position, grid, prior, progress)
+    energy = None
+    if job.energy.on:
+        energy = energy_stage(job, inputs, position, grid, float(tracked.stack.source_time_s[-1]), progress)
     reliability = None
     if job.null_tests.ruptures:
         from rupture.resolution.null_tests import run_null_tests
 
         with progress.stage("null tests") as report:
             reliability = run_null_tests(job, inputs, tracked, prior, report)
-    return label(job, inputs, tracked, refused, reliability, progress)
+    return label(job, inputs, tracked, refused, reliability, progress, energy)
 
 
 def _where(job: Job, inputs: Inputs) -> tuple[Grid, LinePrior]:
@@ -172,6 +176,7 @@ def label(
     refused: dict[str, str],
     reliability: dict[str, Any] | None,
     progress: Progress,
+    energy: EnergyStage | None = None,
 ) -> Result:
     """Put names, units and the summary on what the stages found."""
     rows = site_rows(inputs, refused)
@@ -186,12 +191,13 @@ def label(
         "smoothed_probability": (front.probability, "1", "the same given all frames and the bound on front speed"),
         "energy_proxy": (stack.energy, "1", "location probability times spreading- and site-corrected power, relative"),
     }
+    rupture = rupture_summary(tracked.fit)
     summary = {
         "event": event_summary(inputs.event),
         "sites": site_summaries(rows),
-        "rupture": rupture_summary(tracked.fit),
+        "rupture": rupture,
         "reliability": reliability,
-        "agreement": None,
+        "agreement": agreement(rupture, energy),
         "provenance": provenance(job, progress),
     }
     return Result(
@@ -199,7 +205,7 @@ def label(
         datasets.site_dataset(rows),
         direction,
         datasets.map_dataset(grid, stack.source_time_s, cells, {"no_source_probability": stack.no_source}),
-        None,
+        None if energy is None else energy.dataset,
         track_dataset(inputs, tracked, np.asarray(direction["time"].values)),
         quality_rows(inputs.site_set),
         job.as_table(),
@@ -261,7 +267,9 @@ def track_dataset(inputs: Inputs, tracked: Tracked, time_s: Array) -> Any:
     alive = np.isfinite(run)
     lon, lat = np.full((2, *run.shape), np.nan)
     lon[alive], lat[alive] = plane.to_geographic(east[alive], north[alive])
-    along, share = datasets.along_axis_probability(grid, tracked.stack.location_probability, float(best[PARAMETERS.index("azimuth_rad")]))
+    along, share = datasets.along_axis_probability(
+        grid, tracked.stack.location_probability, float(best[PARAMETERS.index("azimuth_rad")])
+    )
     covariance = front.covariance_m2 / KM**2
     put = datasets.labelled
     sample, kind = _draws(fit)

@@ -48,7 +48,14 @@ class Given:
     @property
     def arguments(self):
         f = self.folder
-        return ["--records", str(f / "records"), "--inventory", str(f / "inventory.xml"), "--event", str(f / "event.xml")]
+        return [
+            "--records",
+            str(f / "records"),
+            "--inventory",
+            str(f / "inventory.xml"),
+            "--event",
+            str(f / "event.xml"),
+        ]
 
 
 @pytest.fixture(scope="session")

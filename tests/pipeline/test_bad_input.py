@@ -8,7 +8,6 @@ import pytest
 
 from rupture.records import event_from_origin
 from rupture.synthetic.simulate import simulate
-
 from tests.pipeline.conftest import Given, scenario
 
 QUICK = "[fit]\nparticles = 60\nmoves = 1\n[null_tests]\nruptures = 0\n"

@@ -76,20 +76,20 @@ def test_tables(left):
 
 
 def test_the_resolved_job_repeats_the_run(left, run, tmp_path):
-    code, out, err = run("track", left / "job.toml", "--no-null-tests", "--quiet", "--json", "--out", tmp_path / "again")
+    code, out, err = run(
+        "track", left / "job.toml", "--no-null-tests", "--quiet", "--json", "--out", tmp_path / "again"
+    )
     assert code == 0, err
     first = json.loads((left / "summary.json").read_text())["rupture"]
     assert json.loads(out)["rupture"] == first
 
 
 def test_redraw_and_direction(left, made, run, tmp_path):
-    code, out, err = run("redraw", left / "result.nc", "--quiet", "--out", tmp_path / "again")
+    code, _, err = run("redraw", left / "result.nc", "--quiet", "--out", tmp_path / "again")
     assert code == 0, err
     assert (tmp_path / "again" / "report.html").is_file()
     one = sorted((made.folder / "records").glob("*.mseed"))[0]
-    code, out, err = run(
-        "direction", "--records", one, *made.arguments[2:], "--quiet", "--out", tmp_path / "directions"
-    )
+    code, _, err = run("direction", "--records", one, *made.arguments[2:], "--quiet", "--out", tmp_path / "directions")
     assert code == 0, err
     assert (tmp_path / "directions" / "direction.csv").is_file()
     code, _, err = run("redraw", tmp_path / "nothing.nc", "--out", tmp_path / "x")
