@@ -13,7 +13,15 @@ from rupture import datasets
 from rupture.conventions import KM
 from rupture.direction import SiteDirection
 from rupture.errors import DataError
-from rupture.front import FrontTrack, RuptureFit, fit_rupture, prior_for, smooth_front
+from rupture.front import (
+    FrontTrack,
+    RuptureFit,
+    fit_rupture,
+    front_positions,
+    predicted_back_azimuths,
+    prior_for,
+    smooth_front,
+)
 from rupture.front.lines import PARAMETERS, LinePrior
 from rupture.geodesy import LocalPlane, distance_azimuth
 from rupture.inverting import EnergyStage, agreement, energy_stage
@@ -24,9 +32,6 @@ from rupture.run import Inputs, directions, event_summary, load, provenance, qua
 from rupture.settings import Job
 
 Array = NDArray[np.float64]
-
-CURVE_POINTS = 80
-"""Points of a front's predicted back-azimuth curve."""
 
 DRAWS = 600
 """Draws of the posterior that a result keeps."""
@@ -212,49 +217,6 @@ def label(
     )
 
 
-def front_positions(parameters: Array, source_time_s: Array) -> tuple[Array, Array, Array]:
-    """Return east, north (m) and distance (m) of each arm at source times, NaN while it does not run; (arms, F)."""
-    named = dict(zip(PARAMETERS, parameters, strict=True))
-    x0, y0, t0 = named["east_m"], named["north_m"], named["start_time_s"]
-    azimuth, speed, length = named["azimuth_rad"], named["speed_m_s"], named["length_m"]
-    azimuth_2, speed_2, length_2 = (named[f"second_{name}"] for name in ("azimuth_rad", "speed_m_s", "length_m"))
-    arms = [(azimuth, speed, length)] if length > 0 else []
-    arms += [(azimuth_2, speed_2, length_2)] if length_2 > 0 else []
-    east, north, run = np.full((3, max(1, len(arms)), source_time_s.size), np.nan)
-    if not arms:
-        alive = (source_time_s >= t0) & (source_time_s <= t0 + named["duration_s"])
-        east[0, alive], north[0, alive], run[0, alive] = x0, y0, 0.0
-    for k, (angle, pace, reach) in enumerate(arms):
-        distance = pace * (source_time_s - t0)
-        alive = (distance >= 0) & (distance <= reach)
-        run[k, alive] = distance[alive]
-        east[k, alive], north[k, alive] = x0 + distance[alive] * np.sin(angle), y0 + distance[alive] * np.cos(angle)
-    return east, north, run
-
-
-def predicted_back_azimuths(inputs: Inputs, position: NDArray[np.int64], parameters: Array, time_s: Array) -> Array:
-    """Return the back-azimuth at which each site hears the strongest S of each arm; degrees, (arms, sites, T)."""
-    named = dict(zip(PARAMETERS, parameters, strict=True))
-    begin, rise = named["start_time_s"], named["rise_time_s"]
-    tau = begin + np.linspace(0.0, named["duration_s"], CURVE_POINTS)
-    east, north, _ = front_positions(parameters, tau)
-    plane = LocalPlane(inputs.event.longitude_deg, inputs.event.latitude_deg)
-    travel, _ = inputs.responses.strongest("S")
-    out = np.full((east.shape[0], position.size, time_s.size), np.nan)
-    for arm in range(east.shape[0]):
-        runs = np.isfinite(east[arm])
-        longitude, latitude = plane.to_geographic(east[arm, runs], north[arm, runs])
-        for row, k in enumerate(position):
-            site = inputs.sites[k]
-            distance, _, back = distance_azimuth(longitude, latitude, site.longitude_deg, site.latitude_deg)
-            arrival = tau[runs] + 0.5 * rise + inputs.responses.at(travel, distance)
-            # Toward a supershear front the order of arrival is not the order of emission.
-            order = np.argsort(arrival)
-            curve = np.unwrap(back[order])
-            out[arm, row] = np.degrees(np.interp(time_s, arrival[order], curve, np.nan, np.nan)) % 360.0
-    return out
-
-
 def track_dataset(inputs: Inputs, tracked: Tracked, time_s: Array) -> Any:
     """Return the track group of a result."""
     import xarray as xr
@@ -264,6 +226,10 @@ def track_dataset(inputs: Inputs, tracked: Tracked, time_s: Array) -> Any:
     longitude, latitude = plane.to_geographic(front.east_m, front.north_m)
     best = fit.best()
     east, north, run = front_positions(best, front.source_time_s)
+    sites = [inputs.sites[k] for k in tracked.position]
+    curves = predicted_back_azimuths(
+        best, inputs.event, [s.longitude_deg for s in sites], [s.latitude_deg for s in sites], inputs.responses, time_s
+    )
     alive = np.isfinite(run)
     lon, lat = np.full((2, *run.shape), np.nan)
     lon[alive], lat[alive] = plane.to_geographic(east[alive], north[alive])
@@ -286,9 +252,7 @@ def track_dataset(inputs: Inputs, tracked: Tracked, time_s: Array) -> Any:
         "front_longitude": put("arm source_time", lon, "degrees_east"),
         "front_latitude": put("arm source_time", lat, "degrees_north"),
         "front_distance": put("arm source_time", run / KM, "km"),
-        "predicted_back_azimuth": put(
-            "arm site time", predicted_back_azimuths(inputs, tracked.position, best, time_s), "degrees"
-        ),
+        "predicted_back_azimuth": put("arm site time", np.degrees(curves), "degrees"),
         "along_probability": put("source_time along", share),
         "sample": put("draw parameter", sample),
         "kind": ("draw", kind),

@@ -12,14 +12,14 @@ from rupture.direction import SiteDirection
 from rupture.earth.responses import Responses
 from rupture.errors import InputError
 from rupture.event import Event
-from rupture.front.lines import KINDS, PARAMETERS, LinePrior, to_parameters
+from rupture.front.lines import ANGLES, FREE, KINDS, PARAMETERS, LinePrior, same_first_arm, to_parameters
 from rupture.front.sampler import temper
 from rupture.front.windows import Windows, lay_out
 from rupture.mapping.grid import subsurface_length_km
 
 Array = NDArray[np.float64]
 
-ANGLES = ("azimuth_rad", "second_azimuth_rad")
+CIRCULAR = ("azimuth_rad", "second_azimuth_rad")
 
 
 @dataclass(frozen=True)
@@ -34,6 +34,8 @@ class FitSettings:
         Distance between the windows used, s.
     slowness_spread
         Standard deviation of the log of true over predicted apparent slowness.
+    azimuth_spread_deg
+        Standard deviation of true less predicted back-azimuth: rays bend sideways in an Earth that no layers describe.
     power_sigma
         Log-scatter of window power about a line of even strength.
     power_share
@@ -51,6 +53,7 @@ class FitSettings:
     moves: int = 2
     hop_s: float = 1.0
     slowness_spread: float = 0.25
+    azimuth_spread_deg: float = 3.0
     power_sigma: float = 0.8
     power_share: float = 1.0
     trust: float = 0.25
@@ -79,7 +82,7 @@ class RuptureFit:
     reason
         Why it is undetermined; empty otherwise.
     samples
-        SI parameters per kind in the order of `parameters`, shape (draws, 15) each.
+        SI parameters per kind in the order of `parameters`, shape (draws, 16) each.
     parameters
         Names of the columns.
     likelihood
@@ -104,16 +107,16 @@ class RuptureFit:
 
     def interval(self, name: str, kind: str | None = None) -> tuple[float, float, float]:
         """Return best (median), p05 and p95 of a parameter; angles on the circle, in [0, 2 pi)."""
-        return interval(self.column(name, kind), circular=name in ANGLES)
+        return interval(self.column(name, kind), circular=name in CIRCULAR)
 
     def best(self, kind: str | None = None) -> Array:
-        """Return the draw nearest to the medians of azimuth, speed, length and duration, shape (15,)."""
+        """Return the draw nearest to the medians of azimuth, speed, length and duration, shape (16,)."""
         draws = self.samples[kind or self.likeliest]
         distance = np.zeros(draws.shape[0])
         for k, name in enumerate(self.parameters):
-            middle, low, high = interval(draws[:, k], circular=name in ANGLES)
-            width = (high - low) % (2 * np.pi) if name in ANGLES else high - low
-            offset = (draws[:, k] - middle + np.pi) % (2 * np.pi) - np.pi if name in ANGLES else draws[:, k] - middle
+            middle, low, high = interval(draws[:, k], circular=name in CIRCULAR)
+            width = (high - low) % (2 * np.pi) if name in CIRCULAR else high - low
+            offset = (draws[:, k] - middle + np.pi) % (2 * np.pi) - np.pi if name in CIRCULAR else draws[:, k] - middle
             distance += (offset / width) ** 2 if width > 0 else 0.0
         best: Array = draws[int(np.argmin(distance))]
         return best
@@ -187,7 +190,7 @@ def fit_rupture(
     longest_s = 3.0 * prior.length_m / 2800.0 + 20.0
     windows = lay_out(
         directions, site_longitude_deg, site_latitude_deg, event, responses, longest_s,
-        settings.slowness_spread, settings.hop_s, settings.power_sigma, settings.power_share,
+        settings.slowness_spread, np.radians(settings.azimuth_spread_deg), settings.hop_s, settings.power_sigma, settings.power_share,
     )  # fmt: skip
     return fit_windows(windows, prior, settings, seed, progress)
 
@@ -214,8 +217,12 @@ def fit_windows(
         def log_prior(draws: Array, kind: str = kind) -> Array:
             return prior.log_density(kind, draws)
 
-        found = temper(draw, log_prior, log_likelihood, settings.particles, settings.moves, rng)
-        samples[kind] = to_parameters(kind, found.draws)
+        def rename(draws: Array, kind: str = kind) -> Array:
+            return same_first_arm(kind, draws)
+
+        angles = [column for column, parameter in enumerate(FREE[kind]) if parameter in ANGLES]
+        found = temper(draw, log_prior, log_likelihood, settings.particles, settings.moves, rng, angles, rename)
+        samples[kind] = to_parameters(kind, same_first_arm(kind, found.draws, longer_first=True))
         likelihood[kind] = settings.trust * windows.log_likelihood(samples[kind])
         evidence[kind] = found.log_evidence
         if progress is not None:

@@ -22,195 +22,242 @@ import numpy as np
     STRAY,
     P_SHARE,
     RISE,
-) = range(15)
+    SHARE_2,
+) = range(16)
 
-NODES = 24
-"""Points that stand for one arm: a front of 100 km is then sampled every 4 km, finer than any window resolves."""
+PIECES = 20
+"""Pieces of one arm: a front of 100 km then moves 5 km in a piece, less than any window resolves, and the energy of a piece is
+spread over all of its arrival time, so that long ruptures stay smooth."""
 
-CODA_STRIDE = 3
-"""Scattered waves come from every third node: they are too diffuse to need more."""
+LONGEST_RISE_S = 30.0
+"""Windows are widened by the rise time up to this."""
+
+TIME, SLOWNESS, ENERGY = range(3)
+"""Columns of a wave's table."""
+
+WEIGHT, PULL_EAST, PULL_NORTH = range(3)
+"""Rows that an arm fills: energy, and energy times the east and north slowness toward the source."""
 
 ISOTROPIC_CODA, CODA_FOCUS = 0.4, 0.87
 """Scattered waves: this share comes from anywhere; the rest about the place that radiated them with 30 degrees of spread, so
-that their mean direction keeps exp(-0.5 (30 deg)^2) of its length. Multiple forward scattering keeps early coda near the
+that their mean slowness keeps exp(-0.5 (30 deg)^2) of its length. Multiple forward scattering keeps early coda near the
 direct path (common practice); both values are broad on purpose."""
 
 POWER_FLOOR = 0.02
 """Window power counts down to this share of its peak."""
 
-
-@numba.njit(cache=True)
-def place_nodes(theta, east, north, time, weight):  # pragma: no cover - compiled
-    """Fill the nodes of both arms; returns how many there are. Weights add up to one (power by arm length or time)."""
-    x0, y0, t0 = theta[EAST], theta[NORTH], theta[START]
-    if theta[LENGTH] <= 0.0:
-        for j in range(NODES):
-            east[j], north[j] = x0, y0
-            time[j] = t0 + theta[DURATION] * (j + 0.5) / NODES
-            weight[j] = 1.0 / NODES
-        return NODES
-    total = theta[LENGTH] + theta[LENGTH_2]
-    count = 0
-    for arm in range(2):
-        length = theta[LENGTH] if arm == 0 else theta[LENGTH_2]
-        if length <= 0.0:
-            continue
-        azimuth = theta[AZIMUTH] if arm == 0 else theta[AZIMUTH_2]
-        speed = theta[SPEED] if arm == 0 else theta[SPEED_2]
-        for j in range(NODES):
-            reach = length * (j + 0.5) / NODES
-            east[count] = x0 + reach * np.sin(azimuth)
-            north[count] = y0 + reach * np.cos(azimuth)
-            time[count] = t0 + reach / speed
-            weight[count] = length / total / NODES
-            count += 1
-    return count
+_REACH = 1.7320508075688772
+"""Three-point Gauss-Hermite rule: nodes at 0 and +-sqrt(3) standard deviations, weights 2/3 and 1/6."""
 
 
 @numba.njit(cache=True)
-def _taper(x):  # pragma: no cover - compiled
-    """Weight of an arrival in a window of unit length; a biweight, within 4 % of a Hann window and free of cosines."""
-    y = 1.0 - 4.0 * x * x
-    return y * y if y > 0.0 else 0.0
+def place_pieces(theta, east, north, time, weight):  # pragma: no cover - compiled
+    """Fill the ends of the pieces of each arm and the share of the energy of one piece; return arms and pieces of each.
 
-
-@numba.njit(cache=True)
-def _site_log_likelihood(
-    theta,
-    count,
-    east,
-    north,
-    time,
-    weight,
-    ratio,
-    log_power,
-    window_time,
-    window_s,
-    share,
-    place,
-    tables,
-    primary,
-    grid,
-    power,
-    pull,
-):  # pragma: no cover - compiled
-    """One site. `ratio` is (A, P, T): contiguous in time, as arrivals are; `tables` is (W, 3, D): time, log slowness, energy.
-
-    `power` (2, T) gathers what comes from one direction per arm and what comes from anywhere; `pull` (2, 4, T) gathers, per
-    arm, weight, weighted sine, cosine and log slowness: a window shows one wave, the mean of all that an arm sends into it.
+    Shapes (2, PIECES + 1) and (2,). A stationary source is one arm of one piece that starts and ends in the same place.
     """
-    angles, nodes_p, windows = ratio.shape
-    step_m, log_p0, log_step = grid
-    hop = window_time[1] - window_time[0]
-    # A place radiates while it slips: its energy is centred half a rise time after the front, and heard that much longer.
-    span = window_s + theta[RISE]
-    half = 0.5 * span
+    if theta[LENGTH] <= 0.0:
+        east[0, :2], north[0, :2] = theta[EAST], theta[NORTH]
+        time[0, 0], time[0, 1] = theta[START], theta[START] + theta[DURATION]
+        weight[0] = 1.0
+        return 1, 1
+    arms = 2 if theta[LENGTH_2] > 0.0 else 1
+    for arm in range(arms):
+        azimuth, speed, length, share = theta[AZIMUTH], theta[SPEED], theta[LENGTH], 1.0 - theta[SHARE_2]
+        if arm == 1:
+            azimuth, speed, length, share = theta[AZIMUTH_2], theta[SPEED_2], theta[LENGTH_2], theta[SHARE_2]
+        if arms == 1:
+            share = 1.0
+        sine, cosine = np.sin(azimuth), np.cos(azimuth)
+        for j in range(PIECES + 1):
+            reach = length * j / PIECES
+            east[arm, j] = theta[EAST] + reach * sine
+            north[arm, j] = theta[NORTH] + reach * cosine
+            time[arm, j] = theta[START] + reach / speed
+        weight[arm] = share / PIECES
+    return arms, PIECES
+
+
+@numba.njit(cache=True)
+def _spread_box(out, begin, end, energy, pull_east, pull_north):  # pragma: no cover - compiled
+    """Add an arrival that lasts from begin to end (in bins) to rows of bins; bin b covers b - 0.5 to b + 0.5."""
+    if end - begin < 1.0:
+        # Shorter than a bin: split between two bins so that the centre stays where it is.
+        middle = 0.5 * (begin + end)
+        begin, end = middle - 0.5, middle + 0.5
+    low = int(np.floor(begin + 0.5))
+    high = int(np.floor(end + 0.5))
+    if high < 0 or low >= out.shape[1]:
+        return
+    density = energy / (end - begin)
+    for b in range(max(low, 0), min(high, out.shape[1] - 1) + 1):
+        g = density * (min(end, b + 0.5) - max(begin, b - 0.5))
+        out[WEIGHT, b] += g
+        out[PULL_EAST, b] += g * pull_east
+        out[PULL_NORTH, b] += g * pull_north
+
+
+@numba.njit(cache=True)
+def _arrivals(
+    theta, arms, pieces, east, north, time, weight, place, tables, primary, step_m, start_s, bin_s, direct, scattered
+):  # pragma: no cover - compiled
+    """Lay the arrivals of all waves of all pieces into bins; return when the first S wave comes.
+
+    `direct` and `scattered` have shape (2, 3, bins): what comes straight, and what is fed into the coda. `tables` is (D, W, 3).
+    """
+    waves = tables.shape[1]
+    last_row = tables.shape[0] - 2
     late = 0.5 * theta[RISE]
-    coda_time = theta[CODA_TIME]
-    power[:, :windows] = 0.0
-    pull[:, :, :windows] = 0.0
-    from_s = 1e300
-    for j in range(count):
-        arm = 0 if j < NODES else 1
-        de = east[j] - place[0]
-        dn = north[j] - place[1]
-        distance = np.sqrt(de * de + dn * dn)
-        back = np.arctan2(de, dn) + place[2]
-        sine, cosine = np.sin(back), np.cos(back)
-        at = distance / step_m
-        k = min(int(at), tables.shape[2] - 2)
-        part = at - k
-        scattered = 0.0
-        loud = 0.0
-        loud_arrival = 0.0
-        loud_slow = 0.0
-        for wave in range(tables.shape[0]):
-            energy = (1.0 - part) * tables[wave, 2, k] + part * tables[wave, 2, k + 1]
-            if energy <= 0.0:
-                continue
-            strength = weight[j] * energy * (theta[P_SHARE] if primary[wave] else 1.0)
-            arrival = time[j] + late + (1.0 - part) * tables[wave, 0, k] + part * tables[wave, 0, k + 1]
-            log_slow = (1.0 - part) * tables[wave, 1, k] + part * tables[wave, 1, k + 1]
-            first = max(0, int(np.ceil((arrival - half - window_time[0]) / hop)))
-            last = min(windows - 1, int(np.floor((arrival + half - window_time[0]) / hop)))
-            for t in range(first, last + 1):
-                g = strength * _taper((window_time[t] - arrival) / span) * 1.875 / span
-                power[0, t] += g
-                pull[arm, 0, t] += g
-                pull[arm, 1, t] += g * sine
-                pull[arm, 2, t] += g * cosine
-                pull[arm, 3, t] += g * log_slow
-            if not primary[wave]:
-                from_s = min(from_s, arrival - half)
-                scattered += strength
-                if energy > loud:
-                    loud, loud_arrival, loud_slow = energy, arrival, log_slow
-        if j % CODA_STRIDE == 1 and scattered > 0.0:
-            # Scattered waves follow the strongest S of the place with the energy of all of its S waves.
-            begin = max(0, int(np.ceil((loud_arrival - window_time[0]) / hop)))
-            if begin < windows:
-                decay = np.exp(-hop / coda_time)
-                g = CODA_STRIDE * theta[CODA] * scattered / coda_time
-                g *= np.exp(-(window_time[begin] - loud_arrival) / coda_time)
-                for t in range(begin, windows):
-                    near = (1.0 - ISOTROPIC_CODA) * g
-                    power[0, t] += near
-                    power[1, t] += ISOTROPIC_CODA * g
-                    pull[arm, 0, t] += near
-                    pull[arm, 1, t] += near * CODA_FOCUS * sine
-                    pull[arm, 2, t] += near * CODA_FOCUS * cosine
-                    pull[arm, 3, t] += near * loud_slow
-                    g *= decay
-    peak = 0.0
-    loudest = -1e300
-    for t in range(windows):
-        peak = max(peak, power[0, t] + power[1, t])
-        if log_power[t] > loudest:
-            loudest = log_power[t]
-    floor = 1e-4 * peak
+    first_s = 1e300
+    before = np.zeros((waves, 3))
+    now = np.zeros((waves, 3))
+    old_e = old_n = 0.0
+    for arm in range(arms):
+        for j in range(pieces + 1):
+            de = east[arm, j] - place[0]
+            dn = north[arm, j] - place[1]
+            # The site's north is not the plane's: meridians converge.
+            de, dn = place[2] * de + place[3] * dn, place[2] * dn - place[3] * de
+            distance = np.sqrt(de * de + dn * dn) + 1.0
+            at = distance / step_m
+            k = min(int(at), last_row)
+            part = min(at - k, 1.0)
+            fed, loud, loud_at = 0.0, 0.0, 0
+            for w in range(waves):
+                now[w, ENERGY] = (1.0 - part) * tables[k, w, ENERGY] + part * tables[k + 1, w, ENERGY]
+                if now[w, ENERGY] <= 0.0:
+                    continue
+                now[w, TIME] = (
+                    time[arm, j] + late + (1.0 - part) * tables[k, w, TIME] + part * tables[k + 1, w, TIME] - start_s
+                ) / bin_s
+                now[w, SLOWNESS] = (1.0 - part) * tables[k, w, SLOWNESS] + part * tables[k + 1, w, SLOWNESS]
+            if j > 0:
+                # Halfway between the ends of the piece stands for its direction.
+                back_e = 0.5 * (de / distance + old_e)
+                back_n = 0.5 * (dn / distance + old_n)
+                for w in range(waves):
+                    if now[w, ENERGY] <= 0.0 or before[w, ENERGY] <= 0.0:
+                        continue
+                    energy = weight[arm] * 0.5 * (now[w, ENERGY] + before[w, ENERGY])
+                    if primary[w]:
+                        energy *= theta[P_SHARE]
+                    begin, end = min(before[w, TIME], now[w, TIME]), max(before[w, TIME], now[w, TIME])
+                    slow = 0.5 * (before[w, SLOWNESS] + now[w, SLOWNESS])
+                    _spread_box(direct[arm], begin, end, energy, slow * back_e, slow * back_n)
+                    if not primary[w]:
+                        fed += energy
+                        first_s = min(first_s, begin)
+                        if energy > loud:
+                            loud, loud_at = energy, w
+                if fed > 0.0:
+                    # Scattered waves follow the strongest S of the place with the energy of all of its S waves.
+                    begin = min(before[loud_at, TIME], now[loud_at, TIME])
+                    end = max(before[loud_at, TIME], now[loud_at, TIME])
+                    slow = 0.5 * (before[loud_at, SLOWNESS] + now[loud_at, SLOWNESS])
+                    _spread_box(scattered[arm], begin, end, theta[CODA] * fed, slow * back_e, slow * back_n)
+            old_e, old_n = de / distance, dn / distance
+            before, now = now, before
+    # Without any S all windows count.
+    return start_s + bin_s * first_s if first_s < 1e300 else -1e300
+
+
+@numba.njit(cache=True)
+def _add_coda(theta, arms, bin_s, direct, scattered, isotropic):  # pragma: no cover - compiled
+    """Let what was scattered die away exponentially; a share keeps about its direction, the rest comes from anywhere."""
+    keep = np.exp(-bin_s / theta[CODA_TIME])
+    for arm in range(arms):
+        weight = pull_east = pull_north = 0.0
+        for b in range(isotropic.size):
+            weight = keep * weight + (1.0 - keep) * scattered[arm, WEIGHT, b]
+            pull_east = keep * pull_east + (1.0 - keep) * scattered[arm, PULL_EAST, b]
+            pull_north = keep * pull_north + (1.0 - keep) * scattered[arm, PULL_NORTH, b]
+            direct[arm, WEIGHT, b] += (1.0 - ISOTROPIC_CODA) * weight
+            direct[arm, PULL_EAST, b] += (1.0 - ISOTROPIC_CODA) * CODA_FOCUS * pull_east
+            direct[arm, PULL_NORTH, b] += (1.0 - ISOTROPIC_CODA) * CODA_FOCUS * pull_north
+            isotropic[b] += ISOTROPIC_CODA * weight
+
+
+@numba.njit(cache=True)
+def _windowed(bins, stride, pad, half_bins, out):  # pragma: no cover - compiled
+    """Weigh bins by a window's taper: a biweight, within 4 % of a Hann window and free of cosines."""
+    reach = int(np.floor(half_bins))
     total = 0.0
-    number = 0.0
-    mean = 0.0
-    square = 0.0
-    for t in range(windows):
-        if np.isnan(log_power[t]):
-            continue
-        all_power = power[0, t] + power[1, t] + floor
-        explained = power[1, t] + floor
-        for arm in range(2):
-            w = pull[arm, 0, t]
-            if w > 0.0:
-                back = np.arctan2(pull[arm, 1, t], pull[arm, 2, t])
-                a = int(np.floor(back / (2.0 * np.pi) * angles + 0.5)) % angles
-                b = int(np.floor((pull[arm, 3, t] / w - log_p0) / log_step + 0.5))
-                explained += w * ratio[a, min(max(b, 0), nodes_p - 1), t]
-        total += share * np.log((1.0 - theta[STRAY]) * explained / all_power + theta[STRAY])
-        if window_time[t] < from_s:
-            continue
-        # Below a share of the peak the record is coda and noise, of which this model knows little.
-        seen = np.log(np.exp(log_power[t] - loudest) + POWER_FLOOR)
-        misfit = seen - np.log(all_power / peak + POWER_FLOOR)
-        number += 1.0
-        mean += misfit
-        square += misfit * misfit
-    return total, number, mean, square
+    for k in range(-reach, reach + 1):
+        y = 1.0 - (k / half_bins) ** 2
+        total += y * y
+    out[:] = 0.0
+    for k in range(-reach, reach + 1):
+        y = 1.0 - (k / half_bins) ** 2
+        g = y * y / total
+        first = pad + k
+        if stride == 1:
+            # The compiler works on several windows at once when they lie side by side.
+            part = bins[first : first + out.size]
+            for t in range(out.size):
+                out[t] += g * part[t]
+        else:
+            for t in range(out.size):
+                out[t] += g * bins[first + t * stride]
+
+
+@numba.njit(cache=True)
+def _ratio_at(table, value, t, pull_east, pull_north, cell_s_m):  # pragma: no cover - compiled
+    """Posterior ratio of window t at a slowness vector toward the source; the table's middle cell is zero slowness."""
+    half = table.shape[0] // 2
+    e = min(max(int(np.floor(pull_east / cell_s_m + 0.5)), -half), half) + half
+    n = min(max(int(np.floor(pull_north / cell_s_m + 0.5)), -half), half) + half
+    return value[table[e, n, t]]
+
+
+@numba.njit(cache=True)
+def _direction_term(table, value, t, arms, seen, anywhere, stray, odds, cell_s_m):  # pragma: no cover - compiled
+    """Log-likelihood of one window in one band: `seen` (2, 3, T) by arm, `anywhere` (T,) from no direction."""
+    one, two = seen[0, WEIGHT, t], seen[1, WEIGHT, t] if arms == 2 else 0.0
+    direct = one + two
+    if direct <= 0.0:
+        return 0.0
+    if two <= 0.02 * one or one <= 0.02 * two:
+        a = 0 if one >= two else 1
+        w = seen[a, WEIGHT, t]
+        ratio = _ratio_at(table, value, t, seen[a, PULL_EAST, t] / w, seen[a, PULL_NORTH, t] / w, cell_s_m)
+    else:
+        # Two fronts in one window look like one in between: the mean slowness, weighted by the power of each. How much of each there
+        # happens to be scatters from window to window.
+        e1, n1 = seen[0, PULL_EAST, t] / one, seen[0, PULL_NORTH, t] / one
+        e2, n2 = seen[1, PULL_EAST, t] / two, seen[1, PULL_NORTH, t] / two
+        ratio = 0.0
+        for k in range(3):
+            g = one * (odds if k == 2 else (1.0 / odds if k == 1 else 1.0))
+            u = g / (g + two)
+            chance = 2.0 / 3.0 if k == 0 else 1.0 / 6.0
+            ratio += chance * _ratio_at(table, value, t, u * e1 + (1.0 - u) * e2, u * n1 + (1.0 - u) * n2, cell_s_m)
+    explained = (direct * ratio + anywhere[t]) / (direct + anywhere[t])
+    return np.log((1.0 - stray) * explained + stray)
 
 
 @numba.njit(parallel=True, cache=True)
 def log_likelihoods(
     particles,
     first,
-    ratio,
-    angles,
-    nodes_p,
-    log_power,
-    window_time,
+    view_first,
+    table_first,
     window_s,
-    share,
+    overlap,
+    codes,
+    value,
+    telling,
+    cells,
+    cell_s_m,
+    level,
+    multiple,
+    start_s,
+    stride,
+    bin_s,
+    pad,
     places,
     tables,
     primary,
-    grid,
+    step_m,
     power_sigma,
     power_share,
 ):  # pragma: no cover - compiled
@@ -219,68 +266,111 @@ def log_likelihoods(
     Parameters
     ----------
     particles
-        Shape (N, 15), SI units.
+        Shape (N, 16), SI units.
     first
-        First row of each site in the arrays over all windows, shape (sites + 1,).
-    ratio
-        Posterior ratios of all windows of all sites, slowness already blurred: per site (A, P, windows), end to end.
-    angles, nodes_p
-        A and P.
-    log_power
-        Natural log of window power, NaN where the window does not count, shape (windows,).
-    window_time
-        Window centres in s, shape (windows,).
-    window_s, share
-        Window length in s and share of an independent observation, shape (sites,).
+        First window of each site in arrays over all windows, shape (sites + 1,).
+    view_first
+        First view (a band at a site, the one of the shortest windows first) of each site, shape (sites + 1,).
+    table_first, window_s, overlap
+        Per view: its first element in `codes`, window length in s, share of an independent observation that a window stands for.
+    codes, value
+        Posterior over prior at trial slowness vectors toward the source, slowness and direction already blurred: (cells, cells,
+        windows) per view, end to end, as one-byte codes of equal steps of the logarithm, and what each code stands for.
+    telling
+        Whether a window tells a direction at all, per view and window, end to end: those of view v start at table_first[v] / cells^2.
+    cells, cell_s_m
+        Cells along each axis (odd) and their size.
+    level
+        Natural log of window power relative to the site's largest, plus the floor; NaN where a window does not count, shape (windows,).
+    multiple
+        How many times a window counts: 1, and other numbers in resampling; shape (windows,).
+    start_s, stride, bin_s, pad
+        Time of each site's first window, shape (sites,); bins between windows; their length; bins before the first window.
     places
-        East, north in m, turn from plane north to true north in rad: shape (sites, 3).
-    tables, primary
-        Time, log slowness and energy of each wave at equal distance steps, shape (waves, 3, D); which left as P.
-    grid
-        Distance step in m, log of the first slowness, step of its log.
-    power_sigma
-        Standard deviation of the log of window power about the model.
-    power_share
-        Weight of the power term.
+        East, north in m, cosine and sine of the turn from plane north to true north: shape (sites, 4).
+    tables, primary, step_m
+        Time, slowness and energy of each wave at equal distance steps, shape (D, waves, 3); which left as P; the step.
+    power_sigma, power_share
+        Standard deviation of the log of window power about the model; weight of the power term.
     """
-    count = particles.shape[0]
-    sites = first.size - 1
-    longest = 0
-    for s in range(sites):
-        longest = max(longest, first[s + 1] - first[s])
+    count, sites = particles.shape[0], first.size - 1
+    # Each arm's power scatters on its own, so their ratio scatters by root two more.
+    odds = np.exp(_REACH * np.sqrt(2.0) * power_sigma)
     out = np.zeros((count, sites))
     for i in numba.prange(count):
-        east = np.empty(2 * NODES)
-        north = np.empty(2 * NODES)
-        time = np.empty(2 * NODES)
-        weight = np.empty(2 * NODES)
-        power = np.empty((2, longest))
-        pull = np.empty((2, 4, longest))
-        nodes = place_nodes(particles[i], east, north, time, weight)
+        theta = particles[i]
+        east = np.empty((2, PIECES + 1))
+        north = np.empty((2, PIECES + 1))
+        time = np.empty((2, PIECES + 1))
+        weight = np.empty(2)
+        arms, pieces = place_pieces(theta, east, north, time, weight)
         for s in range(sites):
-            a, b = first[s], first[s + 1]
-            total, number, mean, square = _site_log_likelihood(
-                particles[i],
-                nodes,
-                east,
-                north,
-                time,
-                weight,
-                ratio[angles * nodes_p * a : angles * nodes_p * b].reshape(angles, nodes_p, b - a),
-                log_power[a:b],
-                window_time[a:b],
-                window_s[s],
-                share[s],
-                places[s],
-                tables,
-                primary,
-                grid,
-                power,
-                pull,
-            )
-            if number > 1.0:
-                # The site's amplification is unknown: its mean misfit is free.
-                spread = square - mean * mean / number
-                total -= 0.5 * power_share * share[s] * spread / power_sigma**2
+            windows = first[s + 1] - first[s]
+            if windows == 0:
+                continue
+            bins = 2 * pad + (windows - 1) * stride + 1
+            direct = np.zeros((arms, 3, bins))
+            scattered = np.zeros((arms, 3, bins))
+            isotropic = np.zeros(bins)
+            from_s = _arrivals(
+                theta, arms, pieces, east, north, time, weight, places[s], tables, primary, step_m,
+                start_s[s] - pad * bin_s, bin_s, direct, scattered,
+            )  # fmt: skip
+            _add_coda(theta, arms, bin_s, direct, scattered, isotropic)
+            seen = np.zeros((arms, 3, windows))
+            anywhere = np.empty(windows)
+            total = 0.0
+            for v in range(view_first[s], view_first[s + 1]):
+                # A place radiates while it slips: it is heard that much longer.
+                half_bins = 0.5 * (window_s[v] + min(theta[RISE], LONGEST_RISE_S)) / bin_s
+                for arm in range(arms):
+                    for row in range(3):
+                        _windowed(direct[arm, row], stride, pad, half_bins, seen[arm, row])
+                _windowed(isotropic, stride, pad, half_bins, anywhere)
+                peak = 0.0
+                for t in range(windows):
+                    heard = anywhere[t] + seen[0, WEIGHT, t]
+                    if arms == 2:
+                        heard += seen[1, WEIGHT, t]
+                    peak = max(peak, heard)
+                size = cells * cells * windows
+                table = codes[table_first[v] : table_first[v] + size].reshape(cells, cells, windows)
+                tells = telling[table_first[v] // (cells * cells) :]
+                gain = 0.0
+                for t in range(windows):
+                    anywhere[t] += 1e-4 * peak
+                    k = first[s] + t
+                    if tells[t] and multiple[k] > 0.0:
+                        term = _direction_term(table, value, t, arms, seen, anywhere, theta[STRAY], odds, cell_s_m)
+                        gain += multiple[k] * term
+                total += overlap[v] * gain
+                if v == view_first[s]:
+                    total += overlap[v] * _power_term(
+                        level[first[s] : first[s + 1]], multiple[first[s] : first[s + 1]], seen, anywhere, arms, peak,
+                        start_s[s], stride * bin_s, from_s, power_sigma, power_share,
+                    )  # fmt: skip
             out[i, s] = total
     return out
+
+
+@numba.njit(cache=True)
+def _power_term(
+    level, multiple, seen, anywhere, arms, peak, start_s, hop_s, from_s, power_sigma, power_share
+):  # pragma: no cover - compiled
+    """Log-likelihood of the powers of one site; its amplification is unknown, so its mean misfit is free."""
+    number = mean = square = 0.0
+    scale = 1.0 / peak if peak > 0.0 else 0.0
+    for t in range(level.size):
+        if np.isnan(level[t]) or start_s + t * hop_s < from_s:
+            continue
+        heard = anywhere[t] + seen[0, WEIGHT, t]
+        if arms == 2:
+            heard += seen[1, WEIGHT, t]
+        # Below a share of the peak the record is coda and noise, of which this model knows little.
+        misfit = level[t] - np.log(heard * scale + POWER_FLOOR)
+        number += multiple[t]
+        mean += multiple[t] * misfit
+        square += multiple[t] * misfit * misfit
+    if number <= 0.0:
+        return 0.0
+    return -0.5 * power_share * (square - mean * mean / number) / power_sigma**2

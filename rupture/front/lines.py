@@ -19,6 +19,7 @@ from rupture.front.kernels import (
     NORTH,
     P_SHARE,
     RISE,
+    SHARE_2,
     SPEED,
     SPEED_2,
     START,
@@ -30,7 +31,7 @@ Array = NDArray[np.float64]
 PARAMETERS = (
     "east_m", "north_m", "start_time_s", "azimuth_rad", "speed_m_s", "length_m", "second_azimuth_rad", "second_speed_m_s",
     "second_length_m", "duration_s", "coda_ratio", "coda_time_s", "stray_share", "p_factor",
-    "rise_time_s",
+    "rise_time_s", "second_share",
 )  # fmt: skip
 
 KINDS = ("stationary", "unilateral", "bilateral")
@@ -40,10 +41,14 @@ _COMMON = (EAST, NORTH, START, CODA, CODA_TIME, STRAY, P_SHARE, RISE)
 FREE = {
     "stationary": (*_COMMON, DURATION),
     "unilateral": (*_COMMON, AZIMUTH, SPEED, LENGTH),
-    "bilateral": (*_COMMON, AZIMUTH, SPEED, LENGTH, AZIMUTH_2, SPEED_2, LENGTH_2),
+    "bilateral": (*_COMMON, AZIMUTH, SPEED, LENGTH, AZIMUTH_2, SPEED_2, LENGTH_2, SHARE_2),
 }
-"""Parameters of each kind. In the sampler's coordinates positive ones are logarithms, the second azimuth is the bend from
-straight on, and the second length is its ratio to the first."""
+"""Parameters of each kind. In the sampler's coordinates positive ones are logarithms, the first length is that of both arms, the
+second azimuth is the bend from straight on, the second length is its part of the whole, and the second share is the logit of
+the second arm's share of the energy less that of its part of the length."""
+
+ANGLES = (AZIMUTH,)
+"""Sampler's coordinates that go round a circle."""
 
 
 AXIS_WIDTH_RAD = np.radians(8.0)
@@ -69,6 +74,9 @@ class LinePrior:
         two is twice their scatter.
     shortest_ratio
         Least ratio of the shorter to the longer arm of a bilateral rupture; below it the rupture counts as unilateral.
+    share_width
+        Of the logit of the second arm's share of the energy about its part of the length: equal radiation per length, within
+        the scatter of slip along a rupture.
     bend_rad
         Of the angle by which the second arm departs from straight on.
     duration_s, duration_log_width
@@ -84,6 +92,7 @@ class LinePrior:
     length_m: float = 50e3
     length_log_width: float = 0.7
     shortest_ratio: float = 0.2
+    share_width: float = 0.5
     bend_rad: float = 0.2
     duration_s: float = 20.0
     duration_log_width: float = 0.8
@@ -102,9 +111,16 @@ class LinePrior:
             low, high = np.log(self.speed_m_s)
             return rng.uniform(low, high, count)
         if parameter == LENGTH_2:
-            return rng.uniform(self.shortest_ratio, 1.0, count)
+            low, high = self._parts
+            return rng.uniform(low, high, count)
         centre, width = self._normal(parameter)
         return rng.normal(centre, width, count)
+
+    @property
+    def _parts(self) -> tuple[float, float]:
+        """Least and largest part of the length that an arm of a bilateral rupture has."""
+        least = self.shortest_ratio / (1.0 + self.shortest_ratio)
+        return least, 1.0 - least
 
     def _normal(self, parameter: int) -> tuple[float, float]:
         return {
@@ -119,6 +135,7 @@ class LinePrior:
             STRAY: (np.log(0.1), 0.6),
             P_SHARE: (0.0, 0.7),
             RISE: (float(np.log(self.rise_s)), 0.6),
+            SHARE_2: (0.0, self.share_width),
         }[parameter]
 
     def log_density(self, kind: str, draws: Array) -> Array:
@@ -136,7 +153,8 @@ class LinePrior:
             if parameter in (SPEED, SPEED_2):
                 total[(value < low) | (value > high)] = -np.inf
             elif parameter == LENGTH_2:
-                total[(value < self.shortest_ratio) | (value > 1.0)] = -np.inf
+                least, most = self._parts
+                total[(value < least) | (value > most)] = -np.inf
             else:
                 centre, width = self._normal(parameter)
                 total -= 0.5 * ((value - centre) / width) ** 2
@@ -146,18 +164,49 @@ class LinePrior:
 
 
 def to_parameters(kind: str, draws: Array) -> Array:
-    """Turn the sampler's coordinates into SI parameters, shape (count, 15), in the order of `PARAMETERS`."""
+    """Turn the sampler's coordinates into SI parameters, shape (count, 16), in the order of `PARAMETERS`."""
     out = np.zeros((draws.shape[0], len(PARAMETERS)))
     for column, parameter in enumerate(FREE[kind]):
         out[:, parameter] = np.exp(draws[:, column]) if parameter in _LOG else draws[:, column]
     if kind == "bilateral":
-        # The first azimuth is the longer arm's; the total length is what the magnitude speaks of.
-        ratio = out[:, LENGTH_2].copy()
-        total = out[:, LENGTH].copy()
-        out[:, LENGTH], out[:, LENGTH_2] = total / (1 + ratio), total * ratio / (1 + ratio)
+        part, whole = out[:, LENGTH_2].copy(), out[:, LENGTH].copy()
+        out[:, LENGTH], out[:, LENGTH_2] = whole * (1 - part), whole * part
+        out[:, SHARE_2] = 1 / (1 + (1 - part) / part * np.exp(-out[:, SHARE_2]))
         out[:, AZIMUTH_2] = (out[:, AZIMUTH] + np.pi + out[:, AZIMUTH_2]) % (2 * np.pi)
         out[:, DURATION] = np.maximum(out[:, LENGTH] / out[:, SPEED], out[:, LENGTH_2] / out[:, SPEED_2])
     elif kind == "unilateral":
         out[:, DURATION] = out[:, LENGTH] / out[:, SPEED]
     out[:, AZIMUTH] %= 2 * np.pi
+    return out
+
+
+def same_first_arm(kind: str, draws: Array, longer_first: bool = False) -> Array:
+    """Name the arms of bilateral draws alike.
+
+    Which arm is the first is a matter of naming: both ways are equally likely. All draws are named so that their first arms
+    run the same way, within 90 degrees. Other kinds come back as they are.
+
+    Parameters
+    ----------
+    kind, draws
+        In the sampler's coordinates.
+    longer_first
+        Whether the first arm is the one that is longer in most draws.
+    """
+    if kind != "bilateral":
+        return draws
+    at = {parameter: column for column, parameter in enumerate(FREE[kind])}
+    azimuth = draws[:, at[AZIMUTH]]
+    axis = 0.5 * np.angle(np.mean(np.exp(2j * azimuth)))
+    swap = np.cos(azimuth - axis) < 0
+    if longer_first:
+        part = np.where(swap, 1 - draws[:, at[LENGTH_2]], draws[:, at[LENGTH_2]])
+        if np.median(part) > 0.5:
+            swap = ~swap
+    out = draws.copy()
+    out[swap, at[AZIMUTH]] = azimuth[swap] + np.pi + draws[swap, at[AZIMUTH_2]]
+    out[swap, at[AZIMUTH_2]] *= -1
+    out[swap, at[LENGTH_2]] = 1 - draws[swap, at[LENGTH_2]]
+    out[swap, at[SHARE_2]] *= -1
+    out[swap, at[SPEED]], out[swap, at[SPEED_2]] = draws[swap, at[SPEED_2]], draws[swap, at[SPEED]]
     return out
