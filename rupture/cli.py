@@ -4,11 +4,12 @@ from __future__ import annotations
 
 import argparse
 import sys
+import warnings
 from collections.abc import Callable, Sequence
 from importlib import import_module
 
 from rupture import __version__
-from rupture.errors import RuptureError
+from rupture.errors import RecordWarning, RuptureError
 
 _EPILOG = (
     "Research tool: not for warning or life-safety decisions; the authorised agencies and licensed practice decide."
@@ -21,7 +22,16 @@ def main(arguments: Sequence[str] | None = None) -> int:
     module, _, function = options.run.partition(":")
     command: Callable[[argparse.Namespace], int] = getattr(import_module(module), function)
     try:
-        return command(options)
+        with warnings.catch_warnings():
+            # What was left out of the records is told as a sentence, not as a line of code.
+            warnings.simplefilter("always", RecordWarning)
+            shown = warnings.showwarning
+            warnings.showwarning = lambda message, category, *rest: (
+                print(f"rupture {options.command}: {message}", file=sys.stderr)
+                if issubclass(category, RecordWarning)
+                else shown(message, category, *rest)
+            )
+            return command(options)
     except RuptureError as error:
         print(f"rupture {options.command}: {error}", file=sys.stderr)
         return error.exit_code
@@ -52,6 +62,7 @@ def build_parser() -> argparse.ArgumentParser:
     )
     _out(demo)
     _null_tests(demo)
+    _energy(demo)
 
     track = _command(
         commands,
@@ -61,6 +72,7 @@ def build_parser() -> argparse.ArgumentParser:
     )
     _inputs(track)
     _map(track)
+    _energy(track)
     _null_tests(track)
     _out(track)
     track.add_argument("--json", action="store_true", help="print summary.json on stdout instead of sentences")
@@ -210,6 +222,12 @@ def _map(parser: argparse.ArgumentParser) -> None:
         help="half width of the map grid; default from the magnitude",
     )
     group.add_argument("--spacing", type=float, metavar="KM", help="distance between cells")
+
+
+def _energy(parser: argparse.ArgumentParser) -> None:
+    parser.add_argument(
+        "--no-energy", action="store_true", help="skip the energy inversion; the ray stack alone then answers"
+    )
 
 
 def _null_tests(parser: argparse.ArgumentParser) -> None:

@@ -9,6 +9,7 @@ from dataclasses import replace
 from pathlib import Path
 from typing import Any
 
+from rupture.energy.settings import EnergySettings
 from rupture.errors import DataError, InputError
 from rupture.folder import output_folder
 from rupture.progress import Progress
@@ -65,7 +66,11 @@ def _map_options(job: Job, options: argparse.Namespace) -> Job:
     }
     if changes:
         job = replace(job, map=replace(job.map, **changes))
-    return replace(job, null_tests=_null_tests(job.null_tests, options))
+    return replace(job, null_tests=_null_tests(job.null_tests, options), energy=_energy(job.energy, options))
+
+
+def _energy(settings: EnergySettings, options: argparse.Namespace) -> EnergySettings:
+    return replace(settings, on=False) if getattr(options, "no_energy", False) else settings
 
 
 def _null_tests(settings: NullTestSettings, options: argparse.Namespace) -> NullTestSettings:
@@ -176,7 +181,7 @@ def demo(options: argparse.Namespace) -> int:
     with output_folder(options.out, options.overwrite) as folder:
         files = write_files(demo_scenario(), folder / "input", progress)
         job = Job(input=InputSettings((str(files.records[0].parent),), (str(files.inventory),), str(files.event)))
-        job = replace(job, null_tests=_null_tests(job.null_tests, options))
+        job = replace(job, null_tests=_null_tests(job.null_tests, options), energy=_energy(job.energy, options))
         result = run_track(job, progress)
         result = moved(result, str(folder), str(options.out))
         leave_track(result, folder, progress)

@@ -9,6 +9,7 @@ from pathlib import Path
 from typing import Any
 
 from rupture.direction import DirectionSettings
+from rupture.energy.settings import EnergySettings
 from rupture.errors import InputError
 from rupture.front import FitSettings, SmoothSettings
 from rupture.job import nearest_key, read_toml, settings_from_table
@@ -102,6 +103,7 @@ class Job:
     stack: StackSettings = field(default_factory=StackSettings)
     smooth: SmoothSettings = field(default_factory=SmoothSettings)
     fit: FitSettings = field(default_factory=FitSettings)
+    energy: EnergySettings = field(default_factory=EnergySettings)
     null_tests: NullTestSettings = field(default_factory=NullTestSettings)
     resolve: ResolveSettings = field(default_factory=ResolveSettings)
     planned: tuple[PlannedSite, ...] = ()

@@ -8,25 +8,18 @@ from typing import TYPE_CHECKING, Any
 if TYPE_CHECKING:
     from rupture.energy.build import build_kernels
     from rupture.energy.invert import EnergyInversion, invert_energy
-    from rupture.energy.lines import LineAnswer, line_answer
-    from rupture.energy.settings import EnergySettings, Waves
+    from rupture.energy.lines import LineAnswer, line_answer, line_summary
+    from rupture.energy.settings import EnergySettings
     from rupture.energy.table import KernelTable
 
 _HOME = {
     "EnergyInversion": "invert", "EnergySettings": "settings", "KernelTable": "table", "LineAnswer": "lines",
-    "Waves": "settings", "build_kernels": "build", "invert_energy": "invert", "line_answer": "lines",
+    "build_kernels": "build", "invert_energy": "invert", "line_answer": "lines", "line_summary": "lines",
 }  # fmt: skip
 
 __all__ = [
-    "EnergyInversion",
-    "EnergySettings",
-    "KernelTable",
-    "LineAnswer",
-    "Waves",
-    "build_kernels",
-    "invert_energy",
-    "line_answer",
-]
+    "EnergyInversion", "EnergySettings", "KernelTable", "LineAnswer", "build_kernels", "invert_energy", "line_answer", "line_summary",
+]  # fmt: skip
 
 
 def __getattr__(name: str) -> Any:

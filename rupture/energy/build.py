@@ -9,7 +9,7 @@ from numpy.typing import NDArray
 
 from rupture.conventions import KM
 from rupture.earth.layers import LayeredModel
-from rupture.energy.settings import EnergySettings, Waves
+from rupture.energy.settings import EnergySettings
 from rupture.energy.table import (
     BASIS_DEG,
     MECHANISM_ORDER,
@@ -76,14 +76,15 @@ def build_kernels(
         raise InputError(f"kernels up to {longest_km:g} km: the distance must lie between 0 and 1000 km")
     if mechanism_deg is not None:
         checked_mechanism(mechanism_deg)
-    distance = KM * (2.0 + STEP_KM * np.arange(int(np.ceil(max(longest_km, 6.0) / STEP_KM)) + 1))
+    count = int(np.ceil(max(longest_km, 6.0) / STEP_KM)) + 1
+    distance = np.asarray(KM * (2.0 + STEP_KM * np.arange(count)), np.float64)
     depth = depth_km + 0.01 if np.any(np.abs(model.top_km - depth_km) < 0.005) else depth_km
     step = 0.4 / (max(high for _, high in settings.bands_hz) * HIGHEST_SHARE)
     step = settings.hop_s / np.ceil(settings.hop_s / step)
     # The time axis grows with distance; whole minutes let maps of like size share stored Green's functions.
     last_s = 60.0 * np.ceil((distance[-1] / SLOWEST_M_S + settings.window_s + 10.0) / 60.0)
     lag = lag_grid(last_s, settings.window_s, settings.hop_s)
-    make = _ray_records if settings.waves is Waves.RAY else _wavefield_records
+    make = _ray_records if settings.waves == "ray" else _wavefield_records
     mechanisms = BASIS_DEG if mechanism_deg is None else (mechanism_deg,)
     turns = 1 if mechanism_deg is None else MECHANISM_AZIMUTHS
     records = make(
@@ -127,7 +128,7 @@ def _wavefield_records(
     model: LayeredModel, depth: float, distance: Array, step: float, last_s: float, settings: EnergySettings,
     mechanisms: Sequence[tuple[float, float, float]], azimuth: Array, report: Callable[[int, int], None] | None,
 ) -> Array:  # fmt: skip
-    """Records of unit moment steps, shape (mechanisms, azimuths, D, 6, samples), by wavenumber integration."""
+    """Return records of unit moment steps, shape (mechanisms, azimuths, D, 6, samples), by wavenumber integration."""
     from rupture.synthetic.wavefield import FrequencyPlan, GreensStore, Motion, double_couple
 
     high = max(high for _, high in settings.bands_hz) * HIGHEST_SHARE
@@ -141,7 +142,7 @@ def _ray_records(
     model: LayeredModel, depth: float, distance: Array, step: float, last_s: float, settings: EnergySettings,
     mechanisms: Sequence[tuple[float, float, float]], azimuth: Array, report: Callable[[int, int], None] | None,
 ) -> Array:  # fmt: skip
-    """The same by rays."""
+    """Return the same by rays."""
     from rupture.geodesy import destination
     from rupture.synthetic.engine import Receivers, Sampling, SubEvents
     from rupture.synthetic.ray import RayEngine

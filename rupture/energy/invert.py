@@ -23,6 +23,9 @@ Array = NDArray[np.float64]
 HELD_BLOCK_S = 8.0
 """Windows are held out in stretches: overlapping neighbours of a single window would give it away."""
 
+RESAMPLE_UPDATES = 12
+"""Resampled inversions start from the energy of the full one, so that few updates do."""
+
 
 @dataclass(frozen=True)
 class EnergyInversion:
@@ -212,3 +215,38 @@ def _finished(problem: Problem, fit: Fit, held: Array) -> EnergyInversion:
         fit.energy.astype(float), problem.model.source_time_s, fit.objective, held, fit.gains, np.sqrt(fit.error_power),
         fit.share, power["seen"], power["told"], problem.model.time_s, problem.grid,
     )  # fmt: skip
+
+
+def resampled_energies(
+    problem: Problem,
+    inversion: EnergyInversion,
+    count: int,
+    seed: int = 1,
+    progress: Callable[[int, int], None] | None = None,
+) -> list[Array]:
+    """Return energies (C, F) inverted from resampled sites and stretches of windows.
+
+    Weights are those of the Bayesian bootstrap (Rubin 1981), one for each site times one for each stretch of
+    `HELD_BLOCK_S`: nothing is left out altogether, so that a single site can be resampled too.
+    """
+    sites, _, times, _ = problem.observed.present.shape
+    length = max(1, round(HELD_BLOCK_S / (problem.model.time_s[1] - problem.model.time_s[0])))
+    out = []
+    for number in range(count):
+        rng = np.random.default_rng((seed, number, 78))
+        site = rng.exponential(size=(sites, 1)) if sites > 1 else np.ones((1, 1))
+        stretch = np.repeat(rng.exponential(size=(sites, times // length + 1)), length, axis=1)[:, :times]
+        weight = site / site.mean() * stretch
+        out.append(solve_problem(problem, inversion.energy, None, seed, weight, RESAMPLE_UPDATES).energy)
+        if progress is not None:
+            progress(number + 1, count)
+    return out
+
+
+def independent_pieces(problem: Problem, inversion: EnergyInversion) -> float:
+    """Return how many independent pieces of evidence an energy movie stands for: sites times windows that fit into it."""
+    share = inversion.energy.sum(axis=0)
+    order = np.sort(share)[::-1].cumsum() / share.sum()
+    hop = inversion.source_time_s[1] - inversion.source_time_s[0]
+    radiating = hop * (np.searchsorted(order, 0.9) + 1)
+    return float(max(4.0, problem.observed.present.any(axis=(1, 2, 3)).sum() * radiating / problem.settings.window_s))

@@ -29,7 +29,7 @@ def gather_energy(energy, low, part, phi, nodes, out):  # pragma: no cover - com
 
 @numba.njit(parallel=True, cache=True)
 def spread_gradient(field, low, part, phi, out):  # pragma: no cover - compiled
-    """The adjoint: add what every site's nodes hold to the cells.
+    """Add, as the adjoint of `gather_energy`, what every site's nodes hold to the cells.
 
     `field` (S, D, H, F); `out` (C, F), overwritten. Each thread owns a cell.
     """

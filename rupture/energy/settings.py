@@ -3,18 +3,12 @@
 from __future__ import annotations
 
 from dataclasses import dataclass
-from enum import Enum
+from typing import Literal
 
 from rupture.errors import InputError
 
-
-class Waves(Enum):
-    """Where the Green's functions of the kernels come from."""
-
-    WAVEFIELD = "wavefield"
-    """Complete seismograms: all body and surface waves."""
-    RAY = "ray"
-    """Direct, reflected and head waves only; milliseconds, no surface waves."""
+Waves = Literal["wavefield", "ray"]
+"""Where Green's functions come from: complete seismograms, or direct, reflected and head waves only."""
 
 
 @dataclass(frozen=True)
@@ -49,6 +43,8 @@ class EnergySettings:
         rules the true place out; above, the error explains what energy should.
     most_distant_km
         Sites farther than this from any cell are left out.
+    use_mechanism
+        Whether the event's focal mechanism, where it has one, shapes the kernels; otherwise all double couples count alike.
     resamples
         Inversions of resampled windows and sites behind the intervals; 0 gives none.
     """
@@ -58,7 +54,7 @@ class EnergySettings:
     window_s: float = 5.0
     hop_s: float = 1.0
     cells: int = 25
-    waves: Waves = Waves.WAVEFIELD
+    waves: Waves = "wavefield"
     updates: int = 60
     held_out_share: float = 0.1
     coda_share: float = 0.6
@@ -67,7 +63,8 @@ class EnergySettings:
     least_model_error: float = 0.1
     most_model_error: float = 0.3
     most_distant_km: float = 300.0
-    resamples: int = 8
+    use_mechanism: bool = False
+    resamples: int = 6
 
     def __post_init__(self) -> None:
         if not self.bands_hz:
