@@ -26,8 +26,11 @@ def every_trace(given, change, pattern="*.mseed"):
         stream = obspy.Stream([t for t in (change(trace) for trace in stream) if t is not None])
         path.unlink()
         if len(stream):
+            floating = any(trace.data.dtype.kind == "f" for trace in stream)
             for trace in stream:
                 trace.stats.pop("mseed", None)
+                if floating:
+                    trace.data = trace.data.astype(np.float32)
             stream.write(str(path), format="MSEED")
 
 
