@@ -132,3 +132,27 @@ def window_terms(model, data, present, inverse, sandwich, value):  # pragma: no 
         work = np.zeros((3, 6, 6))
         for n in range(block * count // blocks, (block + 1) * count // blocks):
             value[n] = _one_window(model[n], data[n], present[n], inverse[n], sandwich[n], work)
+
+
+@numba.njit(cache=True)
+def fill_density(arms, common, east, north, time, volume, taper, out):  # pragma: no cover - compiled
+    """Fill the density of line sources at points.
+
+    `arms` (A, 4): azimuth, speed, duration, share; `common`: east, north, start, log spread, stray share; points and `out` (n,).
+    """
+    x0, y0, start, log_spread, stray = common
+    spread2 = np.exp(2.0 * log_spread)
+    for n in range(time.size):
+        total = 0.0
+        age = time[n] - start
+        for k in range(arms.shape[0]):
+            azimuth, speed, duration, share = arms[k]
+            # Soft ends: source times are only known to a window's length.
+            alive = 0.5 * (np.tanh(age / taper) - np.tanh((age - duration) / taper)) / duration
+            if alive < 1e-12:
+                continue
+            reach = speed * min(max(age, 0.0), duration)
+            dx = east[n] - x0 - reach * np.sin(azimuth)
+            dy = north[n] - y0 - reach * np.cos(azimuth)
+            total += share * alive * np.exp(-0.5 * (dx * dx + dy * dy) / spread2) / (2.0 * np.pi * spread2)
+        out[n] = (1.0 - stray) * total + stray / volume

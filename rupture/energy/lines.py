@@ -10,6 +10,8 @@ import numpy as np
 from numpy.typing import NDArray
 from scipy.optimize import differential_evolution, minimize
 
+from rupture.energy.kernels import fill_density
+
 Array = NDArray[np.float64]
 
 KINDS = ("stationary", "unilateral", "bilateral")
@@ -74,17 +76,9 @@ def line_density(kind: str, parameters: Array, east_m: Array, north_m: Array, ti
 
     A front at its place has a normal spread; `volume` (m^2 s) carries the stray share evenly.
     """
-    x0, y0, start, log_spread, stray = parameters[:5]
-    spread2 = np.exp(2 * log_spread)
-    total = np.zeros(time_s.size)
-    for azimuth, speed, duration, share in arms(kind, parameters):
-        # Soft ends: source times are only known to a window's length.
-        age = time_s - start
-        alive = 0.5 * (np.tanh(age / _TAPER_S) - np.tanh((age - duration) / _TAPER_S)) / duration
-        reach = speed * np.clip(age, 0.0, duration)
-        off = (east_m - x0 - reach * np.sin(azimuth)) ** 2 + (north_m - y0 - reach * np.cos(azimuth)) ** 2
-        total += share * alive * np.exp(-0.5 * off / spread2) / (2 * np.pi * spread2)
-    return np.asarray((1 - stray) * total + stray / volume)
+    out = np.empty(time_s.size)
+    fill_density(np.array(arms(kind, parameters)), np.asarray(parameters[:5]), east_m, north_m, time_s, volume, _TAPER_S, out)
+    return out
 
 
 def arms(kind: str, parameters: Array) -> list[tuple[float, float, float, float]]:

@@ -56,6 +56,8 @@ class EnergyModel:
         Distance node, weight of the next one (S, C) and azimuthal basis (S, C, H).
     spectra
         Kernels per band, shape (frequencies, D H, 21), complex64.
+    backward
+        Their conjugate transposes, for the adjoint.
     nodes, length
         Number of distance nodes D, and of samples of a transform in time.
     """
@@ -66,6 +68,7 @@ class EnergyModel:
     part: NDArray[np.float32]
     phi: NDArray[np.float32]
     spectra: list[NDArray[np.complex64]]
+    backward: list[NDArray[np.complex64]]
     nodes: int
     length: int
 
@@ -90,9 +93,9 @@ class EnergyModel:
         sites, _, harmonics = self.phi.shape
         frames = self.source_time_s.size
         total = None
-        for b, kernel in enumerate(self.spectra):
+        for b, backward in enumerate(self.backward):
             spectrum = fft.rfft(weights[:, b].astype(np.float32), self.length, axis=1).transpose(1, 0, 2)
-            product = np.ascontiguousarray(spectrum) @ kernel.conj().swapaxes(1, 2)
+            product = np.ascontiguousarray(spectrum) @ backward
             total = product if total is None else total + product
         field = fft.irfft(total, self.length, axis=0)[:frames]
         field = np.ascontiguousarray(field.transpose(1, 2, 0)).reshape(sites, self.nodes, harmonics, frames)
@@ -144,8 +147,9 @@ def build_model(
         for decay, spread, share in CODA_TERMS if coda_share > 0 else ():
             kernel += np.float32(coda_share * share) * coda_kernels(direct, table.hop_s, decay, spread)
         spectra.append(_spectrum(kernel, length))
+    backward = [np.ascontiguousarray(s.conj().swapaxes(1, 2)) for s in spectra]
     phi = basis(back_azimuth_rad, table.order).astype(np.float32)
-    return EnergyModel(source_time_s, time, low - first_node, part.astype(np.float32), phi, spectra, nodes, length)
+    return EnergyModel(source_time_s, time, low - first_node, part.astype(np.float32), phi, spectra, backward, nodes, length)
 
 
 def _spectrum(kernel: NDArray[np.float32], length: int) -> NDArray[np.complex64]:

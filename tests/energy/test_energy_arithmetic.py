@@ -142,7 +142,7 @@ def test_exact_kernels_without_noise_give_the_energy_back() -> None:
     model, _, _ = made_up_model(made_up_table(rng), rng)
     energy = true_energy(rng)
     observed = observed_of(model.forward(model.gathered(energy)), model)
-    fit = solve(model, observed, SETTINGS, np.ones((4, model.time_s.size)), 400)
+    fit = solve(model, observed, SETTINGS, np.ones((4, model.time_s.size)), 200)
     assert np.abs(fit.energy * fit.share.mean() - energy).max() < 0.03 * energy.max()
     assert fit.share == pytest.approx([1.0, 1.0], abs=0.03)
 
@@ -156,7 +156,7 @@ def test_the_objective_falls_at_every_update_and_bold_steps_reach_the_same_minim
     settings = replace(SETTINGS, gains=True, least_model_error=0.05, most_model_error=0.4)
     weight = np.ones((4, model.time_s.size))
     bold = solve(model, observed, settings, weight, 60)
-    safe = solve(model, observed, settings, weight, 240, bold=False)
+    safe = solve(model, observed, settings, weight, 150, bold=False)
     for history in (bold.objective, safe.objective):
         assert (np.diff(history) <= 1e-4 * np.abs(history[:-1])).all()
     fall = bold.objective[0] - bold.objective[-1]
