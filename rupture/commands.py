@@ -17,7 +17,6 @@ from rupture.result import Result
 from rupture.settings import InputSettings, Job, NullTestSettings, read_job
 from rupture.wording import SHORT_CAUTION, answer_sentences
 
-
 DEMO_NULL_TESTS = 12
 """The demo shows what null tests say; an answer that counts wants the default of a run."""
 
@@ -185,7 +184,9 @@ def demo(options: argparse.Namespace) -> int:
     with output_folder(options.out, options.overwrite) as folder:
         files = write_files(demo_scenario(), folder / "input", progress)
         job = Job(input=InputSettings((str(files.records[0].parent),), (str(files.inventory),), str(files.event)))
-        job = replace(job, null_tests=_null_tests(NullTestSettings(DEMO_NULL_TESTS), options), energy=_energy(job.energy, options))
+        job = replace(
+            job, null_tests=_null_tests(NullTestSettings(DEMO_NULL_TESTS), options), energy=_energy(job.energy, options)
+        )
         result = run_track(job, progress)
         result = moved(result, str(folder), str(options.out))
         leave_track(result, folder, progress)
