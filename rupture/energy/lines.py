@@ -8,7 +8,8 @@ from typing import Any
 
 import numpy as np
 from numpy.typing import NDArray
-from scipy.optimize import differential_evolution, minimize
+from scipy.optimize import minimize
+from scipy.stats import qmc
 
 from rupture.energy.kernels import fill_density
 
@@ -25,7 +26,10 @@ LEAST_ARM = 0.2
 SURE = 0.7
 """A kind that is less probable than this leaves the answer undetermined (common practice has no figure)."""
 
-_FAINT = 2e-3
+DRAWS, KEPT = 1024, 3
+"""Size of the global search, and how many of its points are followed down."""
+
+_FAINT = 1e-2
 _TAPER_S = 1.5
 
 
@@ -77,7 +81,9 @@ def line_density(kind: str, parameters: Array, east_m: Array, north_m: Array, ti
     A front at its place has a normal spread; `volume` (m^2 s) carries the stray share evenly.
     """
     out = np.empty(time_s.size)
-    fill_density(np.array(arms(kind, parameters)), np.asarray(parameters[:5]), east_m, north_m, time_s, volume, _TAPER_S, out)
+    fill_density(
+        np.array(arms(kind, parameters)), np.asarray(parameters[:5]), east_m, north_m, time_s, volume, _TAPER_S, out
+    )
     return out
 
 
@@ -128,21 +134,37 @@ def fit_lines(
     def cost(parameters: Array, kind: str) -> float:
         return -float(weight @ np.log(line_density(kind, parameters, east, north, time, volume)))
 
-    found = []
+    found: list[LineFit] = []
     for kind in KINDS if near is None else (near.kind,):
-        bounds = _bounds(kind, width, float(np.ptp(time_s)))
-        if near is None:
-            first = differential_evolution(
-                cost, bounds, (kind,), maxiter=70, popsize=8, tol=1e-4, rng=seed, polish=False
-            ).x
-        else:
-            first = near.parameters
-        best = minimize(
-            cost, first, (kind,), "Nelder-Mead", bounds=bounds, options={"maxiter": 600, "xatol": 1e-3, "fatol": 1e-6}
-        )
+        bounds = np.array(_bounds(kind, width, float(np.ptp(time_s))))
+        starts = [near.parameters] if near is not None else _starts(cost, kind, bounds, found, seed)
+        best = min((_descend(cost, kind, bounds, first) for first in starts), key=lambda end: float(end.fun))
         score = -independent * float(best.fun) - 0.5 * len(bounds) * np.log(independent)
         found.append(LineFit(kind, np.asarray(best.x), score))
     return sorted(found, key=lambda fit: -fit.score)
+
+
+def _starts(
+    cost: Callable[[Array, str], float], kind: str, bounds: Array, simpler: Sequence[LineFit], seed: int
+) -> list[Array]:
+    """Return the best of many draws, and, for two arms, the best single arm grown backwards, as either of the arms."""
+    draws = bounds[:, 0] + qmc.Sobol(len(bounds), rng=seed).random(DRAWS) * (bounds[:, 1] - bounds[:, 0])
+    costs = np.array([cost(draw, kind) for draw in draws])
+    starts = list(draws[np.argsort(costs)[:KEPT]])
+    for fit in simpler if kind == "bilateral" else ():
+        if fit.kind == "unilateral":
+            for turn in (0.0, np.pi):
+                one = fit.parameters.copy()
+                one[5] = (one[5] + turn) % (2 * np.pi)
+                starts.append(np.array([*one, 0.0, one[6], 0.5]))
+    return starts
+
+
+def _descend(cost: Callable[[Array, str], float], kind: str, bounds: Array, first: Array) -> Any:
+    """Descend from a start; twice, since a simplex in many dimensions may collapse early."""
+    options = {"maxiter": 500, "xatol": 1e-3, "fatol": 1e-6, "adaptive": True}
+    end = minimize(cost, np.clip(first, *bounds.T), (kind,), "Nelder-Mead", bounds=bounds, options=options)
+    return minimize(cost, end.x, (kind,), "Nelder-Mead", bounds=bounds, options=options)
 
 
 def _bounds(kind: str, width_m: float, span_s: float) -> list[tuple[float, float]]:

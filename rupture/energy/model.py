@@ -149,7 +149,9 @@ def build_model(
         spectra.append(_spectrum(kernel, length))
     backward = [np.ascontiguousarray(s.conj().swapaxes(1, 2)) for s in spectra]
     phi = basis(back_azimuth_rad, table.order).astype(np.float32)
-    return EnergyModel(source_time_s, time, low - first_node, part.astype(np.float32), phi, spectra, backward, nodes, length)
+    return EnergyModel(
+        source_time_s, time, low - first_node, part.astype(np.float32), phi, spectra, backward, nodes, length
+    )
 
 
 def _spectrum(kernel: NDArray[np.float32], length: int) -> NDArray[np.complex64]:
