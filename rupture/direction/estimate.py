@@ -199,13 +199,13 @@ def estimate_direction(site: Site, noise_window_s: tuple[float, float], settings
         error = float(np.hypot(settings.model_error_share, site.rotation_error_share))
         equations = []
         if horizontal:
-            equations.append(
-                plane_wave_equation(
-                    horizontal_forms(grid[0].ravel(), grid[1].ravel()), (ROT_E, ROT_N), covariance, noise, error
-                )
-            )
+            # Scales of their own: waves of one back-azimuth and several slownesses in a window spoil the first alone.
+            equations += [
+                plane_wave_equation(form, (ROT_E, ROT_N), covariance, noise, error)
+                for form in horizontal_forms(grid[0].ravel(), grid[1].ravel())
+            ]
         if vertical:
-            equations.append(plane_wave_equation((vertical_form(trial),), (ROT_Z,), covariance, noise, error))
+            equations.append(plane_wave_equation(vertical_form(trial), (ROT_Z,), covariance, noise, error))
         if vertical and not horizontal:
             equations.append(
                 polarisation_equation(theta, slowness.size, covariance, settings.polarisation_ratio, degrees)

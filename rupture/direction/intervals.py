@@ -18,6 +18,7 @@ Array = NDArray[np.float64]
 class DirectionIntervals:
     """Per band and window, each of shape (B, T); NaN where a window is masked.
 
+    They hold for a coherent wave from the source: how probable that is stands beside them in `SiteDirection.coherent`.
     Best values are modes of the marginal posteriors. Back-azimuths are in [0, 2 pi): where north lies inside an
     interval, p05 is larger than p95. Velocities are in m/s.
     """
@@ -35,13 +36,27 @@ def intervals(direction: SiteDirection) -> DirectionIntervals:
     angles, speeds = [], []
     for band, ratio in enumerate(direction.band_log_ratio):
         masked = np.isnan(direction.coherent[band])
-        weight = np.exp(ratio - ratio.max(axis=(0, 1), keepdims=True))
-        angles.append([_blank(v, masked) for v in circular_interval(direction.back_azimuth_rad, weight.sum(axis=1))])
-        low, best, high = ladder_interval(np.log(direction.slowness_s_m), weight.sum(axis=0))
+        weight = _if_coherent(ratio)
+        angles.append(
+            [_blank(v, masked) for v in circular_interval(direction.back_azimuth_rad, weight.sum(axis=1, dtype=float))]
+        )
+        low, best, high = ladder_interval(np.log(direction.slowness_s_m), weight.sum(axis=0, dtype=float))
         speeds.append([_blank(np.exp(-v), masked) for v in (best, high, low)])
     theta = [np.array(column) for column in zip(*angles, strict=True)]
     speed = [np.array(column) for column in zip(*speeds, strict=True)]
     return DirectionIntervals(*theta, *speed)
+
+
+def _if_coherent(log_ratio: NDArray[np.float32]) -> NDArray[np.float32]:
+    """Posterior over prior without the even share that stray waves and noise add, up to a factor, shape (A, P, T).
+
+    That share is the floor under the ratio of all trials. Where no trial is ruled out, little of the ratio is left
+    above the floor; there half of it is kept, so that an open answer stays open.
+    """
+    ratio = np.exp(log_ratio)
+    least = ratio.min(axis=(0, 1), keepdims=True)
+    share = np.clip(2.0 * (1.0 - least), 0.0, 1.0)
+    return np.asarray(ratio - least * share, np.float32)
 
 
 def _blank(values: Array, masked: NDArray[np.bool_]) -> Array:
@@ -70,12 +85,8 @@ def circular_interval(angle_rad: Array, weight: Array) -> tuple[Array, Array, Ar
     turned = np.take_along_axis(weight, order, axis=0)
     edges = mode - count // 2 - 0.5
     low, high = (_quantile(turned, q) for q in (0.05, 0.95))
-    columns = np.arange(weight.shape[1])
-    left, centre, right = (np.log(weight[(mode + k) % count, columns] + 1e-300) for k in (-1, 0, 1))
-    # A parabola through the three highest bins gives the mode finer than the bins.
-    bend = left - 2 * centre + right
-    shift = np.where(bend < 0, 0.5 * (left - right) / np.where(bend < 0, bend, 1.0), 0.0)
-    best = (angle_rad[mode] + np.clip(shift, -0.5, 0.5) * step) % (2 * np.pi)
+    shift = _finer(*(weight[(mode + k) % count, np.arange(mode.size)] for k in (-1, 0, 1)))
+    best = (angle_rad[mode] + shift * step) % (2 * np.pi)
     return best, (edges + low) * step % (2 * np.pi), (edges + high) * step % (2 * np.pi)
 
 
@@ -83,7 +94,18 @@ def ladder_interval(node: Array, weight: Array) -> tuple[Array, Array, Array]:
     """Return p05, mode and p95 of densities on uniform nodes, shapes (T,); `weight` has shape (nodes, T)."""
     step = node[1] - node[0]
     low, high = (node[0] - 0.5 * step + step * _quantile(weight, q) for q in (0.05, 0.95))
-    return low, node[weight.argmax(axis=0)], high
+    mode = weight.argmax(axis=0)
+    inside = mode.clip(1, node.size - 2)
+    shift = _finer(*(weight[inside + k, np.arange(mode.size)] for k in (-1, 0, 1)))
+    return low, node[mode] + np.where(mode == inside, shift, 0.0) * step, high
+
+
+def _finer(left: Array, centre: Array, right: Array) -> Array:
+    """Place of the top of a parabola through the logarithms of three bins, in bins from the middle one."""
+    before, middle, after = (np.log(v + 1e-300) for v in (left, centre, right))
+    bend = before - 2 * middle + after
+    shift = np.where(bend < 0, 0.5 * (before - after) / np.where(bend < 0, bend, 1.0), 0.0)
+    return np.clip(shift, -0.5, 0.5)
 
 
 def _quantile(weight: Array, share: float) -> Array:

@@ -48,13 +48,12 @@ def _exp_in_place(x):  # pragma: no cover - compiled
 
 @numba.njit(parallel=True, cache=True, error_model="numpy")
 def posterior_log_ratio(
-    out, coherent, form, covariance, noise, floor, unit, parts, degrees, offset, stray_share, blur
+    out, coherent, form, covariance, noise, floor, unit, degrees, offset, stray_share, blur
 ):  # pragma: no cover - compiled
     """Fill log of posterior over prior and the probability of a coherent wave.
 
-    The gain of trial j in window t is -degrees/2 times the sum over equations of sum(log(x / unit)) +
-    n (log(max(m, 1)) + min(m, 1) - 1), where r = form . covariance are the powers of the n residuals of an equation,
-    x = noise + floor what is expected of them and m the mean of r / x, less the window's offset. Each thread owns its
+    The gain of trial j in window t is -degrees/2 times the sum over equations of log(max(r, x) / unit) +
+    min(r / x, 1) - 1, r = form . covariance and x = noise + floor, less the window's offset. Each thread owns its
     windows, so that nothing depends on how many there are.
 
     Parameters
@@ -64,12 +63,10 @@ def posterior_log_ratio(
     coherent
         Shape (T,), filled.
     form, covariance
-        Shapes (residuals, A, P, entries) and (residuals, entries, T').
+        Shapes (equations, A, P, entries) and (equations, entries, T').
     noise, floor, unit
-        Expected residual power: shapes (residuals, A, P), (equations, T'); `unit` (equations, T') keeps the
+        Expected residual power: shapes (equations, A, P), (equations, T'); `unit` (equations, T') keeps the
         products of residuals from underflowing.
-    parts
-        How many residuals each equation has, 1 or 2, shape (equations,).
     degrees
         Independent samples in a window.
     offset
@@ -82,8 +79,7 @@ def posterior_log_ratio(
     T' is T rounded up to whole blocks.
     """
     angles, speeds, windows = out.shape
-    entries = covariance.shape[1]
-    equations = parts.size
+    equations, entries = covariance.shape[:2]
     reach = blur.size // 2
     half = 0.5 * degrees
     for block in numba.prange((windows + BLOCK - 1) // BLOCK):
@@ -97,39 +93,27 @@ def posterior_log_ratio(
         gain = np.empty((angles, speeds, BLOCK))
         linear = np.empty((speeds, BLOCK))
         residual = np.empty(BLOCK)
-        misfit = np.empty(BLOCK)
         largest = np.zeros(BLOCK)
         evidence = np.zeros(BLOCK)
         for a in range(angles):
             product = gain[a]
             product[:] = 1.0
             linear[:] = 0.0
-            row = 0
             for e in range(equations):
-                count_parts = parts[e]
-                factor = float(count_parts)
-                other = factor - 1.0
                 for p in range(speeds):
-                    misfit[:] = 0.0
-                    for n in range(row, row + count_parts):
-                        residual[:] = 0.0
-                        for k in range(entries):
-                            share = form[n, a, p, k]
-                            for w in range(BLOCK):
-                                residual[w] += share * here[n, k, w]
-                        quiet = noise[n, a, p]
+                    residual[:] = 0.0
+                    for k in range(entries):
+                        share = form[e, a, p, k]
                         for w in range(BLOCK):
-                            expected = quiet + base[e, w]
-                            misfit[w] += residual[w] / expected
-                            product[p, w] *= expected * scale[e, w]
+                            residual[w] += share * here[e, k, w]
+                    quiet = noise[e, a, p]
                     for w in range(BLOCK):
-                        mean = misfit[w] / factor
+                        expected = quiet + base[e, w]
+                        misfit = residual[w] / expected
                         # Written out: max and min look after NaN, which keeps the loop from being vectorised.
-                        above = mean if mean > 1.0 else 1.0
-                        # The excess itself, or its square where there are two residuals.
-                        product[p, w] *= above * (1.0 + other * (above - 1.0))
-                        linear[p, w] += factor * (mean - above)
-                row += count_parts
+                        above = misfit if misfit > 1.0 else 1.0
+                        product[p, w] *= above * expected * scale[e, w]
+                        linear[p, w] += misfit - above
             _log_in_place(product.reshape(-1))
             for p in range(speeds):
                 for w in range(BLOCK):

@@ -30,39 +30,35 @@ class Equation:
 
     Attributes
     ----------
-    forms
-        Coefficients of each residual's power, shapes (trials, 21).
+    form
+        Coefficients of the residual power, shape (trials, 21).
     covariance
         Shape (21, T).
-    noise
-        Expected power of each residual from noise, shapes (trials,).
-    floor
-        What is expected of each residual on top, in each window, shape (T,).
+    noise, floor
+        Expected residual power of each trial, shape (trials,), and on top of it of each window, shape (T,).
     unit
-        Power that residuals are compared with, shape (T,).
+        Power that the residual is compared with, shape (T,).
     null
         Log-likelihood for one independent sample, times -2, when there is no wave, shape (T,).
     """
 
-    forms: tuple[Array, ...]
+    form: Array
     covariance: Array
-    noise: tuple[Array, ...]
+    noise: Array
     floor: Array
     unit: Array
     null: Array
 
 
-def plane_wave_equation(
-    forms: tuple[Array, ...], rows: tuple[int, ...], covariance: Array, noise: Array, error: float
-) -> Equation:
-    """Return a rotation equation; without a wave, rotation of `rows` is left as no translation explains it.
+def plane_wave_equation(form: Array, rows: tuple[int, ...], covariance: Array, noise: Array, error: float) -> Equation:
+    """Return a rotation equation; without a wave, rotation is left as no translation explains it.
 
     Parameters
     ----------
-    forms
-        Coefficients of the residual powers, one for each rotation component, shapes (trials, 21).
+    form
+        Coefficients of the residual power, shape (trials, 21).
     rows
-        Rotation components in them.
+        Rotation components among which the residual's axis lies: their mean power is what it is compared with.
     covariance, noise
         Shapes (21, T) and (21,).
     error
@@ -72,8 +68,8 @@ def plane_wave_equation(
     unit = np.maximum(total, _TINY)
     floor = np.maximum(error**2 * total, _TINY)
     alone = float(np.mean([noise[entry(k, k)] for k in rows])) + floor
-    null = len(rows) * (np.log(np.maximum(total, alone) / unit) + np.minimum(total / alone, 1.0) - 1.0)
-    return Equation(forms, covariance, tuple(np.maximum(f @ noise, 0.0) for f in forms), floor, unit, null)
+    null = np.log(np.maximum(total, alone) / unit) + np.minimum(total / alone, 1.0) - 1.0
+    return Equation(form, covariance, np.maximum(form @ noise, 0.0), floor, unit, null)
 
 
 def polarisation_equation(
@@ -104,7 +100,7 @@ def polarisation_equation(
     largest = gain.max(axis=0)
     null = -2.0 / degrees * (largest + np.log(np.exp(gain - largest).mean(axis=0)))
     form = np.repeat(form, speeds, axis=0)
-    return Equation((form,), covariance, (np.zeros(len(form)),), limit, limit, null)
+    return Equation(form, covariance, np.zeros(len(form)), limit, limit, null)
 
 
 def fill_posterior(
@@ -131,24 +127,22 @@ def fill_posterior(
         As `turn_weights` gives it.
     """
     angles, speeds, windows = log_ratio.shape
-    parts = [(e, form) for e in equations for form in e.forms]
-    entries = [np.flatnonzero(form.any(axis=0)) for _, form in parts]
+    entries = [np.flatnonzero(e.form.any(axis=0)) for e in equations]
     most = max(k.size for k in entries)
-    form = np.zeros((len(parts), angles * speeds, most))
+    form = np.zeros((len(equations), angles * speeds, most))
     whole = -(-windows // BLOCK) * BLOCK
-    covariance = np.zeros((len(parts), most, whole))
+    covariance = np.zeros((len(equations), most, whole))
     floor, unit = np.ones((2, len(equations), whole))
-    for n, ((equation, coefficients), used) in enumerate(zip(parts, entries, strict=True)):
-        form[n, :, : used.size] = coefficients[:, used]
+    for n, (equation, used) in enumerate(zip(equations, entries, strict=True)):
+        form[n, :, : used.size] = equation.form[:, used]
         covariance[n, : used.size, :windows] = equation.covariance[used]
-    for n, equation in enumerate(equations):
         floor[n, :windows], unit[n, :windows] = equation.floor, equation.unit
-    noise = np.stack([n for e in equations for n in e.noise])
+    noise = np.stack([e.noise for e in equations])
     offset = np.zeros(whole)
     offset[:windows] = -0.5 * degrees * np.sum([e.null for e in equations], axis=0)
     posterior_log_ratio(
         log_ratio, coherent, form.reshape(-1, angles, speeds, most), covariance, noise.reshape(-1, angles, speeds),
-        floor, unit, np.array([len(e.forms) for e in equations]), degrees, offset, stray_share, blur,
+        floor, unit, degrees, offset, stray_share, blur,
     )  # fmt: skip
 
 

@@ -59,9 +59,9 @@ def twin(theta, trial, packed, noise, names, blur_rad=0.0):
                 axes = np.array([across, [across[1], -across[0]]]) @ rows
                 expected = np.diag(axes @ background @ axes.T) + ERROR**2 * total
                 alone = (background[3, 3] + background[4, 4]) / 2 + ERROR**2 * total
-                misfit = np.mean(np.diag(axes @ c @ axes.T) / expected)
-                trial_cost = np.log(expected).sum() + 2 * student(misfit, 1.0)
-                gain[j] -= 0.5 * DEGREES * (trial_cost - 2 * student(total, alone))
+                left = np.diag(axes @ c @ axes.T)
+                cost = sum(student(r, x) for r, x in zip(left, expected, strict=True))
+                gain[j] -= 0.5 * DEGREES * (cost - 2 * student(total, alone))
             if "vertical" in names:
                 row = np.array([-north / 2, east / 2, 0, 0, 0, 1])
                 expected = row @ background @ row + ERROR**2 * c[5, 5]
@@ -85,15 +85,16 @@ def twin(theta, trial, packed, noise, names, blur_rad=0.0):
 
 
 def compiled(theta, trial, packed, noise, names, blur_rad=0.0):
+    across, along = horizontal_forms(np.repeat(theta, SPEEDS), np.hypot(*trial))
     build = {
-        "horizontal": lambda: plane_wave_equation(
-            horizontal_forms(np.repeat(theta, SPEEDS), np.hypot(*trial)), (3, 4), packed, noise, ERROR
-        ),
-        "vertical": lambda: plane_wave_equation((vertical_form(trial),), (5,), packed, noise, ERROR),
-        "polarisation": lambda: polarisation_equation(theta, SPEEDS, packed, KAPPA, DEGREES),
+        "horizontal": lambda: [plane_wave_equation(f, (3, 4), packed, noise, ERROR) for f in (across, along)],
+        "vertical": lambda: [plane_wave_equation(vertical_form(trial), (5,), packed, noise, ERROR)],
+        "polarisation": lambda: [polarisation_equation(theta, SPEEDS, packed, KAPPA, DEGREES)],
     }
     out, coherent = np.zeros((ANGLES, SPEEDS, packed.shape[1]), np.float32), np.zeros(packed.shape[1])
-    fill_posterior(out, coherent, [build[n]() for n in names], DEGREES, STRAY, turn_weights(blur_rad, ANGLES))
+    fill_posterior(
+        out, coherent, [e for n in names for e in build[n]()], DEGREES, STRAY, turn_weights(blur_rad, ANGLES)
+    )
     return out, coherent
 
 

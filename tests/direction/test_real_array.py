@@ -1,0 +1,59 @@
+"""A real array of verticals: Yellowknife, Mw 7.7 of 2012-08-14 (shared/real with its README).
+
+Expected there: back-azimuth 305.7 deg by the geodesic, P slowness 0.0646 s/km in ak135, P at 493.0 s.
+"""
+
+from pathlib import Path
+
+import numpy as np
+import pytest
+
+from rupture.direction import DirectionSettings, estimate_direction, intervals
+from rupture.records import RecordSettings, read_event, read_sites
+
+REAL = Path(__file__).resolve().parents[3] / "shared" / "real"
+NAME = "yellowknife_2012-08-14"
+P_S = 493.0
+QUIET_S = (60.0, 478.0)
+
+pytestmark = pytest.mark.skipif(
+    not REAL.is_dir(), reason="the folder with real records does not lie beside the checkout"
+)
+
+
+@pytest.fixture(scope="module")
+def found():
+    event = read_event(REAL / f"{NAME}_event.xml")
+    settings = RecordSettings(arrays=(("CN.YKR7", "YKR8", "YKR9", "YKB4", "YKB6"),), automatic_arrays=False)
+    sites = read_sites([REAL / f"{NAME}.mseed"], [REAL / f"{NAME}_stations.xml"], event, settings).sites
+    (site,) = [s for s in sites if s.present[3]]
+    wish = DirectionSettings(
+        bands_hz=((0.3, 1.2),), window_s=5.0, slowest_km_s=2.0, fastest_km_s=40.0, slowness_count=40
+    )
+    return estimate_direction(site, QUIET_S, wish)
+
+
+def test_first_eight_seconds_of_p(found):
+    answer = intervals(found)
+    use = (found.time_s >= P_S + 1.5) & (found.time_s <= P_S + 8.0)
+    assert (found.coherent[0, use] > 0.95).all()
+    np.testing.assert_allclose(np.degrees(answer.back_azimuth_best_rad[0, use]), 305.7, atol=4.0)
+    slowness = 1e3 / answer.apparent_velocity_best_m_s[0, use]
+    assert np.median(slowness) == pytest.approx(0.0646, rel=0.15)
+    low, high = (np.degrees(getattr(answer, f"back_azimuth_{p}_rad")[0, use]) for p in ("p05", "p95"))
+    assert ((low < 305.7) & (high > 305.7)).mean() >= 0.9
+
+
+def test_no_confident_direction_before_p(found):
+    """Zero-phase filter and window reach some 12 s ahead of the onset; microseisms are waves too, but rare and slow."""
+    before = (found.time_s > QUIET_S[0]) & (found.time_s < QUIET_S[1])
+    sure = found.coherent[0, before] > 0.95
+    print(f"share of quiet windows taken for a wave: {sure.mean():.3f}")
+    peak = np.exp(found.log_ratio[..., before]).mean(axis=1).max(axis=0)
+    print(f"median peak of the density over back-azimuth: {np.median(peak):.2f} times even")
+    assert sure.mean() < 0.1
+    assert np.median(peak) < 5
+    answer = intervals(found)
+    bearing = np.degrees(answer.back_azimuth_best_rad[0, before])
+    slowness = 1e3 / answer.apparent_velocity_best_m_s[0, before]
+    assert not (sure & (np.abs(bearing - 305.7) < 10) & (slowness < 0.09)).any()
