@@ -83,19 +83,27 @@ def map_grid(event: Event, half_width_km: float | None = None, spacing_km: float
         half_width_km = max(30.0, 1.5 * subsurface_length_km(event.magnitude))
     spacing_km = half_width_km / 25.0 if spacing_km is None else spacing_km
     if not (half_width_km > 0 and 0 < spacing_km <= half_width_km):
-        raise InputError(f"map of half width {half_width_km:g} km with cells of {spacing_km:g} km: sizes must be positive and fit")
+        raise InputError(
+            f"map of half width {half_width_km:g} km with cells of {spacing_km:g} km: sizes must be positive and fit"
+        )
     count = int(np.floor(half_width_km / spacing_km))
     if (2 * count + 1) ** 2 > MOST_CELLS:
-        raise InputError(f"{(2 * count + 1) ** 2} cells are more than {MOST_CELLS}; give a larger spacing or a smaller half width")
+        raise InputError(
+            f"{(2 * count + 1) ** 2} cells are more than {MOST_CELLS}; give a larger spacing or a smaller half width"
+        )
     axis = spacing_km * KM * np.arange(-count, count + 1)
     north, east = (v.ravel() for v in np.meshgrid(axis, axis, indexing="ij"))
     plane = LocalPlane(event.longitude_deg, event.latitude_deg)
     longitude, latitude = plane.to_geographic(east, north)
     centre = (plane.longitude_deg, plane.latitude_deg)
-    return Grid(longitude, latitude, event.depth_km, east, north, (axis.size, axis.size), spacing_km * KM, "map", None, centre)
+    return Grid(
+        longitude, latitude, event.depth_km, east, north, (axis.size, axis.size), spacing_km * KM, "map", None, centre
+    )
 
 
-def trace_grid(event: Event, longitude_deg: ArrayLike, latitude_deg: ArrayLike, spacing_km: float | None = None) -> Grid:
+def trace_grid(
+    event: Event, longitude_deg: ArrayLike, latitude_deg: ArrayLike, spacing_km: float | None = None
+) -> Grid:
     """Return points along a fault trace, equally spaced; distance along it counts from the point nearest the epicentre.
 
     Parameters
@@ -119,7 +127,9 @@ def trace_grid(event: Event, longitude_deg: ArrayLike, latitude_deg: ArrayLike, 
     reach = np.concatenate([[0.0], np.cumsum(leg)])
     spacing = (reach[-1] / 100.0) if spacing_km is None else spacing_km * KM
     if not 0 < spacing <= reach[-1]:
-        raise InputError(f"spacing of {spacing / KM:g} km along a trace of {reach[-1] / KM:.1f} km: it must be positive and fit")
+        raise InputError(
+            f"spacing of {spacing / KM:g} km along a trace of {reach[-1] / KM:.1f} km: it must be positive and fit"
+        )
     along = np.arange(0.0, reach[-1] + 1e-6, spacing)
     part = np.clip(np.searchsorted(reach, along, side="right") - 1, 0, leg.size - 1)
     longitude, latitude = destination(lon[part], lat[part], azimuth[part], along - reach[part])

@@ -141,7 +141,9 @@ def stack_rays(
     probability, nothing = location_probability(total, settings.source_share)
     with np.errstate(invalid="ignore"):
         power = np.where(heard > 0, np.exp(level / np.maximum(heard, 1.0)), 0.0)
-    return Stack(total, probability, nothing, (probability * power).astype(np.float32), np.asarray(source_time_s, float))
+    return Stack(
+        total, probability, nothing, (probability * power).astype(np.float32), np.asarray(source_time_s, float)
+    )
 
 
 def _stride(source_time_s: Array, hop_s: float) -> int:
@@ -163,7 +165,15 @@ def location_probability(log_ratio: Table, source_share: float) -> tuple[Table, 
 
 
 def _add_power(
-    level: Table, heard: Table, direction: SiteDirection, geometry: Geometry, site: int, start_s: float, hop: float, stride: int, phases: tuple[str, ...]
+    level: Table,
+    heard: Table,
+    direction: SiteDirection,
+    geometry: Geometry,
+    site: int,
+    start_s: float,
+    hop: float,
+    stride: int,
+    phases: tuple[str, ...],
 ) -> None:
     """Add the log of spreading-corrected power; every site counts relative to its own mean, so that amplification drops out."""
     phase = "S" if "S" in phases else "P"
