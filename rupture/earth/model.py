@@ -5,6 +5,7 @@ from __future__ import annotations
 import hashlib
 import os
 import tempfile
+import zipfile
 from collections.abc import Callable
 from dataclasses import dataclass, field
 from functools import lru_cache
@@ -20,9 +21,9 @@ from rupture.errors import InputError
 VP_OVER_VS = 1.73
 """Ratio of a Poisson solid, for the uniform Earth."""
 
-PHASES = {"P": "ttp", "S": "tts"}
-_FIRST_LEG = {"P": "pP", "S": "sS"}
-_VERSION = "1"
+PHASES = {"P": ("p", "P", "Pn"), "S": ("s", "S", "Sn")}
+_DIFFRACTED_FROM_KM = 9000.0
+_VERSION = "2"
 
 
 @dataclass(frozen=True)
@@ -135,21 +136,22 @@ def _taup_table(content: str, model: str, phase: str, depth_km: float, longest_k
     key = _digest(f"{_VERSION} {content} {phase} {depth_km:.2f} {longest_km:.0f}")
     path = cache_folder() / "tables" / f"{key}.npz"
     try:
-        with np.load(path) as kept:
+        with path.open("rb") as file, np.load(file) as kept:
             return TravelTimeTable(phase, depth_km, kept["distance_m"], kept["time_s"], kept["slowness_s_m"])
-    except (OSError, KeyError, ValueError, EOFError):
+    except (OSError, KeyError, ValueError, EOFError, zipfile.BadZipFile):
         pass  # no such table yet, or a damaged one: it is made again
     from obspy.taup import TauPyModel
 
     radius_km = 6371.0
     taup = TauPyModel(model)
     distance = table_distances_m(longest_km)
+    # Only what can come first: a shorter list takes TauP half the time.
+    phases = [*PHASES[phase], *([f"{phase}diff"] if longest_km > _DIFFRACTED_FROM_KM else [])]
     time, slowness = np.full((2, distance.size), np.nan)
     for k, d in enumerate(distance):
-        arrivals = taup.get_travel_times(depth_km, np.degrees(d / 1e3 / radius_km), [PHASES[phase]])
-        direct = [a for a in arrivals if a.name[0] in _FIRST_LEG[phase]]
-        if direct:
-            time[k], slowness[k] = direct[0].time, direct[0].ray_param / (1e3 * radius_km)
+        arrivals = taup.get_travel_times(depth_km, np.degrees(d / 1e3 / radius_km), phases)
+        if arrivals:
+            time[k], slowness[k] = arrivals[0].time, arrivals[0].ray_param / (1e3 * radius_km)
     table = TravelTimeTable(phase, depth_km, distance, time, slowness)
     _keep(path, table)
     return table

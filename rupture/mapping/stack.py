@@ -107,6 +107,9 @@ def stack_rays(
 ) -> Stack:
     """Stack the rays of all sites.
 
+    Memory: six float32 arrays of cells x frames at the most (three sums, two results, one at work), 24 bytes for
+    each cell and frame: 0.7 GB for 100,000 cells and 300 frames.
+
     Parameters
     ----------
     directions
