@@ -12,8 +12,11 @@ from rupture.direction import SiteDirection
 from rupture.earth.responses import Responses
 from rupture.errors import InputError
 from rupture.event import Event
-from rupture.front.lines import ANGLES, FREE, KINDS, PARAMETERS, LinePrior, same_first_arm, to_parameters
+from rupture.front.intervals import interval
+from rupture.front.kernels import DURATION
+from rupture.front.lines import KINDS, PARAMETERS, LinePrior, same_first_arm, to_parameters
 from rupture.front.sampler import temper
+from rupture.front.target import Target
 from rupture.front.windows import Windows, lay_out
 from rupture.mapping.grid import subsurface_length_km
 
@@ -110,37 +113,16 @@ class RuptureFit:
         return interval(self.column(name, kind), circular=name in CIRCULAR)
 
     def best(self, kind: str | None = None) -> Array:
-        """Return the draw nearest to the medians of azimuth, speed, length and duration, shape (16,)."""
+        """Return the draw nearest to the medians of place, start, azimuths, speeds, lengths and duration, shape (parameters,)."""
         draws = self.samples[kind or self.likeliest]
         distance = np.zeros(draws.shape[0])
-        for k, name in enumerate(self.parameters):
+        for k, name in enumerate(self.parameters[: DURATION + 1]):
             middle, low, high = interval(draws[:, k], circular=name in CIRCULAR)
             width = (high - low) % (2 * np.pi) if name in CIRCULAR else high - low
             offset = (draws[:, k] - middle + np.pi) % (2 * np.pi) - np.pi if name in CIRCULAR else draws[:, k] - middle
             distance += (offset / width) ** 2 if width > 0 else 0.0
         best: Array = draws[int(np.argmin(distance))]
         return best
-
-
-def interval(values: Array, circular: bool = False, weights: Array | None = None) -> tuple[float, float, float]:
-    """Return median, p05 and p95 of draws; a circle is cut opposite the mean direction.
-
-    Examples
-    --------
-    >>> interval(np.array([1.0, 2.0, 3.0]))[0]
-    2.0
-    """
-    weights = np.full(values.size, 1.0 / values.size) if weights is None else weights / weights.sum()
-    turn = 0.0
-    if circular:
-        turn = float(np.angle(np.sum(weights * np.exp(1j * values))))
-        values = (values - turn + np.pi) % (2 * np.pi) - np.pi
-    order = np.argsort(values)
-    reach = np.cumsum(weights[order]) - 0.5 * weights[order]
-    low, middle, high = np.interp([0.05, 0.5, 0.95], reach, values[order]) + turn
-    if circular:
-        low, middle, high = (float(v % (2 * np.pi)) for v in (low, middle, high))
-    return float(middle), float(low), float(high)
 
 
 def prior_for(event: Event, longest_m: float | None = None) -> LinePrior:
@@ -187,12 +169,29 @@ def fit_rupture(
         When no site has a usable window.
     """
     prior = prior or prior_for(event)
-    longest_s = 3.0 * prior.length_m / 2800.0 + 20.0
-    windows = lay_out(
-        directions, site_longitude_deg, site_latitude_deg, event, responses, longest_s,
+    windows = windows_of(directions, site_longitude_deg, site_latitude_deg, event, responses, settings, prior)
+    return fit_windows(windows, prior, settings, seed, progress)
+
+
+def windows_of(
+    directions: Sequence[SiteDirection],
+    site_longitude_deg: Sequence[float],
+    site_latitude_deg: Sequence[float],
+    event: Event,
+    responses: Responses,
+    settings: FitSettings,
+    prior: LinePrior,
+) -> Windows:
+    """Lay out the windows that a rupture as long as the prior allows can be heard in; arguments as `fit_rupture`."""
+    return lay_out(
+        directions, site_longitude_deg, site_latitude_deg, event, responses, longest_duration_s(prior),
         settings.slowness_spread, np.radians(settings.azimuth_spread_deg), settings.hop_s, settings.power_sigma, settings.power_share,
     )  # fmt: skip
-    return fit_windows(windows, prior, settings, seed, progress)
+
+
+def longest_duration_s(prior: LinePrior) -> float:
+    """Return how long after S windows are looked at: three times the expected length at 2.8 km/s, and the coda."""
+    return 3.0 * prior.length_m / 2800.0 + 20.0
 
 
 def fit_windows(
@@ -206,22 +205,17 @@ def fit_windows(
     samples, likelihood, evidence = {}, {}, {}
     for number, kind in enumerate(KINDS):
         rng = np.random.default_rng((seed, number))
-
-        def log_likelihood(draws: Array, kind: str = kind) -> Array:
-            total: Array = settings.trust * windows.log_likelihood(to_parameters(kind, draws)).sum(axis=1)
-            return total
-
-        def draw(r: np.random.Generator, count: int, kind: str = kind) -> Array:
-            return prior.draw(kind, r, count)
-
-        def log_prior(draws: Array, kind: str = kind) -> Array:
-            return prior.log_density(kind, draws)
-
-        def rename(draws: Array, kind: str = kind) -> Array:
-            return same_first_arm(kind, draws)
-
-        angles = [column for column, parameter in enumerate(FREE[kind]) if parameter in ANGLES]
-        found = temper(draw, log_prior, log_likelihood, settings.particles, settings.moves, rng, angles, rename)
+        target = Target(kind, windows, prior, settings.trust)
+        found = temper(
+            target.draw,
+            target.log_prior,
+            target.log_likelihood,
+            settings.particles,
+            settings.moves,
+            rng,
+            target.angles,
+            target.rename,
+        )
         samples[kind] = to_parameters(kind, same_first_arm(kind, found.draws, longer_first=True))
         likelihood[kind] = settings.trust * windows.log_likelihood(samples[kind])
         evidence[kind] = found.log_evidence

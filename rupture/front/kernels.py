@@ -23,7 +23,14 @@ import numpy as np
     P_SHARE,
     RISE,
     SHARE_2,
-) = range(16)
+    STRENGTH,
+) = range(17)
+
+KNOTS = 4
+"""Log-strengths at equal steps along an arm (in time, for a stationary source): columns STRENGTH to STRENGTH + KNOTS - 1 for the first
+arm, and as many after them for the second. Ruptures shine unevenly, and a bright place drowns what comes soon after it."""
+
+COLUMNS = STRENGTH + 2 * KNOTS
 
 PIECES = 20
 """Pieces of one arm: a front of 100 km then moves 5 km in a piece, less than any window resolves, and the energy of a piece is
@@ -51,31 +58,40 @@ _REACH = 1.7320508075688772
 
 
 @numba.njit(cache=True)
-def place_pieces(theta, east, north, time, weight):  # pragma: no cover - compiled
-    """Fill the ends of the pieces of each arm and the share of the energy of one piece; return arms and pieces of each.
+def strengths(theta, arm, out):  # pragma: no cover - compiled
+    """Fill the relative strength of each piece of an arm: log-linear between knots, the middle of a piece standing for it."""
+    for j in range(PIECES):
+        at = (j + 0.5) / PIECES * (KNOTS - 1)
+        k = min(int(at), KNOTS - 2)
+        low, high = theta[STRENGTH + KNOTS * arm + k], theta[STRENGTH + KNOTS * arm + k + 1]
+        out[j] = np.exp(low + (at - k) * (high - low))
 
-    Shapes (2, PIECES + 1) and (2,). A stationary source is one arm of one piece that starts and ends in the same place.
+
+@numba.njit(cache=True)
+def place_pieces(theta, east, north, time, weight):  # pragma: no cover - compiled
+    """Fill the ends of the pieces of each arm, shape (2, PIECES + 1), and their shares of the energy, shape (2, PIECES).
+
+    Return the number of arms. A stationary source is one arm whose pieces all lie in the same place.
     """
-    if theta[LENGTH] <= 0.0:
-        east[0, :2], north[0, :2] = theta[EAST], theta[NORTH]
-        time[0, 0], time[0, 1] = theta[START], theta[START] + theta[DURATION]
-        weight[0] = 1.0
-        return 1, 1
     arms = 2 if theta[LENGTH_2] > 0.0 else 1
+    total = 0.0
     for arm in range(arms):
-        azimuth, speed, length, share = theta[AZIMUTH], theta[SPEED], theta[LENGTH], 1.0 - theta[SHARE_2]
+        azimuth, speed, length = theta[AZIMUTH], theta[SPEED], theta[LENGTH]
         if arm == 1:
-            azimuth, speed, length, share = theta[AZIMUTH_2], theta[SPEED_2], theta[LENGTH_2], theta[SHARE_2]
-        if arms == 1:
-            share = 1.0
+            azimuth, speed, length = theta[AZIMUTH_2], theta[SPEED_2], theta[LENGTH_2]
         sine, cosine = np.sin(azimuth), np.cos(azimuth)
         for j in range(PIECES + 1):
             reach = length * j / PIECES
             east[arm, j] = theta[EAST] + reach * sine
             north[arm, j] = theta[NORTH] + reach * cosine
-            time[arm, j] = theta[START] + reach / speed
-        weight[arm] = share / PIECES
-    return arms, PIECES
+            time[arm, j] = theta[START] + (reach / speed if length > 0.0 else theta[DURATION] * j / PIECES)
+        strengths(theta, arm, weight[arm])
+        for j in range(PIECES):
+            # Strength is energy per length, so that long arms radiate more.
+            weight[arm, j] *= max(length, 1.0) / PIECES
+            total += weight[arm, j]
+    weight[:arms] /= total
+    return arms
 
 
 @numba.njit(cache=True)
@@ -99,7 +115,7 @@ def _spread_box(out, begin, end, energy, pull_east, pull_north):  # pragma: no c
 
 @numba.njit(cache=True)
 def _arrivals(
-    theta, arms, pieces, east, north, time, weight, place, tables, primary, step_m, start_s, bin_s, direct, scattered
+    theta, arms, east, north, time, weight, place, tables, primary, step_m, start_s, bin_s, direct, scattered
 ):  # pragma: no cover - compiled
     """Lay the arrivals of all waves of all pieces into bins; return when the first S wave comes.
 
@@ -113,7 +129,7 @@ def _arrivals(
     now = np.zeros((waves, 3))
     old_e = old_n = 0.0
     for arm in range(arms):
-        for j in range(pieces + 1):
+        for j in range(PIECES + 1):
             de = east[arm, j] - place[0]
             dn = north[arm, j] - place[1]
             # The site's north is not the plane's: meridians converge.
@@ -138,7 +154,7 @@ def _arrivals(
                 for w in range(waves):
                     if now[w, ENERGY] <= 0.0 or before[w, ENERGY] <= 0.0:
                         continue
-                    energy = weight[arm] * 0.5 * (now[w, ENERGY] + before[w, ENERGY])
+                    energy = weight[arm, j - 1] * 0.5 * (now[w, ENERGY] + before[w, ENERGY])
                     if primary[w]:
                         energy *= theta[P_SHARE]
                     begin, end = min(before[w, TIME], now[w, TIME]), max(before[w, TIME], now[w, TIME])
@@ -261,12 +277,12 @@ def log_likelihoods(
     power_sigma,
     power_share,
 ):  # pragma: no cover - compiled
-    """Return the log-likelihood of each row of a parameter table, shape (particles, sites).
+    """Return the log-likelihood of each row of a parameter table, shape (particles, sites, countings).
 
     Parameters
     ----------
     particles
-        Shape (N, 16), SI units.
+        Shape (N, COLUMNS), SI units.
     first
         First window of each site in arrays over all windows, shape (sites + 1,).
     view_first
@@ -283,7 +299,7 @@ def log_likelihoods(
     level
         Natural log of window power relative to the site's largest, plus the floor; NaN where a window does not count, shape (windows,).
     multiple
-        How many times a window counts: 1, and other numbers in resampling; shape (windows,).
+        How many times a window counts: 1, and other numbers in resampling; one or more such countings, shape (countings, windows).
     start_s, stride, bin_s, pad
         Time of each site's first window, shape (sites,); bins between windows; their length; bins before the first window.
     places
@@ -296,14 +312,15 @@ def log_likelihoods(
     count, sites = particles.shape[0], first.size - 1
     # Each arm's power scatters on its own, so their ratio scatters by root two more.
     odds = np.exp(_REACH * np.sqrt(2.0) * power_sigma)
-    out = np.zeros((count, sites))
+    countings = multiple.shape[0]
+    out = np.zeros((count, sites, countings))
     for i in numba.prange(count):
         theta = particles[i]
         east = np.empty((2, PIECES + 1))
         north = np.empty((2, PIECES + 1))
         time = np.empty((2, PIECES + 1))
-        weight = np.empty(2)
-        arms, pieces = place_pieces(theta, east, north, time, weight)
+        weight = np.empty((2, PIECES))
+        arms = place_pieces(theta, east, north, time, weight)
         for s in range(sites):
             windows = first[s + 1] - first[s]
             if windows == 0:
@@ -313,13 +330,12 @@ def log_likelihoods(
             scattered = np.zeros((arms, 3, bins))
             isotropic = np.zeros(bins)
             from_s = _arrivals(
-                theta, arms, pieces, east, north, time, weight, places[s], tables, primary, step_m,
+                theta, arms, east, north, time, weight, places[s], tables, primary, step_m,
                 start_s[s] - pad * bin_s, bin_s, direct, scattered,
             )  # fmt: skip
             _add_coda(theta, arms, bin_s, direct, scattered, isotropic)
             seen = np.zeros((arms, 3, windows))
             anywhere = np.empty(windows)
-            total = 0.0
             for v in range(view_first[s], view_first[s + 1]):
                 # A place radiates while it slips: it is heard that much longer.
                 half_bins = 0.5 * (window_s[v] + min(theta[RISE], LONGEST_RISE_S)) / bin_s
@@ -336,29 +352,27 @@ def log_likelihoods(
                 size = cells * cells * windows
                 table = codes[table_first[v] : table_first[v] + size].reshape(cells, cells, windows)
                 tells = telling[table_first[v] // (cells * cells) :]
-                gain = 0.0
                 for t in range(windows):
                     anywhere[t] += 1e-4 * peak
-                    k = first[s] + t
-                    if tells[t] and multiple[k] > 0.0:
-                        term = _direction_term(table, value, t, arms, seen, anywhere, theta[STRAY], odds, cell_s_m)
-                        gain += multiple[k] * term
-                total += overlap[v] * gain
+                    if not tells[t]:
+                        continue
+                    term = _direction_term(table, value, t, arms, seen, anywhere, theta[STRAY], odds, cell_s_m)
+                    for c in range(countings):
+                        out[i, s, c] += overlap[v] * multiple[c, first[s] + t] * term
                 if v == view_first[s]:
-                    total += overlap[v] * _power_term(
-                        level[first[s] : first[s + 1]], multiple[first[s] : first[s + 1]], seen, anywhere, arms, peak,
-                        start_s[s], stride * bin_s, from_s, power_sigma, power_share,
+                    _add_power_term(
+                        level[first[s] : first[s + 1]], multiple[:, first[s] : first[s + 1]], seen, anywhere, arms, peak,
+                        start_s[s], stride * bin_s, from_s, overlap[v] * power_share / power_sigma**2, out[i, s],
                     )  # fmt: skip
-            out[i, s] = total
     return out
 
 
 @numba.njit(cache=True)
-def _power_term(
-    level, multiple, seen, anywhere, arms, peak, start_s, hop_s, from_s, power_sigma, power_share
+def _add_power_term(
+    level, multiple, seen, anywhere, arms, peak, start_s, hop_s, from_s, precision, out
 ):  # pragma: no cover - compiled
-    """Log-likelihood of the powers of one site; its amplification is unknown, so its mean misfit is free."""
-    number = mean = square = 0.0
+    """Add the log-likelihood of the powers of one site, shape (countings,); its amplification is unknown, so its mean misfit is free."""
+    sums = np.zeros((multiple.shape[0], 3))
     scale = 1.0 / peak if peak > 0.0 else 0.0
     for t in range(level.size):
         if np.isnan(level[t]) or start_s + t * hop_s < from_s:
@@ -368,9 +382,10 @@ def _power_term(
             heard += seen[1, WEIGHT, t]
         # Below a share of the peak the record is coda and noise, of which this model knows little.
         misfit = level[t] - np.log(heard * scale + POWER_FLOOR)
-        number += multiple[t]
-        mean += multiple[t] * misfit
-        square += multiple[t] * misfit * misfit
-    if number <= 0.0:
-        return 0.0
-    return -0.5 * power_share * (square - mean * mean / number) / power_sigma**2
+        for c in range(multiple.shape[0]):
+            sums[c, 0] += multiple[c, t]
+            sums[c, 1] += multiple[c, t] * misfit
+            sums[c, 2] += multiple[c, t] * misfit * misfit
+    for c in range(multiple.shape[0]):
+        if sums[c, 0] > 0.0:
+            out[c] -= 0.5 * precision * (sums[c, 2] - sums[c, 1] ** 2 / sums[c, 0])

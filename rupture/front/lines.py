@@ -14,16 +14,20 @@ from rupture.front.kernels import (
     CODA_TIME,
     DURATION,
     EAST,
+    KNOTS,
     LENGTH,
     LENGTH_2,
     NORTH,
     P_SHARE,
+    PIECES,
     RISE,
     SHARE_2,
     SPEED,
     SPEED_2,
     START,
     STRAY,
+    STRENGTH,
+    strengths,
 )
 
 Array = NDArray[np.float64]
@@ -31,21 +35,24 @@ Array = NDArray[np.float64]
 PARAMETERS = (
     "east_m", "north_m", "start_time_s", "azimuth_rad", "speed_m_s", "length_m", "second_azimuth_rad", "second_speed_m_s",
     "second_length_m", "duration_s", "coda_ratio", "coda_time_s", "stray_share", "p_factor",
-    "rise_time_s", "second_share",
+    "rise_time_s", "second_share", *(f"log_strength_{k + 1}" for k in range(KNOTS)),
+    *(f"second_log_strength_{k + 1}" for k in range(KNOTS)),
 )  # fmt: skip
 
 KINDS = ("stationary", "unilateral", "bilateral")
 
 _LOG = (SPEED, LENGTH, SPEED_2, DURATION, CODA, CODA_TIME, STRAY, P_SHARE, RISE)
 _COMMON = (EAST, NORTH, START, CODA, CODA_TIME, STRAY, P_SHARE, RISE)
+_FIRST = tuple(range(STRENGTH, STRENGTH + KNOTS))
+_SECOND = tuple(range(STRENGTH + KNOTS, STRENGTH + 2 * KNOTS))
 FREE = {
-    "stationary": (*_COMMON, DURATION),
-    "unilateral": (*_COMMON, AZIMUTH, SPEED, LENGTH),
-    "bilateral": (*_COMMON, AZIMUTH, SPEED, LENGTH, AZIMUTH_2, SPEED_2, LENGTH_2, SHARE_2),
+    "stationary": (*_COMMON, DURATION, *_FIRST),
+    "unilateral": (*_COMMON, AZIMUTH, SPEED, LENGTH, *_FIRST),
+    "bilateral": (*_COMMON, AZIMUTH, SPEED, LENGTH, AZIMUTH_2, SPEED_2, LENGTH_2, *_FIRST, *_SECOND),
 }
 """Parameters of each kind. In the sampler's coordinates positive ones are logarithms, the first length is that of both arms, the
-second azimuth is the bend from straight on, the second length is its part of the whole, and the second share is the logit of
-the second arm's share of the energy less that of its part of the length."""
+second azimuth is the bend from straight on, and the second length is its part of the whole. The second share follows from the
+strengths."""
 
 ANGLES = (AZIMUTH,)
 """Sampler's coordinates that go round a circle."""
@@ -74,9 +81,8 @@ class LinePrior:
         two is twice their scatter.
     shortest_ratio
         Least ratio of the shorter to the longer arm of a bilateral rupture; below it the rupture counts as unilateral.
-    share_width
-        Of the logit of the second arm's share of the energy about its part of the length: equal radiation per length, within
-        the scatter of slip along a rupture.
+    strength_width
+        Of the log of radiated energy per length (per time, for a stationary source) at each knot: the scatter of slip along a rupture.
     bend_rad
         Of the angle by which the second arm departs from straight on.
     duration_s, duration_log_width
@@ -92,7 +98,7 @@ class LinePrior:
     length_m: float = 50e3
     length_log_width: float = 0.7
     shortest_ratio: float = 0.2
-    share_width: float = 0.5
+    strength_width: float = 0.7
     bend_rad: float = 0.2
     duration_s: float = 20.0
     duration_log_width: float = 0.8
@@ -123,6 +129,8 @@ class LinePrior:
         return least, 1.0 - least
 
     def _normal(self, parameter: int) -> tuple[float, float]:
+        if parameter >= STRENGTH:
+            return 0.0, self.strength_width
         return {
             EAST: (0.0, self.place_m),
             NORTH: (0.0, self.place_m),
@@ -135,7 +143,6 @@ class LinePrior:
             STRAY: (np.log(0.1), 0.6),
             P_SHARE: (0.0, 0.7),
             RISE: (float(np.log(self.rise_s)), 0.6),
-            SHARE_2: (0.0, self.share_width),
         }[parameter]
 
     def log_density(self, kind: str, draws: Array) -> Array:
@@ -164,19 +171,41 @@ class LinePrior:
 
 
 def to_parameters(kind: str, draws: Array) -> Array:
-    """Turn the sampler's coordinates into SI parameters, shape (count, 16), in the order of `PARAMETERS`."""
+    """Turn the sampler's coordinates into SI parameters, shape (count, columns), in the order of `PARAMETERS`."""
     out = np.zeros((draws.shape[0], len(PARAMETERS)))
     for column, parameter in enumerate(FREE[kind]):
         out[:, parameter] = np.exp(draws[:, column]) if parameter in _LOG else draws[:, column]
     if kind == "bilateral":
         part, whole = out[:, LENGTH_2].copy(), out[:, LENGTH].copy()
         out[:, LENGTH], out[:, LENGTH_2] = whole * (1 - part), whole * part
-        out[:, SHARE_2] = 1 / (1 + (1 - part) / part * np.exp(-out[:, SHARE_2]))
+        first, second = (_mean_strength(out, arm) for arm in (0, 1))
+        out[:, SHARE_2] = part * second / (part * second + (1 - part) * first)
         out[:, AZIMUTH_2] = (out[:, AZIMUTH] + np.pi + out[:, AZIMUTH_2]) % (2 * np.pi)
         out[:, DURATION] = np.maximum(out[:, LENGTH] / out[:, SPEED], out[:, LENGTH_2] / out[:, SPEED_2])
     elif kind == "unilateral":
         out[:, DURATION] = out[:, LENGTH] / out[:, SPEED]
     out[:, AZIMUTH] %= 2 * np.pi
+    return out
+
+
+def to_coordinates(kind: str, parameters: Array) -> Array:
+    """Turn SI parameters, shape (count, columns), into the sampler's coordinates: the inverse of `to_parameters`."""
+    full = parameters.copy()
+    if kind == "bilateral":
+        whole = parameters[:, LENGTH] + parameters[:, LENGTH_2]
+        full[:, LENGTH], full[:, LENGTH_2] = whole, parameters[:, LENGTH_2] / whole
+        bend = parameters[:, AZIMUTH_2] - parameters[:, AZIMUTH] - np.pi
+        full[:, AZIMUTH_2] = (bend + np.pi) % (2 * np.pi) - np.pi
+    columns = [np.log(full[:, p]) if p in _LOG else full[:, p] for p in FREE[kind]]
+    return np.stack(columns, axis=1)
+
+
+def _mean_strength(parameters: Array, arm: int) -> Array:
+    row = np.empty(PIECES)
+    out = np.empty(parameters.shape[0])
+    for k, theta in enumerate(parameters):
+        strengths(theta, arm, row)
+        out[k] = row.mean()
     return out
 
 
@@ -207,6 +236,7 @@ def same_first_arm(kind: str, draws: Array, longer_first: bool = False) -> Array
     out[swap, at[AZIMUTH]] = azimuth[swap] + np.pi + draws[swap, at[AZIMUTH_2]]
     out[swap, at[AZIMUTH_2]] *= -1
     out[swap, at[LENGTH_2]] = 1 - draws[swap, at[LENGTH_2]]
-    out[swap, at[SHARE_2]] *= -1
+    for one, two in zip(_FIRST, _SECOND, strict=True):
+        out[swap, at[one]], out[swap, at[two]] = draws[swap, at[two]], draws[swap, at[one]]
     out[swap, at[SPEED]], out[swap, at[SPEED_2]] = draws[swap, at[SPEED_2]], draws[swap, at[SPEED]]
     return out

@@ -46,7 +46,6 @@ class Windows:
     cells: int
     cell_s_m: float
     level: Array
-    multiple: Array
     start_s: Array
     stride: int
     bin_s: float
@@ -63,21 +62,33 @@ class Windows:
         hop = self.stride * self.bin_s
         return np.concatenate([s + hop * np.arange(n) for s, n in zip(self.start_s, np.diff(self.first), strict=True)])
 
-    def log_likelihood(self, parameters: Array, multiple: Array | None = None) -> Array:
+    def log_likelihood(self, parameters: Array) -> Array:
         """Return log-likelihoods per site, shape (count, sites).
 
         Parameters
         ----------
         parameters
-            SI parameters in the order of `rupture.front.lines.PARAMETERS`, shape (count, 16).
-        multiple
-            How many times each window counts, shape (windows,); once each when not given.
+            SI parameters in the order of `rupture.front.PARAMETERS`, shape (count, columns).
         """
-        return log_likelihoods(
+        each: Array = self.counted(parameters, np.ones((1, self.first[-1])))[..., 0]
+        return each
+
+    def counted(self, parameters: Array, multiple: Array) -> Array:
+        """Return log-likelihoods per site for several countings of windows, shape (count, sites, countings).
+
+        Parameters
+        ----------
+        parameters
+            As `log_likelihood`.
+        multiple
+            How many times each window counts, shape (countings, windows).
+        """
+        counted: Array = log_likelihoods(
             np.ascontiguousarray(parameters), self.first, self.view_first, self.table_first, self.window_s, self.overlap, self.codes,
-            self.value, self.telling, self.cells, self.cell_s_m, self.level, self.multiple if multiple is None else multiple, self.start_s, self.stride,
-            self.bin_s, self.pad, self.places, self.tables, self.primary, STEP_M, self.power_sigma, self.power_share,
+            self.value, self.telling, self.cells, self.cell_s_m, self.level, multiple, self.start_s, self.stride, self.bin_s, self.pad,
+            self.places, self.tables, self.primary, STEP_M, self.power_sigma, self.power_share,
         )  # fmt: skip
+        return counted
 
 
 def lay_out(
@@ -151,7 +162,7 @@ def lay_out(
     return Windows(
         tuple(d.code for d in directions), np.array(first), np.array(view_first),
         np.concatenate([[0], np.cumsum([row.size for row in rows])])[:-1], np.array(lengths), np.array(overlaps), codes, value, np.concatenate(telling),
-        2 * HALF_CELLS + 1, largest / HALF_CELLS, np.concatenate(levels), np.ones(first[-1]), np.array(starts), stride, hop / stride,
+        2 * HALF_CELLS + 1, largest / HALF_CELLS, np.concatenate(levels), np.array(starts), stride, hop / stride,
         pad, np.stack([east, north, np.cos(turn), np.sin(turn)], axis=1), tables, primary, power_sigma, power_share,
     )  # fmt: skip
 
