@@ -193,7 +193,11 @@ def _inputs(parser: argparse.ArgumentParser) -> None:
         metavar=("STRIKE", "DIP", "RAKE"),
         help="focal mechanism in degrees",
     )
-    group.add_argument("--earth", metavar="MODEL", help="uniform:SPEED (S, km/s), iasp91, ak135, prem, or an .nd file")
+    group.add_argument(
+        "--earth",
+        metavar="MODEL",
+        help="uniform:SPEED (S, km/s), iasp91, ak135, prem, an .nd file, or a .csv file of travel times",
+    )
     group.add_argument(
         "--band",
         nargs=2,

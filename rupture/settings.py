@@ -49,7 +49,7 @@ class InputSettings:
 
 @dataclass(frozen=True)
 class EarthSettings:
-    """The Earth: `uniform:SPEED`, iasp91, ak135, prem, or an .nd file."""
+    """The Earth: `uniform:SPEED`, iasp91, ak135, prem, an .nd file, or a .csv file of travel times."""
 
     model: str = "ak135"
 
@@ -193,6 +193,6 @@ def _beside(given: InputSettings, folder: Path) -> InputSettings:
 def _earth_beside(given: EarthSettings, folder: Path) -> EarthSettings:
     return (
         EarthSettings(str(folder / given.model))
-        if given.model.endswith(".nd") and not Path(given.model).is_absolute()
+        if given.model.endswith((".nd", ".csv")) and not Path(given.model).is_absolute()
         else given
     )

@@ -3,27 +3,31 @@
 from __future__ import annotations
 
 import hashlib
-import os
-import tempfile
-import zipfile
 from collections.abc import Callable
 from dataclasses import dataclass, field
 from functools import lru_cache
 from pathlib import Path
 
 import numpy as np
+from numpy.typing import NDArray
 
+from rupture.conventions import KM
+from rupture.earth.first_arrivals import first_arrivals
 from rupture.earth.layers import LayeredModel
-from rupture.earth.named import BUILT_IN, layers_from_profile, profile_of_built_in, read_nd
+from rupture.earth.named import BUILT_IN, continued_below, layers_from_profile, profile_of_built_in, read_nd
 from rupture.earth.tables import TravelTimeTable, table_distances_m, uniform_table
+from rupture.earth.timefile import read_times
 from rupture.errors import InputError
 
 VP_OVER_VS = 1.73
 """Ratio of a Poisson solid, for the uniform Earth."""
 
-PHASES = {"P": ("p", "P", "Pn"), "S": ("s", "S", "Sn")}
-_DIFFRACTED_FROM_KM = 9000.0
-_VERSION = "2"
+PHASES = ("P", "S")
+
+FARTHEST_KM = 11_000.0
+"""Beyond about 99 degrees the core takes the direct waves."""
+
+_TABULATE = Callable[[str, float, float], TravelTimeTable]
 
 
 @dataclass(frozen=True)
@@ -38,12 +42,15 @@ class Earth:
         Homogeneous layers for the synthetic engines.
     content
         Hash of what the model holds, for caches and provenance.
+    reach_km
+        Greatest distance for which there are times.
     """
 
     name: str
     layers: LayeredModel
     content: str
-    _tabulate: Callable[[str, float, float], TravelTimeTable] = field(repr=False)
+    _tabulate: _TABULATE = field(repr=False)
+    reach_km: float = FARTHEST_KM
 
     def table(self, phase: str, depth_km: float, longest_km: float = 1000.0) -> TravelTimeTable:
         """Return first-arrival times of 'P' or 'S' from a depth out to a distance at least.
@@ -51,11 +58,17 @@ class Earth:
         Raises
         ------
         InputError
-            For an unknown phase, or when the model has no arrival somewhere in the range.
+            For an unknown phase, or a depth or distance that the model does not reach.
         """
         if phase not in PHASES:
             raise InputError(f"unknown phase '{phase}' (known: {', '.join(PHASES)})")
-        return self._tabulate(phase, round(float(depth_km), 2), float(250.0 * np.ceil(longest_km / 250.0)))
+        if not longest_km <= self.reach_km:
+            raise InputError(
+                f"Earth model {self.name} has no direct {phase} at {longest_km:.0f} km (it reaches {self.reach_km:.0f} km)"
+                "; leave out what lies farther away"
+            )
+        longest = min(250.0 * np.ceil(longest_km / 250.0), self.reach_km)
+        return self._tabulate(phase, round(float(depth_km), 2), float(longest))
 
     def s_speed_km_s(self, depth_km: float) -> float:
         """Return the S speed at a depth in km/s."""
@@ -68,8 +81,10 @@ def build_earth(spec: str) -> Earth:
     Parameters
     ----------
     spec
-        `uniform:SPEED` (S speed in km/s; P speed is 1.73 times that), `iasp91`, `ak135`, `prem`, or the path of a
-        layered model in the `.nd` form (lines of depth, vp, vs, density and optionally Qp, Qs; km, km/s, g/cm^3).
+        `uniform:SPEED` (S speed in km/s; P speed is 1.73 times that), `iasp91`, `ak135`, `prem`; the path of a
+        layered model in the `.nd` form (lines of depth, vp, vs, density and optionally Qp, Qs; km, km/s, g/cm^3;
+        ak135 goes on below its last line); or the path of a `.csv` file of travel times with the columns phase,
+        depth_km, distance_km, time_s.
 
     Raises
     ------
@@ -78,25 +93,33 @@ def build_earth(spec: str) -> Earth:
     """
     if spec.startswith("uniform:"):
         return _uniform(spec)
-    if spec.lower() in BUILT_IN:
-        name = spec.lower()
-        layers = layers_from_profile(name, profile_of_built_in(name))
-        return Earth(name, layers, _digest(name), lambda p, z, d: _taup_table(name, name, p, z, d))
+    name = spec.lower()
+    if name in BUILT_IN:
+        profile = profile_of_built_in(name)
+        return Earth(name, layers_from_profile(name, profile), _digest(name), _profile_tables(profile))
     path = Path(spec)
     if not path.is_file():
         raise InputError(
-            f"unknown Earth model '{spec}': give uniform:SPEED, {', '.join(BUILT_IN)}, or the path of an .nd file"
+            f"unknown Earth model '{spec}': give uniform:SPEED, {', '.join(BUILT_IN)}, or the path of an .nd or .csv file"
         )
+    if path.suffix.lower() == ".csv":
+        times = read_times(path)
+        layers = _one_layer(path.stem, times.p_speed_km_s, times.s_speed_km_s)
+        return Earth(spec, layers, _digest(path.read_text(encoding="utf-8")), times.table, times.reach_km)
     profile = read_nd(path)
     layers = layers_from_profile(path.stem, profile)
-    content = _digest(path.read_text(encoding="utf-8"))
+    return Earth(spec, layers, _digest(path.read_text(encoding="utf-8")), _profile_tables(continued_below(profile)))
 
+
+def _profile_tables(profile: NDArray[np.float64]) -> _TABULATE:
+    @lru_cache(maxsize=32)
     def tabulate(phase: str, depth_km: float, longest_km: float) -> TravelTimeTable:
-        from rupture.earth.named import taup_file
+        distance = table_distances_m(longest_km)
+        speed = profile[:, 1 + PHASES.index(phase)]
+        time, slowness = first_arrivals(profile[:, 0], speed, depth_km, distance / KM)
+        return TravelTimeTable(phase, depth_km, distance, time, slowness / KM)
 
-        return _taup_table(content, str(taup_file(profile, content, cache_folder())), phase, depth_km, longest_km)
-
-    return Earth(spec, layers, content, tabulate)
+    return tabulate
 
 
 def _uniform(spec: str) -> Earth:
@@ -108,60 +131,16 @@ def _uniform(spec: str) -> Earth:
         ) from None
     if not 0.1 <= speed <= 10:
         raise InputError(f"Earth model '{spec}': an S speed of {speed:g} km/s is not one of rock (0.1 to 10 km/s)")
-    vp = VP_OVER_VS * speed
-    one = np.ones(1)
-    # Gardner's relation stands in for a density nobody gave; travel times do not use it.
-    layers = LayeredModel(
-        spec, 0 * one, vp * one, speed * one, 310.0 * (1e3 * vp) ** 0.25 * one, np.inf * one, np.inf * one
-    )
-    speeds = {"P": vp, "S": speed}
+    speeds = {"P": VP_OVER_VS * speed, "S": speed}
+    layers = _one_layer(spec, speeds["P"], speed)
     return Earth(spec, layers, _digest(spec), lambda p, z, d: uniform_table(p, speeds[p], z, table_distances_m(d)))
 
 
-def cache_folder() -> Path:
-    """Return the user's cache folder of this program (XDG base directory specification; RUPTURE_CACHE wins)."""
-    base = os.environ.get("RUPTURE_CACHE")
-    if base:
-        return Path(base)
-    return Path(os.environ.get("XDG_CACHE_HOME") or Path.home() / ".cache") / "rupture-backtrack"
+def _one_layer(name: str, vp_km_s: float, vs_km_s: float) -> LayeredModel:
+    # Gardner's relation stands in for a density nobody gave; travel times do not use it.
+    density, lossless = 310.0 * (KM * vp_km_s) ** 0.25, np.inf
+    return LayeredModel(name, *(np.array([v]) for v in (0.0, vp_km_s, vs_km_s, density, lossless, lossless)))
 
 
 def _digest(text: str) -> str:
     return hashlib.sha256(text.encode()).hexdigest()[:16]
-
-
-@lru_cache(maxsize=64)
-def _taup_table(content: str, model: str, phase: str, depth_km: float, longest_km: float) -> TravelTimeTable:
-    """Ask TauP once per model, depth and phase; keep the answer on disk, since it takes seconds."""
-    key = _digest(f"{_VERSION} {content} {phase} {depth_km:.2f} {longest_km:.0f}")
-    path = cache_folder() / "tables" / f"{key}.npz"
-    try:
-        with path.open("rb") as file, np.load(file) as kept:
-            return TravelTimeTable(phase, depth_km, kept["distance_m"], kept["time_s"], kept["slowness_s_m"])
-    except (OSError, KeyError, ValueError, EOFError, zipfile.BadZipFile):
-        pass  # no such table yet, or a damaged one: it is made again
-    from obspy.taup import TauPyModel
-
-    radius_km = 6371.0
-    taup = TauPyModel(model)
-    distance = table_distances_m(longest_km)
-    # Only what can come first: a shorter list takes TauP half the time.
-    phases = [*PHASES[phase], *([f"{phase}diff"] if longest_km > _DIFFRACTED_FROM_KM else [])]
-    time, slowness = np.full((2, distance.size), np.nan)
-    for k, d in enumerate(distance):
-        arrivals = taup.get_travel_times(depth_km, np.degrees(d / 1e3 / radius_km), phases)
-        if arrivals:
-            time[k], slowness[k] = arrivals[0].time, arrivals[0].ray_param / (1e3 * radius_km)
-    table = TravelTimeTable(phase, depth_km, distance, time, slowness)
-    _keep(path, table)
-    return table
-
-
-def _keep(path: Path, table: TravelTimeTable) -> None:
-    try:
-        path.parent.mkdir(parents=True, exist_ok=True)
-        with tempfile.NamedTemporaryFile(dir=path.parent, suffix=".part", delete=False) as part:
-            np.savez(part, distance_m=table.distance_m, time_s=table.time_s, slowness_s_m=table.slowness_s_m)
-        Path(part.name).replace(path)
-    except OSError:
-        return  # a read-only home costs time, not the run

@@ -51,7 +51,7 @@ class Responses:
 
 def first_arrival_responses(earth: Earth, depth_km: float, longest_km: float) -> Responses:
     """Return first-arriving P and S alone, with geometric spreading, for Earth models that know no more."""
-    distance = STEP_M * np.arange(int(longest_km) + 2)
+    distance = STEP_M * np.arange(min(int(longest_km) + 2, int(earth.reach_km) + 1))
     path = np.hypot(distance, 1e3 * depth_km)
     times, slownesses, energies = [], [], []
     for phase, share in (("P", 0.05), ("S", 1.0)):

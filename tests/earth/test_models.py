@@ -6,7 +6,6 @@ from hypothesis import given, settings
 from hypothesis import strategies as st
 
 from rupture.earth import TravelTimeTable, build_earth
-from rupture.earth.model import _taup_table, cache_folder
 from rupture.errors import InputError
 
 CRUST = """# depth vp vs density
@@ -115,6 +114,9 @@ def test_models_that_do_not_exist(spec, words):
         (("200 8.2 4.5 3.4", "200 4.2 4.5 3.4"), "line 10: vs must be below vp"),
         (("0 5.4 3.1 2.55", "1 5.4 3.1 2.55"), "starts at 1 km"),
         (("0 5.4 3.1 2.55\n3 5.4 3.1 2.55", "0 1.5 0 1.0\n3 1.5 0 1.0"), "uppermost layer is a fluid"),
+        (("18 6.0 3.46 2.72", "18 1.5 0 1.0"), "line 5: a fluid"),
+        (("18 6.0 3.46 2.72", "18 6.0 3.46 2.72 0 300"), "line 5: Qp and Qs must be positive"),
+        (("34 8.05 4.48 3.32", "nan 8.05 4.48 3.32"), "line 9: every number must be finite"),
         ((CRUST, "0 5.4 3.1 2.55\n"), "fewer than two depths"),
     ],
 )
@@ -151,36 +153,20 @@ def test_tables_with_gaps_or_jumps_are_refused():
         TravelTimeTable("P", 5.0, distance[::-1], time, slowness)
 
 
-def test_cache_is_kept_read_and_remade_when_damaged(tmp_path, monkeypatch):
-    monkeypatch.setenv("RUPTURE_CACHE", str(tmp_path))
-    assert cache_folder() == tmp_path
-    _taup_table.cache_clear()
-    first = build_earth("iasp91").table("P", 7.77, 250.0)
-    (kept,) = (tmp_path / "tables").iterdir()
-    _taup_table.cache_clear()
-    # What is on disk is what is read: a table shifted by a second comes back shifted.
-    with np.load(kept) as held:
-        content = dict(held)
-    np.savez(kept, **content | {"time_s": content["time_s"] + 1.0})
-    np.testing.assert_allclose(build_earth("iasp91").table("P", 7.77, 250.0).time_s, first.time_s + 1.0)
-    for damage in (b"not an archive", kept.read_bytes()[:300]):
-        kept.write_bytes(damage)
-        _taup_table.cache_clear()
-        np.testing.assert_allclose(build_earth("iasp91").table("P", 7.77, 250.0).time_s, first.time_s)
-    assert [p.name for p in (tmp_path / "tables").iterdir()] == [kept.name]
-    _taup_table.cache_clear()
+def test_quality_factors_come_from_the_model_where_it_has_them():
+    """PREM (Dziewonski & Anderson 1981) has Qs 600 in the crust, 80 in the low-velocity zone; ak135 as shipped has none."""
+    prem, ak135 = build_earth("prem").layers, build_earth("ak135").layers
+    assert prem.qs[prem.layer_at(10.0)] == 600
+    assert prem.qs[prem.layer_at(120.0)] == 80
+    assert (ak135.qs == 300).all()
 
 
-def test_cache_folder_follows_the_xdg_rule(monkeypatch):
-    monkeypatch.delenv("RUPTURE_CACHE", raising=False)
-    monkeypatch.setenv("XDG_CACHE_HOME", "/somewhere")
-    assert str(cache_folder()) == "/somewhere/rupture-backtrack"
+def test_what_the_core_shades_is_told():
+    with pytest.raises(InputError, match=r"no direct S at 12000 km \(it reaches 11000 km\)"):
+        build_earth("ak135").table("S", 10.0, 12_000.0)
 
 
-def test_a_folder_that_cannot_be_written_costs_no_run(tmp_path, monkeypatch):
-    blocked = tmp_path / "file"
-    blocked.write_text("no folder", encoding="utf-8")
-    monkeypatch.setenv("RUPTURE_CACHE", str(blocked))
-    _taup_table.cache_clear()
-    assert build_earth("iasp91").table("P", 6.66, 250.0).time(1e5) > 10
-    _taup_table.cache_clear()
+def test_tables_are_kept_in_memory():
+    earth = build_earth("ak135")
+    assert earth.table("P", 10.0, 101.0) is earth.table("P", 10.001, 240.0)
+    assert earth.table("P", 10.0, 101.0) is not earth.table("P", 10.0, 400.0)
