@@ -1,4 +1,4 @@
-"""The inner loop of the stack: for each cell, rows of the sites' tables, shifted by travel time and added."""
+"""The inner loops of the stack: rows of the sites' tables, shifted by travel time, for each cell."""
 
 from __future__ import annotations
 
@@ -39,3 +39,54 @@ def add_shifted_rows(out, table, row, shift, stride):  # pragma: no cover - comp
         for f in range(first, last):
             at = f * stride + whole
             out[c, f] += rest * table[r, at] + part * table[r, at + 1]
+
+
+@numba.njit(parallel=True, cache=True)
+def middle_mean_power(out, level, length, gain, shift, stride):  # pragma: no cover - compiled
+    """Set out[c, f] to exp of the mean over the middle half of the sites of level[s, f * stride + shift] + gain[s, c].
+
+    A quarter of the sites that have a value (rounded down) is left out at either end, so that no single one makes or
+    unmakes a cell's power. Where no site has a value the power is 0.
+
+    Parameters
+    ----------
+    out
+        Shape (C, F), float32, overwritten.
+    level
+        Log power of each site, shape (S, T), float64; what lies beyond `length[s]` is not read.
+    length
+        Samples of each site, int64, shape (S,).
+    gain
+        Log of what distance took from the power, shape (S, C).
+    shift
+        Position in `level` of frame 0, in samples, shape (S, C).
+    stride
+        Samples from frame to frame.
+    """
+    cells, frames = out.shape
+    sites = level.shape[0]
+    for c in numba.prange(cells):
+        values = np.empty(sites)
+        for f in range(frames):
+            heard = 0
+            for s in range(sites):
+                place = shift[s, c] + f * stride
+                at = int(np.floor(place))
+                if at < 0 or at + 1 >= length[s]:
+                    continue
+                part = place - at
+                value = (1.0 - part) * level[s, at] + part * level[s, at + 1] + gain[s, c]
+                k = heard
+                while k > 0 and values[k - 1] > value:
+                    values[k] = values[k - 1]
+                    k -= 1
+                values[k] = value
+                heard += 1
+            if heard == 0:
+                out[c, f] = 0.0
+                continue
+            left_out = heard // 4
+            total = 0.0
+            for k in range(left_out, heard - left_out):
+                total += values[k]
+            out[c, f] = np.exp(total / (heard - 2 * left_out))

@@ -6,16 +6,27 @@ from collections.abc import Callable, Sequence
 from dataclasses import dataclass
 
 import numpy as np
-from numpy.typing import NDArray
+from numpy.typing import ArrayLike, NDArray
 
+from rupture.conventions import KM
 from rupture.direction import SiteDirection
 from rupture.errors import InputError
 from rupture.mapping.geometry import Geometry
 from rupture.mapping.grid import Grid
-from rupture.mapping.kernels import add_shifted_rows
+from rupture.mapping.kernels import add_shifted_rows, middle_mean_power
+from rupture.mapping.lookup import look_up_rows
 
 Array = NDArray[np.float64]
 Table = NDArray[np.float32]
+
+MOST_VALUES = 80_000_000
+"""Cells times frames: three results of four bytes each are then 1 GB."""
+
+_BLOCK_VALUES = 2_000_000
+"""Work arrays hold no more values than this, whatever the grid."""
+
+_FLOOR = 1e-3
+"""Power below this share of a site's largest is noise that is left."""
 
 
 @dataclass(frozen=True)
@@ -29,12 +40,15 @@ class StackSettings:
     slowness_spread
         Standard deviation of the natural log of true over predicted apparent slowness (structure below a site,
         other branches and surface waves).
+    time_spread
+        Standard deviation of travel times as a share of themselves.
     source_share
         Probability, before any record is looked at, that a frame has a source at all.
     """
 
     phases: tuple[str, ...] = ("P", "S")
     slowness_spread: float = 0.25
+    time_spread: float = 0.02
     source_share: float = 0.5
 
     def __post_init__(self) -> None:
@@ -42,6 +56,8 @@ class StackSettings:
             raise InputError("phases must be 'P', 'S' or both")
         if not self.slowness_spread > 0 or not 0 < self.source_share < 1:
             raise InputError("slowness_spread must be positive and source_share between 0 and 1")
+        if not 0 <= self.time_spread < 1:
+            raise InputError("time_spread must lie from 0 to 1")
 
 
 @dataclass(frozen=True)
@@ -69,33 +85,6 @@ class Stack:
     source_time_s: Array
 
 
-def phase_table(direction: SiteDirection, spread: float, from_s: float = -np.inf, to_s: float = np.inf) -> Table:
-    """Return a site's log posterior ratios with the slowness known only to a spread, shape (A, P, T).
-
-    The ratio at (back-azimuth, predicted slowness) is the mean of the true ratio under a lognormal around the
-    prediction; windows outside `from_s` to `to_s` are 0 (they say nothing).
-    """
-    node = np.log(direction.slowness_s_m)
-    kernel = np.exp(-0.5 * ((node[:, None] - node[None, :]) / spread) ** 2)
-    kernel /= kernel.sum(axis=1, keepdims=True)
-    mean = np.einsum("qp,apt->aqt", kernel.astype(np.float32), np.exp(direction.log_ratio), optimize=True)
-    table = np.log(np.maximum(mean, np.float32(1e-30)))
-    table[..., (direction.time_s < from_s) | (direction.time_s > to_s)] = 0.0
-    return np.ascontiguousarray(table, np.float32)
-
-
-def table_rows(direction: SiteDirection, back_azimuth_rad: Array, slowness_s_m: Array) -> NDArray[np.int64]:
-    """Return the row of a (A x P, T) table nearest to a direction and slowness; -1 where there is no back-azimuth."""
-    angles, nodes = direction.back_azimuth_rad.size, np.log(direction.slowness_s_m)
-    known = np.isfinite(back_azimuth_rad)
-    angle = np.rint(np.where(known, back_azimuth_rad, 0.0) * angles / (2 * np.pi)).astype(np.int64) % angles
-    step = nodes[1] - nodes[0]
-    with np.errstate(divide="ignore"):
-        place = np.rint((np.log(slowness_s_m) - nodes[0]) / step)
-    node = np.clip(place, 0, nodes.size - 1).astype(np.int64)
-    return np.where(known, angle * nodes.size + node, -1)
-
-
 def stack_rays(
     directions: Sequence[SiteDirection],
     grid: Grid,
@@ -104,16 +93,17 @@ def stack_rays(
     source_time_s: Array,
     settings: StackSettings,
     progress: Callable[[int, int], None] | None = None,
+    time_error_s: ArrayLike = 0.0,
 ) -> Stack:
     """Stack the rays of all sites.
 
-    Memory: some seven float32 arrays of cells x frames at the most (sums, results, one at work), 30 bytes for
-    each cell and frame as measured: 0.9 GB for 100,000 cells and 300 frames, 2.3 GB for the most cells a map may have.
+    Memory: the three results, 12 bytes for each cell and frame, the rows of one site and phase, and blocks of a fixed
+    size.
 
     Parameters
     ----------
     directions
-        One per site, in the geometry's order.
+        One per site, in the geometry's order, all with the same hop.
     grid, geometry
         Cells and what lies between them and the sites.
     hypocentre_s_time
@@ -124,74 +114,118 @@ def stack_rays(
         How.
     progress
         Called with (sites done, sites).
+    time_error_s
+        Standard deviation of the clock of each site, in s, shape (S,), or one for all.
+
+    Raises
+    ------
+    InputError
+        When shapes, hops or frames do not fit, or cells times frames are too many.
     """
+    start, hop, stride = _checked(directions, grid, geometry, hypocentre_s_time, source_time_s)
     cells, frames = grid.longitude_deg.size, source_time_s.size
+    errors = np.broadcast_to(np.asarray(time_error_s, float), (len(directions),))
     total = np.zeros((cells, frames), np.float32)
-    level = np.zeros((cells, frames), np.float32)
-    heard = np.zeros((cells, frames), np.float32)
     for k, direction in enumerate(directions):
-        hop = float(direction.time_s[1] - direction.time_s[0])
-        stride = _stride(source_time_s, hop)
+        back_azimuth = geometry.back_azimuth_rad[k]
         for phase in settings.phases:
+            travel = geometry.travel_time_s[phase][k]
             until = hypocentre_s_time[k] - 0.5 * float(direction.window_s.min()) if phase == "P" else np.inf
-            table = phase_table(direction, settings.slowness_spread, to_s=until)
-            rows = table_rows(direction, geometry.back_azimuth_rad[k], geometry.slowness_s_m[phase][k])
-            shift = (source_time_s[0] + geometry.travel_time_s[phase][k] - direction.time_s[0]) / hop
-            add_shifted_rows(total, table.reshape(-1, table.shape[-1]), rows, shift, stride)
-        _add_power(level, heard, direction, geometry, k, source_time_s[0], hop, stride, settings.phases)
+            error = float(np.hypot(settings.time_spread * np.median(travel), errors[k]))
+            slowness = geometry.slowness_s_m[phase][k]
+            table, row = look_up_rows(direction, back_azimuth, slowness, settings.slowness_spread, error, until)
+            add_shifted_rows(total, table, row, (start + travel - direction.time_s[0]) / hop, stride)
         if progress is not None:
             progress(k + 1, len(directions))
     probability, nothing = location_probability(total, settings.source_share)
-    with np.errstate(invalid="ignore"):
-        power = np.where(heard > 0, np.exp(level / np.maximum(heard, 1.0)), 0.0)
-    return Stack(
-        total, probability, nothing, (probability * power).astype(np.float32), np.asarray(source_time_s, float)
-    )
+    phase = "S" if "S" in settings.phases else "P"
+    energy = np.empty_like(probability)
+    path = np.maximum(np.hypot(geometry.distance_m, KM * grid.depth_km), KM)
+    _radiated(energy, directions, path, geometry.travel_time_s[phase], start, hop, stride)
+    for block in _blocks(energy.shape):
+        energy[block] *= probability[block]
+    return Stack(total, probability, nothing, energy, np.asarray(source_time_s, float))
 
 
-def _stride(source_time_s: Array, hop_s: float) -> int:
+def _checked(
+    directions: Sequence[SiteDirection], grid: Grid, geometry: Geometry, arrivals: Sequence[float], source_time_s: Array
+) -> tuple[float, float, int]:
+    """Return time of the first frame, hop, and hops from frame to frame."""
+    shape = (len(directions), grid.longitude_deg.size)
+    if not directions or geometry.distance_m.shape != shape or len(arrivals) != len(directions):
+        raise InputError(
+            f"{len(directions)} directions, {len(arrivals)} arrivals and a geometry of {geometry.distance_m.shape[0]} sites by "
+            f"{geometry.distance_m.shape[1]} cells do not fit a grid of {shape[1]} cells"
+        )
+    if source_time_s.size < 2:
+        raise InputError("a stack needs two frames at least")
+    if shape[1] * source_time_s.size > MOST_VALUES:
+        raise InputError(
+            f"{shape[1]} cells by {source_time_s.size} frames are more than {MOST_VALUES} values; give a larger spacing, "
+            "a smaller map or frames further apart"
+        )
+    for direction in directions:
+        if direction.time_s.size < 2:
+            raise InputError(f"site {direction.code}: fewer than two windows; the record is too short to be stacked")
+    hops = [float(d.time_s[1] - d.time_s[0]) for d in directions]
+    if not np.allclose(hops, hops[0], rtol=1e-6):
+        raise InputError("all sites' directions must have the same hop to be stacked")
     step = float(source_time_s[1] - source_time_s[0])
-    stride = round(step / hop_s)
-    if stride < 1 or abs(stride * hop_s - step) > 1e-6:
-        raise InputError(f"frames every {step:g} s do not fit directions every {hop_s:g} s; a whole multiple is needed")
-    return stride
+    stride = round(step / hops[0])
+    if stride < 1 or abs(stride * hops[0] - step) > 1e-6:
+        raise InputError(
+            f"frames every {step:g} s do not fit directions every {hops[0]:g} s; a whole multiple is needed"
+        )
+    return float(source_time_s[0]), hops[0], stride
+
+
+def _blocks(shape: tuple[int, int]) -> list[slice]:
+    rows = max(1, _BLOCK_VALUES // shape[1])
+    return [slice(start, start + rows) for start in range(0, shape[0], rows)]
 
 
 def location_probability(log_ratio: Table, source_share: float) -> tuple[Table, Array]:
     """Return the probability of each cell, shape (C, F), and of no source, shape (F,), frame by frame."""
     largest = np.maximum(log_ratio.max(axis=0), 0.0)
-    weight = np.exp(log_ratio - largest)
-    source = source_share * weight.mean(axis=0, dtype=float)
+    probability = np.empty_like(log_ratio)
+    total = np.zeros(log_ratio.shape[1])
+    for block in _blocks(log_ratio.shape):
+        np.exp(log_ratio[block] - largest, out=probability[block])
+        total += probability[block].sum(axis=0, dtype=float)
+    source = source_share * total / log_ratio.shape[0]
     none = (1.0 - source_share) * np.exp(-largest.astype(float))
-    probability = weight * (source_share / log_ratio.shape[0] / (source + none)).astype(np.float32)
+    factor = (source_share / log_ratio.shape[0] / (source + none)).astype(np.float32)
+    for block in _blocks(log_ratio.shape):
+        probability[block] *= factor
     return probability, none / (source + none)
 
 
-def _add_power(
-    level: Table,
-    heard: Table,
-    direction: SiteDirection,
-    geometry: Geometry,
-    site: int,
+def _radiated(
+    out: Table,
+    directions: Sequence[SiteDirection],
+    path_m: Array,
+    travel_s: Array,
     start_s: float,
-    hop: float,
+    hop_s: float,
     stride: int,
-    phases: tuple[str, ...],
 ) -> None:
-    """Add the log of spreading-corrected power; every site counts relative to its own mean, so that amplification drops out."""
-    phase = "S" if "S" in phases else "P"
-    power = direction.power
-    if not (power > 0).any():
+    """Fill in the power that each cell would have radiated, from every site relative to its own mean.
+
+    Body-wave power falls with the square of the path. Relative to its means over time and over the cells, what a site's
+    ground amplifies drops out.
+    """
+    alive = [k for k, d in enumerate(directions) if (d.power > 0).any()]
+    if not alive:
+        out[:] = 0.0
         return
-    floor = 1e-3 * power.max()
-    row = np.log(np.maximum(power, floor))
-    row -= np.log(power[power > floor].mean())
-    table = np.ascontiguousarray(np.stack([row, np.ones_like(row)]), np.float32)
-    cells = level.shape[0]
-    shift = (start_s + geometry.travel_time_s[phase][site] - direction.time_s[0]) / hop
-    spreading = np.log(np.maximum(geometry.distance_m[site], 1e3) ** 2)
-    heard_before = heard.copy()
-    add_shifted_rows(level, table, np.zeros(cells, np.int64), shift, stride)
-    add_shifted_rows(heard, table, np.ones(cells, np.int64), shift, stride)
-    # Body-wave energy falls with the square of distance; relative to the mean over cells only the pattern counts.
-    level += (spreading - spreading.mean()).astype(np.float32)[:, None] * (heard - heard_before)
+    length = np.array([directions[k].time_s.size for k in alive])
+    level = np.zeros((len(alive), int(length.max())))
+    for row, k in enumerate(alive):
+        power = directions[k].power
+        floor = _FLOOR * power.max()
+        level[row, : power.size] = np.log(np.maximum(power, floor)) - np.log(power[power > floor].mean())
+    begin = np.array([directions[k].time_s[0] for k in alive])[:, None]
+    usual = np.array([2 * np.log(path_m[k]).mean() for k in alive])[:, None]
+    for block in _blocks(out.shape):
+        shift = (start_s + travel_s[alive, block] - begin) / hop_s
+        middle_mean_power(out[block], level, length, 2 * np.log(path_m[alive, block]) - usual, shift, stride)
