@@ -11,8 +11,11 @@ Array = NDArray[np.float64]
 PAIRS = np.array([(i, j) for i in range(6) for j in range(i, 6)])
 """Row and column of the 21 entries in which a symmetric 6x6 covariance is kept."""
 
-_SPREAD = 1.0 / 6.0
-"""Width of a band's cosine edges as a share of its limits."""
+_WIDTH = 2.0 / 3.0
+"""Width of a band's edges as a share of its corners: wide and smooth, so that no onset rings far ahead of itself."""
+
+REACH = _WIDTH * 2.0 / np.pi * np.arcsin(0.5**0.25)
+"""The part of an edge that lies outside its half-power corner, as a share of the corner."""
 
 
 def band_signal(data: Array, step_s: float, band_hz: tuple[float, float]) -> NDArray[np.complex128]:
@@ -25,16 +28,16 @@ def band_signal(data: Array, step_s: float, band_hz: tuple[float, float]) -> NDA
     step_s
         Sampling interval in s.
     band_hz
-        Half-power corners; the edges reach a sixth beyond them on either side.
+        Half-power corners; the edges reach `REACH` of them beyond on either side.
     """
     samples = data.shape[-1]
     low, high = band_hz
     # Padding keeps the filter's own length from carrying the end of the record to its start.
     length = fft.next_fast_len(samples + int(np.ceil(6.0 / (low * step_s))))
     frequency = fft.fftfreq(length, step_s)
-    rise = np.clip((frequency - low * (1 - _SPREAD)) / (2 * _SPREAD * low), 0, 1)
-    fall = np.clip((high * (1 + _SPREAD) - frequency) / (2 * _SPREAD * high), 0, 1)
-    gain = 2.0 * np.sin(0.5 * np.pi * rise) * np.sin(0.5 * np.pi * fall)
+    rise = np.clip((frequency - low * (1 - REACH)) / (_WIDTH * low), 0, 1)
+    fall = np.clip((high * (1 + REACH) - frequency) / (_WIDTH * high), 0, 1)
+    gain = 2.0 * (np.sin(0.5 * np.pi * rise) * np.sin(0.5 * np.pi * fall)) ** 2
     return fft.ifft(fft.fft(data, length, axis=-1) * gain, axis=-1)[..., :samples]
 
 

@@ -11,6 +11,7 @@ from scipy import ndimage
 
 from rupture.conventions import ACC_E, ACC_N, ACC_Z, ROT_E, ROT_N, ROT_Z, slowness_vector
 from rupture.direction.covariance import (
+    REACH,
     band_signal,
     entry,
     independent_samples,
@@ -18,7 +19,13 @@ from rupture.direction.covariance import (
     sliding_covariances,
 )
 from rupture.direction.likelihood import horizontal_forms, vertical_form
-from rupture.direction.posterior import fill_posterior, plane_wave_equation, polarisation_equation, turn_weights
+from rupture.direction.posterior import (
+    as_before,
+    fill_posterior,
+    plane_wave_equation,
+    polarisation_equation,
+    turn_weights,
+)
 from rupture.errors import DataError, InputError
 from rupture.site import Site
 
@@ -163,7 +170,7 @@ def estimate_direction(site: Site, noise_window_s: tuple[float, float], settings
     windows = [settings.window_s or max(4.0, 1.5 / low) for low, _ in bands]
     nyquist = 0.5 / site.step_s
     for low, high in bands:
-        if high * 7 / 6 > nyquist:
+        if high * (1 + REACH) > nyquist:
             raise DataError(
                 f"site {site.code}: band {low:g} to {high:g} Hz reaches above its Nyquist frequency {nyquist:g} Hz"
             )
@@ -198,22 +205,27 @@ def estimate_direction(site: Site, noise_window_s: tuple[float, float], settings
         degrees = independent_samples(band, window_s)
         error = float(np.hypot(settings.model_error_share, site.rotation_error_share))
         equations = []
+        unchanged = np.zeros(time.size)
         if horizontal:
             # Scales of their own: waves of one back-azimuth and several slownesses in a window spoil the first alone.
             equations += [
                 plane_wave_equation(form, (ROT_E, ROT_N), covariance, noise, error)
                 for form in horizontal_forms(grid[0].ravel(), grid[1].ravel())
             ]
+            unchanged += as_before((ROT_E, ROT_N), (ACC_Z,), covariance, noise)
         if vertical:
             equations.append(plane_wave_equation(vertical_form(trial), (ROT_Z,), covariance, noise, error))
+            unchanged += as_before((ROT_Z,), (ACC_E, ACC_N), covariance, noise)
         if vertical and not horizontal:
             equations.append(
                 polarisation_equation(theta, slowness.size, covariance, settings.polarisation_ratio, degrees)
             )
+            unchanged += equations[-1].null
         fill_posterior(
             ratios[b],
             coherent[b],
             equations,
+            unchanged,
             degrees,
             settings.stray_share,
             turn_weights(site.azimuth_error_rad, theta.size),

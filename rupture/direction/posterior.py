@@ -10,11 +10,14 @@ from numpy.typing import NDArray
 from scipy import special
 
 from rupture.conventions import ACC_E, ACC_N, ACC_Z
-from rupture.direction.covariance import entry
+from rupture.direction.covariance import PAIRS, entry
 from rupture.direction.kernels import BLOCK, posterior_log_ratio
 from rupture.direction.likelihood import radial_form
 
 Array = NDArray[np.float64]
+
+MOST_NOISE = 4.0
+"""The noise's power in a window may grow to so many times its mean, which is 6 dB, and still be noise."""
 
 _TINY = np.finfo(float).tiny ** 0.25
 """Power that is as good as none; its fourth power still is a number."""
@@ -48,6 +51,42 @@ class Equation:
     floor: Array
     unit: Array
     null: Array
+
+
+def as_before(rows: tuple[int, ...], given: tuple[int, ...], covariance: Array, noise: Array) -> Array:
+    """Return the log-likelihood, times -2, for one independent sample, that nothing but the noise before goes on.
+
+    Noise holds waves too (microseisms): its rotation follows its translation as its own covariance says, by linear
+    regression. What is left has the power that it had before, up to four times that: noise comes and goes.
+
+    Parameters
+    ----------
+    rows, given
+        Rotation components and the translation components that they follow.
+    covariance, noise
+        Shapes (21, T) and (21,).
+
+    Returns
+    -------
+    value
+        Shape (T,), against the same unit as the `plane_wave_equation` of these rows has.
+    """
+    matrix = np.empty((6, 6))
+    matrix[PAIRS[:, 0], PAIRS[:, 1]] = matrix[PAIRS[:, 1], PAIRS[:, 0]] = noise
+    follows = matrix[np.ix_(rows, given)] @ np.linalg.pinv(matrix[np.ix_(given, given)], hermitian=True)
+    power, axes = np.linalg.eigh(matrix[np.ix_(rows, rows)] - follows @ matrix[np.ix_(given, rows)])
+    unit = np.maximum(np.mean([covariance[entry(k, k)] for k in rows], axis=0), _TINY)
+    total = np.zeros(covariance.shape[1])
+    members = (*rows, *given)
+    for expected, axis in zip(np.maximum(power, _TINY), axes.T, strict=True):
+        share = np.concatenate([axis, -axis @ follows])
+        left = np.zeros_like(total)
+        for i, a in enumerate(members):
+            for j, b in enumerate(members):
+                left += share[i] * share[j] * covariance[entry(a, b)]
+        scale = np.clip(left / expected, 1.0, MOST_NOISE)
+        total += np.log(scale * expected / unit) + left / (scale * expected) - 1.0
+    return total
 
 
 def plane_wave_equation(form: Array, rows: tuple[int, ...], covariance: Array, noise: Array, error: float) -> Equation:
@@ -107,6 +146,7 @@ def fill_posterior(
     log_ratio: NDArray[np.float32],
     coherent: Array,
     equations: Sequence[Equation],
+    unchanged: Array,
     degrees: float,
     stray_share: float,
     blur: Array,
@@ -119,6 +159,8 @@ def fill_posterior(
         Filled.
     equations
         What the wave fulfils.
+    unchanged
+        Log-likelihood for one independent sample, times -2, that the noise before goes on, shape (T,).
     degrees
         Independent samples in a window.
     stray_share
@@ -139,7 +181,8 @@ def fill_posterior(
         floor[n, :windows], unit[n, :windows] = equation.floor, equation.unit
     noise = np.stack([e.noise for e in equations])
     offset = np.zeros(whole)
-    offset[:windows] = -0.5 * degrees * np.sum([e.null for e in equations], axis=0)
+    unexplained = np.sum([e.null for e in equations], axis=0)
+    offset[:windows] = np.logaddexp(-0.5 * degrees * unexplained, -0.5 * degrees * unchanged) - np.log(2.0)
     posterior_log_ratio(
         log_ratio, coherent, form.reshape(-1, angles, speeds, most), covariance, noise.reshape(-1, angles, speeds),
         floor, unit, degrees, offset, stray_share, blur,

@@ -20,6 +20,9 @@ _VP_OVER_VS = np.sqrt(3.0)
 _SPARE = 0.8
 """A subset left by gaps is used where its own limit is at least this share of the whole array's."""
 
+_MOST_WEIGHT = 3.0
+"""Weights of a sum of one whose magnitudes sum up to more than this would rather amplify noise than mend a bias."""
+
 
 @dataclass(frozen=True)
 class ArrayGeometry:
@@ -73,11 +76,57 @@ def plane_weights(places_m: Array) -> Array:
     return np.linalg.pinv(np.column_stack([np.ones(len(places_m)), places_m]))
 
 
+def value_weights(places_m: Array) -> Array:
+    """Return the weights of the motion at the centre that a wave's curvature lowers as it lowers the plane's slope.
+
+    Over a wavelength a plane's slope falls by the sensors' fourth moment, its value by their second, so that slope over
+    value, which is slowness, comes out too large. Weights nearest to those of the plane are taken whose second moment,
+    in the mean over directions, is the one that makes both fall alike to second order of the wavenumber. Where the
+    sensors leave no choice (all at one distance from the centre) they are the plane's own.
+
+    Parameters
+    ----------
+    places_m
+        East and north of the sensors about their centre, shape (sensors, 2).
+
+    Returns
+    -------
+    ndarray
+        Shape (sensors,), sum one.
+
+    Raises
+    ------
+    UnusableError
+        As `plane_weights`.
+
+    Examples
+    --------
+    A cross with a sensor in the middle, which takes more than a fifth:
+
+    >>> cross = np.array([[0.0, 0.0], [1, 0], [-1, 0], [0, 1], [0, -1]])
+    >>> value_weights(cross).round(3).tolist()
+    [0.5, 0.125, 0.125, 0.125, 0.125]
+    """
+    plane = plane_weights(places_m)
+    size = np.abs(places_m).max()
+    angles = np.arange(12) * np.pi / 12
+    along = np.stack([np.sin(angles), np.cos(angles)])
+    place = places_m @ along
+    slope = np.einsum("kd,km->md", along, plane[1:])
+    moment = float((slope * place**3).sum(axis=0).mean()) / 3.0
+    rules = np.stack([np.ones(len(places_m)), *(places_m.T / size), (places_m**2).sum(axis=1) / (2.0 * size**2)])
+    wanted = np.array([1.0, 0.0, 0.0, moment / size**2])
+    if np.linalg.matrix_rank(rules, rtol=1e-3) < len(rules):
+        return np.asarray(plane[0])
+    weights = plane[0] + np.linalg.pinv(rules) @ (wanted - rules @ plane[0])
+    return np.asarray(weights if np.abs(weights).sum() < _MOST_WEIGHT else plane[0])
+
+
 def strain_error(places_m: Array, wavenumber_rad_m: Array, directions: int = 36) -> Array:
     """Return the largest relative error of gradient over mean motion that a plane wave's curvature brings.
 
     The estimator compares array rotation with array translation, so what counts is the slope of the plane
-    over its value at the centre, not the slope alone: both are lowered by the averaging.
+    over the value at the centre, not the slope alone: both are lowered by the averaging.
 
     Parameters
     ----------
@@ -97,7 +146,7 @@ def strain_error(places_m: Array, wavenumber_rad_m: Array, directions: int = 36)
     theta = np.arange(directions) * np.pi / directions
     along = np.stack([np.sin(theta), np.cos(theta)])
     phase = np.exp(-1j * wavenumber_rad_m[:, None, None] * (places_m @ along)[None])
-    value, slope = phase_sum(weights[0], phase), np.stack([phase_sum(w, phase) for w in weights[1:]])
+    value, slope = phase_sum(value_weights(places_m), phase), np.stack([phase_sum(w, phase) for w in weights[1:]])
     true = -1j * wavenumber_rad_m[:, None] * along[:, None, :] * value
     with np.errstate(divide="ignore", invalid="ignore"):
         error = np.linalg.norm(slope - true, axis=0) / np.linalg.norm(true, axis=0)
@@ -232,11 +281,13 @@ def array_motion(
 
 
 def _plane_value(places_m: Array, has: Bool, motion: Array, here: NDArray[np.intp], data: Array, good: Bool) -> None:
+    if not has.any():
+        return
     try:
-        weights = plane_weights(places_m[has, :2])
+        weights = value_weights(places_m[has, :2] - places_m[has, :2].mean(axis=0))
     except UnusableError:
         return
-    data[here] = weights[0] @ motion[np.ix_(has, here)]
+    data[here] = weights @ motion[np.ix_(has, here)]
     good[here] = True
 
 

@@ -44,14 +44,17 @@ def noise_power(snr):
 def samples():
     """Independent real samples that a window holds, from what filter and taper do to white noise.
 
-    Twice the inverse of the sum over pairs of times of w_i w_j |correlation|^2 (Welch 1967 for tapers): the band has
-    cosine edges of a sixth of each corner, half power at the corner, and the taper is a Hann window on products.
+    Twice the inverse of the sum over pairs of times of w_i w_j |correlation|^2 (Welch 1967 for tapers): the band's
+    edges are cosine squared in amplitude, two thirds of each corner wide, half power at the corner, and the taper is a
+    Hann window on products.
     """
     frequency = np.linspace(0.0, 2.0, 4001)
     low, high = BAND_HZ
-    rise = np.clip((frequency - low * 5 / 6) / (low / 3), 0, 1)
-    fall = np.clip((high * 7 / 6 - frequency) / (high / 3), 0, 1)
-    power = (np.sin(np.pi / 2 * rise) * np.sin(np.pi / 2 * fall)) ** 2
+    # sin^4 is a half here, which is where the corner lies in an edge that runs from 0 to 1.
+    corner = 2 / np.pi * np.arcsin(0.5**0.25)
+    rise = np.clip((frequency - low) / (2 / 3 * low) + corner, 0, 1)
+    fall = np.clip((high - frequency) / (2 / 3 * high) + corner, 0, 1)
+    power = (np.sin(np.pi / 2 * rise) * np.sin(np.pi / 2 * fall)) ** 4
     lag = STEP_S * np.arange(round(WINDOW_S / STEP_S))
     correlation = np.abs(np.exp(2j * np.pi * np.outer(lag, frequency)) @ power) / power.sum()
     weight = np.sin(np.pi * np.arange(lag.size) / lag.size) ** 2

@@ -8,7 +8,13 @@ from scipy.special import logsumexp
 from rupture.conventions import slowness_vector
 from rupture.direction.covariance import PAIRS, band_signal, mean_covariance, sliding_covariances
 from rupture.direction.likelihood import horizontal_forms, vertical_form
-from rupture.direction.posterior import fill_posterior, plane_wave_equation, polarisation_equation, turn_weights
+from rupture.direction.posterior import (
+    as_before,
+    fill_posterior,
+    plane_wave_equation,
+    polarisation_equation,
+    turn_weights,
+)
 
 ANGLES, SPEEDS, WINDOWS = 36, 7, 53
 DEGREES, ERROR, STRAY, KAPPA = 9.0, 0.1, 0.05, 2.0
@@ -25,7 +31,11 @@ def windows():
         rot = np.array([-p[1] * a[2], p[0] * a[2], -(p[0] * a[1] - p[1] * a[0]) / 2]) * 3500
         x = np.vstack([a, rot]) + 0.3 * rng.standard_normal((6, 10))
         packed.append((x @ x.T / 10)[PAIRS[:, 0], PAIRS[:, 1]])
-    noise = (np.eye(6) * 0.09)[PAIRS[:, 0], PAIRS[:, 1]]
+    # The noise holds a wave of its own, so that its rotation follows its translation.
+    q = slowness_vector(4.0, 1 / 3000) * 3500
+    a = 0.2 * np.eye(3)
+    waves = np.vstack([a, -q[1] * a[2], q[0] * a[2], -(q[0] * a[1] - q[1] * a[0]) / 2])
+    noise = (np.eye(6) * 0.09 + waves @ waves.T)[PAIRS[:, 0], PAIRS[:, 1]]
     theta = 2 * np.pi * np.arange(ANGLES) / ANGLES
     # Slowness in units of 1/3500 s/m, as the rotation above.
     grid = np.meshgrid(theta, np.geomspace(0.3, 3, SPEEDS), indexing="ij")
@@ -44,6 +54,22 @@ def student(residual, expected):
     return np.log(max(residual, expected)) + min(residual / expected, 1.0) - 1.0
 
 
+def as_noise(background, c, rows, given):
+    """The same when rotation follows translation as in the noise and what is left has the noise's power, to four times."""
+    rows, given = list(rows), list(given)
+    follows = np.linalg.solve(background[np.ix_(given, given)], background[np.ix_(given, rows)]).T
+    turn = np.zeros((len(rows), 6))
+    turn[:, rows], turn[:, given] = np.eye(len(rows)), -follows
+    expected, axes = np.linalg.eigh(turn @ background @ turn.T)
+    left = np.diag(axes.T @ turn @ c @ turn.T @ axes)
+    total = 0.0
+    for r, x in zip(left, expected, strict=True):
+        # The least of log(s x) + r / (s x) over 1 <= s <= 4 lies at an end or where its slope is nothing, at s = r / x.
+        scales = np.array([1.0, 4.0, *([r / x] if 1.0 < r / x < 4.0 else [])])
+        total += np.min(np.log(scales * x) + r / (scales * x) - 1.0)
+    return total
+
+
 def twin(theta, trial, packed, noise, names, blur_rad=0.0):
     out = np.empty((ANGLES * SPEEDS, packed.shape[1]))
     coherent = np.empty(packed.shape[1])
@@ -51,27 +77,32 @@ def twin(theta, trial, packed, noise, names, blur_rad=0.0):
     for t in range(packed.shape[1]):
         c = unpack(packed[:, t])
         gain = np.zeros(len(out))
+        unexplained = unchanged = 0.0
+        if "horizontal" in names:
+            total = (c[3, 3] + c[4, 4]) / 2
+            unexplained += 2 * student(total, (background[3, 3] + background[4, 4]) / 2 + ERROR**2 * total)
+            unchanged += as_noise(background, c, (3, 4), (2,))
+        if "vertical" in names:
+            unexplained += student(c[5, 5], background[5, 5] + ERROR**2 * c[5, 5])
+            unchanged += as_noise(background, c, (5,), (0, 1))
         for j, (east, north) in enumerate(trial.T):
             if "horizontal" in names:
                 rows = np.array([[0, 0, north, 1, 0, 0], [0, 0, -east, 0, 1, 0]])
-                total = (c[3, 3] + c[4, 4]) / 2
                 across = np.array([-north, east]) / np.hypot(east, north)
                 axes = np.array([across, [across[1], -across[0]]]) @ rows
                 expected = np.diag(axes @ background @ axes.T) + ERROR**2 * total
-                alone = (background[3, 3] + background[4, 4]) / 2 + ERROR**2 * total
                 left = np.diag(axes @ c @ axes.T)
-                cost = sum(student(r, x) for r, x in zip(left, expected, strict=True))
-                gain[j] -= 0.5 * DEGREES * (cost - 2 * student(total, alone))
+                gain[j] -= 0.5 * DEGREES * sum(student(r, x) for r, x in zip(left, expected, strict=True))
             if "vertical" in names:
                 row = np.array([-north / 2, east / 2, 0, 0, 0, 1])
                 expected = row @ background @ row + ERROR**2 * c[5, 5]
-                alone = background[5, 5] + ERROR**2 * c[5, 5]
-                gain[j] -= 0.5 * DEGREES * (student(row @ c @ row, expected) - student(c[5, 5], alone))
+                gain[j] -= 0.5 * DEGREES * student(row @ c @ row, expected)
         if "polarisation" in names:
             limit = KAPPA**2 * c[2, 2] + 0.05 * (c[0, 0] + c[1, 1])
             along = [np.array([np.sin(a), np.cos(a)]) @ c[:2, :2] @ np.array([np.sin(a), np.cos(a)]) for a in theta]
             rule = np.array([-0.5 * DEGREES * student(m / limit, 1.0) for m in along])
             gain += np.repeat(rule - logsumexp(rule) + np.log(ANGLES), SPEEDS)
+        gain -= np.logaddexp(-0.5 * DEGREES * unexplained, -0.5 * DEGREES * unchanged) - np.log(2)
         evidence = np.exp(logsumexp(gain) - np.log(gain.size))
         coherent[t] = evidence / (1 + evidence)
         believed = coherent[t] * (1 - STRAY)
@@ -92,8 +123,20 @@ def compiled(theta, trial, packed, noise, names, blur_rad=0.0):
         "polarisation": lambda: [polarisation_equation(theta, SPEEDS, packed, KAPPA, DEGREES)],
     }
     out, coherent = np.zeros((ANGLES, SPEEDS, packed.shape[1]), np.float32), np.zeros(packed.shape[1])
+    equations = {name: build[name]() for name in names}
+    before = {
+        "horizontal": lambda: as_before((3, 4), (2,), packed, noise),
+        "vertical": lambda: as_before((5,), (0, 1), packed, noise),
+        "polarisation": lambda: equations["polarisation"][0].null,
+    }
     fill_posterior(
-        out, coherent, [e for n in names for e in build[n]()], DEGREES, STRAY, turn_weights(blur_rad, ANGLES)
+        out,
+        coherent,
+        [e for name in names for e in equations[name]],
+        np.sum([before[name]() for name in names], axis=0),
+        DEGREES,
+        STRAY,
+        turn_weights(blur_rad, ANGLES),
     )
     return out, coherent
 

@@ -15,6 +15,7 @@ REAL = Path(__file__).resolve().parents[3] / "shared" / "real"
 NAME = "yellowknife_2012-08-14"
 P_S = 493.0
 QUIET_S = (60.0, 478.0)
+WINDOW_S, LOW_HZ = 5.0, 0.3
 
 pytestmark = pytest.mark.skipif(
     not REAL.is_dir(), reason="the folder with real records does not lie beside the checkout"
@@ -28,7 +29,7 @@ def found():
     sites = read_sites([REAL / f"{NAME}.mseed"], [REAL / f"{NAME}_stations.xml"], event, settings).sites
     (site,) = [s for s in sites if s.present[3]]
     wish = DirectionSettings(
-        bands_hz=((0.3, 1.2),), window_s=5.0, slowest_km_s=2.0, fastest_km_s=40.0, slowness_count=40
+        bands_hz=((LOW_HZ, 1.2),), window_s=WINDOW_S, slowest_km_s=2.0, fastest_km_s=40.0, slowness_count=40
     )
     return estimate_direction(site, QUIET_S, wish)
 
@@ -39,21 +40,18 @@ def test_first_eight_seconds_of_p(found):
     assert (found.coherent[0, use] > 0.95).all()
     np.testing.assert_allclose(np.degrees(answer.back_azimuth_best_rad[0, use]), 305.7, atol=4.0)
     slowness = 1e3 / answer.apparent_velocity_best_m_s[0, use]
-    assert np.median(slowness) == pytest.approx(0.0646, rel=0.15)
+    np.testing.assert_allclose(slowness, 0.0646, rtol=0.15)
     low, high = (np.degrees(getattr(answer, f"back_azimuth_{p}_rad")[0, use]) for p in ("p05", "p95"))
     assert ((low < 305.7) & (high > 305.7)).mean() >= 0.9
 
 
 def test_no_confident_direction_before_p(found):
-    """Zero-phase filter and window reach some 12 s ahead of the onset; microseisms are waves too, but rare and slow."""
-    before = (found.time_s > QUIET_S[0]) & (found.time_s < QUIET_S[1])
-    sure = found.coherent[0, before] > 0.95
-    print(f"share of quiet windows taken for a wave: {sure.mean():.3f}")
+    """To within half a window and one and a half of the longest period, which a zero-phase filter reaches ahead."""
+    before = (found.time_s > QUIET_S[0]) & (found.time_s < P_S - 0.5 * WINDOW_S - 1.5 / LOW_HZ)
+    assert before.sum() > 800
+    sure = found.coherent[0, before]
+    print(f"largest probability of a coherent wave before P: {sure.max():.2f}")
+    assert sure.max() < 0.9
     peak = np.exp(found.log_ratio[..., before]).mean(axis=1).max(axis=0)
-    print(f"median peak of the density over back-azimuth: {np.median(peak):.2f} times even")
-    assert sure.mean() < 0.1
-    assert np.median(peak) < 5
-    answer = intervals(found)
-    bearing = np.degrees(answer.back_azimuth_best_rad[0, before])
-    slowness = 1e3 / answer.apparent_velocity_best_m_s[0, before]
-    assert not (sure & (np.abs(bearing - 305.7) < 10) & (slowness < 0.09)).any()
+    print(f"largest peak of the density over back-azimuth: {peak.max():.1f} times even")
+    assert np.median(peak) < 2

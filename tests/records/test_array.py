@@ -9,6 +9,7 @@ from rupture.records.array import (
     plane_weights,
     rotation_weights,
     strain_error,
+    value_weights,
 )
 from rupture.records.report import UnusableError
 
@@ -57,18 +58,38 @@ def test_stated_error_is_the_error_of_a_monochromatic_wave(places, share):
     for theta in np.linspace(0, np.pi, 37):
         ray = k * np.array([np.sin(theta), np.cos(theta)])
         z = np.cos(2 * np.pi * t[None] - (places @ ray)[:, None])
-        value, east, north = plane_weights(places) @ z
-        # The mean stands for the true motion, so that the true slopes are those of a wave with this mean.
+        value, (_, east, north) = value_weights(places) @ z, plane_weights(places) @ z
+        # The value stands for the true motion, so that the true slopes are those of a wave with this value.
         phasor = 2 * np.mean(value * np.exp(-2j * np.pi * t))
         slopes = [2 * np.mean(s * np.exp(-2j * np.pi * t)) for s in (east, north)]
         worst = max(worst, np.linalg.norm(slopes + 1j * ray * phasor) / np.linalg.norm(ray * phasor))
     assert worst == pytest.approx(share, rel=0.06)
 
 
-def test_limit_of_a_cross_is_the_published_quarter_of_a_wavelength():
+def test_slope_of_a_cross_has_the_published_limit():
     """Spudich & Fletcher (2008): aperture under a quarter of the wavelength for 90 % (read in ObsPy's docstring)."""
+    wavelength = 4 * ArrayGeometry(flat(CROSS)).aperture_m
+    k = 2 * np.pi / wavelength
+    slope = plane_weights(CROSS)[1] @ np.exp(-1j * k * CROSS[:, 0])
+    assert abs(slope / (-1j * k) - 1) == pytest.approx(0.1, abs=0.01)
+
+
+def test_value_that_falls_as_the_slope_does_carries_a_cross_further():
+    """Slope over the plain mean is off by twice as much and more, and always to the slow side."""
     k = highest_wavenumber(CROSS, 0.1)
-    assert ArrayGeometry(flat(CROSS)).aperture_m * k / (2 * np.pi) == pytest.approx(0.25, abs=0.04)
+    mean = np.abs(strain_error(CROSS, np.array([k]))[0])
+    plain = []
+    for theta in np.radians([0, 45]):
+        phase = np.exp(-1j * k * CROSS @ [np.sin(theta), np.cos(theta)])
+        value, east, north = plane_weights(CROSS) @ phase
+        plain.append(np.hypot(abs(east), abs(north)) / (k * abs(value)) - 1)
+    assert min(plain) > 0
+    assert max(plain) > 2 * mean
+
+
+def test_value_of_sensors_on_a_circle_is_their_mean():
+    angles = np.radians([0.0, 120.0, 240.0])
+    np.testing.assert_allclose(value_weights(np.column_stack([np.sin(angles), np.cos(angles)])), 1 / 3, atol=1e-9)
 
 
 def test_error_grows_with_the_square_of_the_wavenumber():
