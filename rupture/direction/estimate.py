@@ -51,7 +51,8 @@ class DirectionSettings:
     slowness_count
         How many trial slownesses, equally spaced in their logarithm.
     model_error_share
-        Error amplitude of the plane-wave relations as a share of the rotation's amplitude.
+        Error amplitude of the plane-wave relations as a share of the rotation's amplitude; twice that where the
+        vertical rotation is alone.
     polarisation_ratio
         Horizontal motion along the ray is expected to stay below this ratio to the vertical motion; used only
         where there is no horizontal rotation.
@@ -66,7 +67,7 @@ class DirectionSettings:
     slowest_km_s: float = 0.4
     fastest_km_s: float = 20.0
     slowness_count: int = 28
-    model_error_share: float = 0.1
+    model_error_share: float = 0.05
     polarisation_ratio: float = 2.0
     stray_share: float = 0.05
 
@@ -214,7 +215,9 @@ def estimate_direction(site: Site, noise_window_s: tuple[float, float], settings
             ]
             unchanged += as_before((ROT_E, ROT_N), (ACC_Z,), covariance, noise)
         if vertical:
-            equations.append(plane_wave_equation(vertical_form(trial), (ROT_Z,), covariance, noise, error))
+            # Alone, one relation in two unknowns cannot show by its misfit that waves of several slownesses overlap.
+            own = error if horizontal else float(np.hypot(2 * settings.model_error_share, site.rotation_error_share))
+            equations.append(plane_wave_equation(vertical_form(trial), (ROT_Z,), covariance, noise, own))
             unchanged += as_before((ROT_Z,), (ACC_E, ACC_N), covariance, noise)
         if vertical and not horizontal:
             equations.append(
