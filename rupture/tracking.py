@@ -11,6 +11,7 @@ from numpy.typing import NDArray
 
 from rupture import datasets
 from rupture.conventions import KM
+from rupture.cross_checks import directivity_summary, resampling_summary
 from rupture.direction import SiteDirection
 from rupture.errors import DataError
 from rupture.front import (
@@ -77,7 +78,12 @@ def run_track(job: Job, progress: Progress) -> Result:
 
         with progress.stage("null tests") as report:
             reliability = run_null_tests(job, inputs, tracked, prior, report)
-    return label(job, inputs, tracked, refused, reliability, progress, energy)
+    with progress.stage("resampling") as report:
+        resampling = resampling_summary(job, inputs, tracked, prior, report)
+    with progress.stage("durations"):
+        durations = directivity_summary(inputs, tracked, prior)
+    checks = {"resampling": resampling, "directivity": durations}
+    return label(job, inputs, tracked, refused, reliability, checks, progress, energy)
 
 
 def _where(job: Job, inputs: Inputs) -> tuple[Grid, LinePrior]:
@@ -180,6 +186,7 @@ def label(
     tracked: Tracked,
     refused: dict[str, str],
     reliability: dict[str, Any] | None,
+    checks: dict[str, Any],
     progress: Progress,
     energy: EnergyStage | None = None,
 ) -> Result:
@@ -203,6 +210,7 @@ def label(
         "rupture": rupture,
         "reliability": reliability,
         "agreement": agreement(rupture, energy),
+        **checks,
         "provenance": provenance(job, progress),
     }
     return Result(

@@ -96,6 +96,7 @@ def answer_sentences(summary: Mapping[str, Any]) -> list[str]:
                 f"Second arm toward {compass(second['direction_deg']['best'])}: "
                 f"speed {interval_text(second['speed_km_s'], 'km/s', 1)}, length {interval_text(second['length_km'], 'km')}."
             )
+    sentences += _hanging_on_one_site(rupture, summary.get("resampling"))
     reliability = summary.get("reliability")
     if reliability and reliability.get("sentence"):
         sentences.append(reliability["sentence"])
@@ -103,3 +104,17 @@ def answer_sentences(summary: Mapping[str, Any]) -> list[str]:
     if agreement and agreement.get("differ"):
         sentences.append(f"Ray stack and energy inversion differ: {agreement['reason']}.")
     return sentences
+
+
+def _hanging_on_one_site(rupture: Mapping[str, Any], resampling: Mapping[str, Any] | None) -> list[str]:
+    """Say which site the direction hangs on, if leaving it out moves the direction further than its interval."""
+    direction, change = rupture.get("direction_deg"), (resampling or {}).get("direction_deg")
+    if not direction or not change or change["change_without_it"] is None:
+        return []
+    half_width = 0.5 * ((direction["p95"] - direction["p05"]) % 360)
+    if abs(change["change_without_it"]) <= half_width:
+        return []
+    return [
+        f"The direction hangs on site {change['most_decisive_site']}: without it, it turns by "
+        f"{abs(change['change_without_it']):.0f} degrees."
+    ]

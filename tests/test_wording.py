@@ -48,3 +48,15 @@ def test_reliability_and_disagreement_are_said():
         "These sites would have told.",
         "Ray stack and energy inversion differ: directions are 40 deg apart.",
     ]
+
+
+def test_a_direction_that_hangs_on_one_site_is_said():
+    rupture = {
+        "kind": "unilateral", "kind_probability": {"unilateral": 0.99}, "direction_deg": _interval(5, 358, 12),
+        "speed_km_s": _interval(2.8, 2.6, 3.0), "length_km": _interval(60, 50, 70), "duration_s": _interval(22, 20, 24),
+    }  # fmt: skip
+    without = {"most_decisive_site": "QQ.A", "change_without_it": -31.2}
+    summary = {"rupture": rupture, "sites": SITES, "resampling": {"direction_deg": without}}
+    assert answer_sentences(summary)[-1] == "The direction hangs on site QQ.A: without it, it turns by 31 degrees."
+    summary["resampling"]["direction_deg"]["change_without_it"] = 6.9
+    assert not any("hangs" in sentence for sentence in answer_sentences(summary))

@@ -50,6 +50,8 @@ class FitSettings:
         Probability from which a kind is named; below it the answer is "undetermined".
     widest_direction_deg
         A moving rupture whose 90 % interval of direction is wider than this is "undetermined".
+    resamples
+        Bootstrap samples of sites and windows that the answer is held against; 0 leaves them out.
     """
 
     particles: int = 600
@@ -62,10 +64,13 @@ class FitSettings:
     trust: float = 0.25
     kind_threshold: float = 0.8
     widest_direction_deg: float = 90.0
+    resamples: int = 20
 
     def __post_init__(self) -> None:
         if self.particles < 50 or self.moves < 1:
             raise InputError("particles must be at least 50 and moves at least 1")
+        if self.resamples < 0 or self.resamples == 1:
+            raise InputError("resamples must be 0, or 2 at least")
         if not self.hop_s > 0 or not self.slowness_spread > 0 or not self.power_sigma > 0:
             raise InputError("hop_s, slowness_spread and power_sigma must be positive")
         if not 0 < self.trust <= 1 or not self.power_share >= 0 or not 0.34 <= self.kind_threshold < 1:
