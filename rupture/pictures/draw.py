@@ -20,6 +20,7 @@ from rupture.pictures.posteriors import has_sample, posterior_figure
 from rupture.pictures.scene import Scene
 from rupture.pictures.style import Picture
 from rupture.pictures.tables import (
+    Grid,
     Table,
     along_tables,
     direction_tables,
@@ -50,7 +51,7 @@ class Sheet:
 
     name: str
     draw: Callable[..., Picture]
-    tables: Callable[[], list[Table]]
+    tables: Callable[[], Sequence[Table | Grid]]
 
 
 def sheets(result: Result, overlays: Sequence[str | Path | Overlay] = ()) -> list[Sheet]:
@@ -123,7 +124,7 @@ def draw_all(
     overlays: Sequence[str | Path | Overlay] = (),
     workers: int = 1,
 ) -> list[Path]:
-    """Draw every figure that the result has the data for, each with its data beside it as CSV, the map as KML too.
+    """Draw every figure that the result has the data for, each with its data beside it as CSV or NetCDF, the map as KML too.
 
     Parameters
     ----------
@@ -194,7 +195,8 @@ class _Job:
             picture.savefig(path)
             written.append(path)
         for table in sheet.tables():
-            written.append(table.write(self.folder / f"{sheet.name}{'_' if table.name else ''}{table.name}.csv"))  # noqa: PERF401
+            name = f"{sheet.name}_{table.name}" if table.name else sheet.name
+            written.append(table.write(self.folder / f"{name}.{table.suffix}"))
         return written
 
 

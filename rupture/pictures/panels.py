@@ -253,6 +253,7 @@ def _draw_coherence(axes: Any, scene: Scene, index: int) -> None:
         twin.set_ylim(max(positive.min(), positive.max() * 1e-6) / 2, positive.max() * 3)
         twin.set_ylabel("power (m²/s⁴)", labelpad=1.5)
         twin.minorticks_off()
+        twin.yaxis.set_major_formatter(style.power_of_ten)
 
 
 def curve_handles(scene: Scene) -> list[Any]:

@@ -33,21 +33,66 @@ class Table:
 
     name: str
     columns: Mapping[str, Column]
+    suffix = "csv"
 
     def write(self, path: Path) -> Path:
         """Write as CSV; numbers with seven digits, missing ones empty."""
         with path.open("w", newline="", encoding="utf-8") as stream:
             writer = csv.writer(stream, lineterminator="\n")
             writer.writerow(self.columns)
-            for row in zip(*self.columns.values(), strict=True):
-                writer.writerow([_text(value) for value in row])
+            writer.writerows(zip(*(_texts(column) for column in self.columns.values()), strict=True))
         return path
 
 
-def _text(value: Any) -> str:
-    if isinstance(value, float | np.floating):
-        return "" if not np.isfinite(value) else f"{value:.7g}"
-    return str(value)
+@dataclass(frozen=True)
+class Grid:
+    """Values over two uniform axes, for programs that read grids.
+
+    Attributes
+    ----------
+    name
+        What is added to the figure's file name.
+    axes
+        Two of (name, unit, values), the slow axis first.
+    value
+        Name and unit of the values.
+    values
+        Shape (slow, fast); NaN where there is none.
+    """
+
+    name: str
+    axes: tuple[tuple[str, str, NDArray[Any]], tuple[str, str, NDArray[Any]]]
+    value: tuple[str, str]
+    values: NDArray[Any]
+    suffix = "nc"
+
+    def write(self, path: Path) -> Path:
+        """Write as NetCDF (classic format, which every program reads), by the CF conventions."""
+        from scipy.io import netcdf_file
+
+        with netcdf_file(path, "w") as file:
+            file.Conventions = "CF-1.8"
+            for name, unit, values in self.axes:
+                file.createDimension(name, len(values))
+                axis = file.createVariable(name, "d", (name,))
+                axis[:] = values
+                axis.units = unit
+            variable = file.createVariable(self.value[0], "f", tuple(name for name, _, _ in self.axes))
+            variable[:] = self.values
+            variable.units = self.value[1]
+            variable._FillValue = np.float32(np.nan)
+        return path
+
+
+def _texts(column: Column) -> list[str]:
+    """Return a column's values as text; one format call for all numbers, the quickest that Python has."""
+    values = np.asarray(column)
+    if values.dtype.kind != "f":
+        return [str(value) for value in column]
+    finite = np.isfinite(values)
+    if finite.all():
+        return ("%.7g\n" * values.size % tuple(values.tolist())).split("\n")[:-1]
+    return [f"{value:.7g}" if known else "" for value, known in zip(values.tolist(), finite.tolist(), strict=True)]
 
 
 def map_tables(scene: Scene) -> list[Table]:
@@ -120,7 +165,7 @@ def _area_table(scene: Scene, total: Any) -> list[Table]:
     return [Table("areas", {"share": share, "ring": ring_number, "longitude_deg": lon, "latitude_deg": lat})]
 
 
-def direction_tables(scene: Scene, index: int) -> list[Table]:
+def direction_tables(scene: Scene, index: int) -> list[Table | Grid]:
     """Posterior image and curves of one site."""
     direction = scene.direction
     time = direction["time"].values.astype(float)
@@ -137,13 +182,13 @@ def direction_tables(scene: Scene, index: int) -> list[Table]:
     }
     for arm, curve in enumerate(predicted_curves(scene)[:, index]):
         curves[f"predicted_arm{arm + 1}_deg"] = curve
-    known = np.isfinite(share).all(axis=1)
-    image = {
-        "seconds_after_origin": np.repeat(time[known], axis.size),
-        "back_azimuth_deg": np.tile(axis, int(known.sum())),
-        "probability": share[known].ravel(),
-    }
-    return [Table("", curves), Table("posterior", image)]
+    image = Grid(
+        "posterior",
+        (("seconds_after_origin", "s", time), ("back_azimuth", "degree", axis)),
+        ("probability", "1"),
+        share,
+    )
+    return [Table("", curves), image]
 
 
 def along_tables(scene: Scene) -> list[Table]:

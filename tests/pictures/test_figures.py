@@ -6,6 +6,7 @@ from pathlib import Path
 
 import numpy as np
 import pytest
+import xarray as xr
 from matplotlib.figure import Figure
 
 from rupture import pictures
@@ -109,7 +110,7 @@ def test_draw_all_writes_figures_and_tables(build: Callable[..., Result], tmp_pa
         "map_sites.csv",
         "map.kml",
         "direction_ZX.R01.png",
-        "direction_ZX.R01_posterior.csv",
+        "direction_ZX.R01_posterior.nc",
     } <= names
     assert all(path.stat().st_size > 0 for path in written)
     assert sorted(path.name for path in (tmp_path / "figures").iterdir()) == sorted(names)
@@ -155,6 +156,12 @@ def test_tables_hold_what_is_drawn(build: Callable[..., Result], tmp_path: Path)
     assert set(areas["share"]) == {"0.68", "0.95"}
     curve = read(tmp_path / "direction_ZX.R01.csv")
     assert len(curve["seconds_after_origin"]) == result.direction.sizes["time"]
+    # NetCDF classic as GMT and GIS programs open it; xarray reads it as it is.
+    with xr.open_dataset(tmp_path / "direction_ZX.R01_posterior.nc") as grid:
+        assert grid["probability"].dims == ("seconds_after_origin", "back_azimuth")
+        np.testing.assert_allclose(grid["probability"], result.direction["probability"][0], rtol=1e-6)
+        np.testing.assert_array_equal(grid["back_azimuth"], result.direction["back_azimuth"])
+        assert grid["back_azimuth"].attrs["units"] == "degree"
     energy = read(tmp_path / "energy_ray_stack.csv")
     step = float(energy["source_time_s"][1]) - float(energy["source_time_s"][0])
     assert sum(map(float, energy["energy_share_per_s"])) * step == pytest.approx(1.0, rel=1e-4)
