@@ -4,6 +4,7 @@ from __future__ import annotations
 
 import json
 import zlib
+from collections.abc import Callable
 from dataclasses import asdict, dataclass
 from datetime import timedelta
 from pathlib import Path
@@ -94,10 +95,11 @@ def ground_motion(scenario: Scenario, progress: Progress | None = None) -> Groun
     sampling = scenario.sampling(longitude, latitude)
     check_sampling(sampling)
     sources = make_sub_events(scenario.source(), scenario.seed)
-    engine = _engine(scenario)
     with progress.stage(f"synthetic records ({scenario.engine} engine)") as report:
+        engine = _engine(scenario, sources, report)
         if scenario.coda.energy_ratio > 0:
-            engine = ScatteringEngine(engine, scenario.coda_settings(), scenario.seed, report)
+            tell = report if scenario.engine == "ray" else None
+            engine = ScatteringEngine(engine, scenario.coda_settings(), scenario.seed, tell)
         records = engine(sources, Receivers(longitude, latitude), scenario.model(), sampling)
     return GroundMotion(stations, sources, sampling, records)
 
@@ -279,9 +281,10 @@ def _site_truth(station: Station) -> dict[str, Any]:
     }
 
 
-def _engine(scenario: Scenario) -> Engine:
+def _engine(scenario: Scenario, sources: SubEvents, report: Callable[[int, int], None]) -> Engine:
     if scenario.engine == "ray":
         return ray_records
-    from rupture.synthetic.wavefield import wavefield_records
+    from rupture.synthetic.wavefield import GreensStore, stored_wavefield
 
-    return wavefield_records
+    # The same sites and Earth are asked for again and again, with other ruptures, noise and faults.
+    return stored_wavefield(GreensStore(), report, sources)

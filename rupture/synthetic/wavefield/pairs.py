@@ -77,17 +77,29 @@ class Pairs:
     onward_rad: NDArray[np.float64]
 
 
-def find_pairs(sources: SubEvents, receivers: Receivers, model: LayeredModel, plan: FrequencyPlan) -> Pairs:
+def find_pairs(
+    sources: SubEvents, receivers: Receivers, model: LayeredModel, plan: FrequencyPlan, whole: SubEvents | None = None
+) -> Pairs:
     """Return the pairs of checked sub-events and receivers.
+
+    Parameters
+    ----------
+    sources, receivers, model, plan
+        As they are.
+    whole
+        A rupture of which `sources` are a part: its nodes are taken, the same for all of its parts.
 
     Raises
     ------
     InputError
         When a receiver is right above a sub-event, or a sub-event is not below the surface or lies on an interface.
     """
-    distance, azimuth, back_azimuth = distance_azimuth(
-        sources.longitude_deg, sources.latitude_deg, receivers.longitude_deg[:, None], receivers.latitude_deg[:, None]
-    )
+    place = receivers.longitude_deg[:, None], receivers.latitude_deg[:, None]
+    distance, azimuth, back_azimuth = distance_azimuth(sources.longitude_deg, sources.latitude_deg, *place)
+    whole_distance, whole_depth = distance, np.round(sources.depth_km, 6)
+    if whole is not None:
+        whole_distance, _, _ = distance_azimuth(whole.longitude_deg, whole.latitude_deg, *place)
+        whole_depth = np.round(whole.depth_km, 6)
     if not (distance > 0.01).all():
         worst = int(np.argmin(distance.min(axis=1)))
         raise InputError(
@@ -103,7 +115,8 @@ def find_pairs(sources: SubEvents, receivers: Receivers, model: LayeredModel, pl
     for d, depth in enumerate(depth_km):
         own = level == d
         wanted = distance[:, own]
-        found = find_nodes(wanted.ravel(), model, float(depth), plan)
+        all_there = whole_distance[:, whole_depth == depth]
+        found = find_nodes(wanted.ravel(), model, float(depth), plan, all_there.ravel())
         first_row[:, own] = rows + found.first.reshape(wanted.shape)
         stencil[:, own] = found.weight.reshape(*wanted.shape, NODES)
         reduced[:, own] = found.distance_m[found.first].reshape(wanted.shape) - wanted
@@ -114,18 +127,26 @@ def find_pairs(sources: SubEvents, receivers: Receivers, model: LayeredModel, pl
     return Pairs(depth_km, tuple(nodes), level, first_row, stencil, reduced, weights, back_azimuth + np.pi)
 
 
-def find_nodes(distance_m: NDArray[np.float64], model: LayeredModel, depth_km: float, plan: FrequencyPlan) -> Nodes:
+def find_nodes(
+    distance_m: NDArray[np.float64],
+    model: LayeredModel,
+    depth_km: float,
+    plan: FrequencyPlan,
+    among_m: NDArray[np.float64] | None = None,
+) -> Nodes:
     """Return the nodes for the wanted distances (wanted,) of one depth.
 
     The distances themselves when they are few; otherwise uniform nodes at whole multiples of their step, after the few
-    distances that are too short to have nodes on both sides.
+    distances that are too short to have nodes on both sides. Where the wanted distances are some among others, nodes
+    are made for all of these.
     """
     omega = plan.omega[-1:]
     # A fine unit, so that the node step depends on model, depth and band alone.
     unit = 1e-8
     k_largest = float(wavenumber_counts(medium(model, np.array([depth_km]), omega), omega, unit)[0, 0] * unit)
     step = 2 * NODE_PHASE / k_largest
-    own, place = np.unique(distance_m, return_inverse=True)
+    own = np.unique(distance_m if among_m is None else among_m)
+    place = np.searchsorted(own, distance_m)
     half = NODES // 2
     lowest = max((int(own[0] / step) - half) // NODE_SHARE * NODE_SHARE, 1)
     highest = -(-(int(own[-1] / step) + half) // NODE_SHARE) * NODE_SHARE

@@ -52,7 +52,7 @@ def wavefield_records(
     return _records(sources, receivers, model, sampling, blocks)
 
 
-def stored_wavefield(store: GreensStore, report: Report | None = None) -> Engine:
+def stored_wavefield(store: GreensStore, report: Report | None = None, whole: SubEvents | None = None) -> Engine:
     """Return an engine like `wavefield_records` that keeps its Green's functions in a store and reuses them.
 
     Parameters
@@ -61,7 +61,10 @@ def stored_wavefield(store: GreensStore, report: Report | None = None) -> Engine
         Where Green's functions are kept.
     report
         Called with (done, total) source depths while they are fetched or built.
+    whole
+        The rupture of which the engine will be given parts: all parts then share one set of Green's functions.
     """
+    whole = None if whole is None else _checked_events(whole)
 
     def engine(
         sources: SubEvents, receivers: Receivers, model: LayeredModel, sampling: Sampling
@@ -75,7 +78,7 @@ def stored_wavefield(store: GreensStore, report: Report | None = None) -> Engine
                 if report is not None:
                     report(d + 1, pairs.depth_km.size)
 
-        return _records(sources, receivers, model, sampling, blocks)
+        return _records(sources, receivers, model, sampling, blocks, whole)
 
     return engine
 
@@ -100,14 +103,16 @@ def _records(
     model: LayeredModel,
     sampling: Sampling,
     blocks_of: Callable[[Pairs, FrequencyPlan], Iterable[Block]],
+    whole: SubEvents | None = None,
 ) -> NDArray[np.float64]:
     sources, receivers = _checked(sources, receivers)
-    origin = min(sampling.start_s, float(sources.time_s.min()))
+    # Parts of a rupture share one time axis, so that they share their Green's functions.
+    origin = min(sampling.start_s, float((sources if whole is None else whole).time_s.min()))
     lead = int(np.ceil((sampling.start_s - origin) / sampling.step_s - 1e-9))
     origin = sampling.start_s - lead * sampling.step_s
     plan = FrequencyPlan(sampling.step_s, lead + sampling.samples, sampling.high_hz)
     omega = plan.omega
-    pairs = find_pairs(sources, receivers, model, plan)
+    pairs = find_pairs(sources, receivers, model, plan, whole)
     source = raised_cosine_spectrum(sources.rise_time_s, omega)
     source *= np.exp(-1j * omega * (sources.time_s[:, None] - origin))
     # On a periodic time axis what starts after the window would come back at its start.
@@ -126,8 +131,8 @@ def _records(
     return plan.series(spectra)[..., lead:]
 
 
-def _checked(sources: SubEvents, receivers: Receivers) -> tuple[SubEvents, Receivers]:
-    """Return both as arrays of floats; raise InputError for unequal lengths, numbers not finite, a negative rise time."""
+def _checked_events(sources: SubEvents) -> SubEvents:
+    """Return sub-events as arrays of floats; raise InputError for unequal lengths, numbers not finite, a negative rise time."""
     count = np.size(sources.time_s)
     if not count:
         raise InputError("A rupture needs at least one sub-event")
@@ -137,7 +142,12 @@ def _checked(sources: SubEvents, receivers: Receivers) -> tuple[SubEvents, Recei
             raise InputError(f"Sub-events: {name} must hold one finite number for each of the {count} sub-events")
     if (values["rise_time_s"] < 0).any():
         raise InputError("Sub-events: a rise time is negative; give 0 s or more")
+    return SubEvents(**values)
+
+
+def _checked(sources: SubEvents, receivers: Receivers) -> tuple[SubEvents, Receivers]:
+    """Return both as arrays of floats; errors as `_checked_events`, and for receivers that are not finite."""
     longitude, latitude = np.asarray(receivers.longitude_deg, float), np.asarray(receivers.latitude_deg, float)
     if longitude.ndim != 1 or longitude.shape != latitude.shape or not np.isfinite([longitude, latitude]).all():
         raise InputError("Receivers: longitude_deg and latitude_deg must be lists of finite numbers of the same length")
-    return SubEvents(**values), Receivers(longitude, latitude)
+    return _checked_events(sources), Receivers(longitude, latitude)

@@ -143,6 +143,18 @@ def test_an_engine_with_a_store_gives_the_same_records(tmp_path):
     assert len(list(tmp_path.glob("*.h5"))) == 1
 
 
+def test_parts_of_a_rupture_share_green_s_functions_and_add_up(tmp_path):
+    """A part alone has few distances, which would be computed one by one; as a part of the whole it takes the whole's."""
+    events = line(160)
+    engine = stored_wavefield(GreensStore(tmp_path), whole=events)
+    pieces = np.array_split(np.arange(160), 4)
+    parts = [SubEvents(**{k: v[piece] for k, v in events.__dict__.items()}) for piece in pieces]
+    total = sum(engine(part, near(SITES), CRUST, SAMPLING) for part in parts)
+    assert len(list(tmp_path.glob("*.h5"))) == 1
+    reference = wavefield_records(events, near(SITES), CRUST, SAMPLING)
+    assert np.allclose(total, reference, atol=1e-9 * np.abs(reference).max())
+
+
 @pytest.mark.parametrize(
     ("change", "match"),
     [
