@@ -141,7 +141,7 @@ def build_parser() -> argparse.ArgumentParser:
     siting.add_argument("--json", action="store_true", help="print the ranking as JSON")
 
     template = _command(commands, "template", "a commented job or scenario file on stdout", "rupture.commands:template")
-    template.add_argument("kind", choices=["track", "simulate"], help="which file")
+    template.add_argument("kind", choices=["track", "simulate", "resolve", "siting"], help="which file")
 
     redraw = _command(
         commands,

@@ -50,6 +50,17 @@ def test_template_is_a_job(tmp_path, uncommented):
     assert (job == Job()) is not uncommented
 
 
+@pytest.mark.parametrize("name", ["resolve", "siting"])
+def test_template_of_a_study_is_a_job_with_planned_sites(name, tmp_path):
+    path = tmp_path / "job.toml"
+    text = (TEMPLATE.parent / f"{name}.toml").read_text(encoding="utf-8")
+    path.write_text(re.sub(r"^# (trace = )", r"\1", text, flags=re.MULTILINE), encoding="utf-8")
+    job = read_job(path)
+    assert len(job.planned) >= 2
+    assert job.input.trace.endswith("fault.geojson")
+    assert job.resolve == Job().resolve
+
+
 @pytest.mark.parametrize("path", sorted((ROOT / "workflows").glob("*.toml")), ids=lambda p: p.stem)
 def test_workflow_is_a_job(path):
     job = read_job(path)
