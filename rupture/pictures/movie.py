@@ -18,6 +18,7 @@ from rupture.pictures import style as look
 from rupture.pictures.answers import energy_series
 from rupture.pictures.basemap import KM, Extent, draw_graticule, draw_land, draw_locator, draw_scale_bar, projected_axes
 from rupture.pictures.clock import PastedText
+from rupture.pictures.compose import Compositor
 from rupture.pictures.encode import encode_h264, encode_images
 from rupture.pictures.overlays import Overlay, read_overlays
 from rupture.pictures.scene import Scene, credible_level
@@ -147,8 +148,7 @@ class Animation:
     def set_frame(self, frame: int) -> None:
         """Move every artist to one frame."""
         scene = self.scene
-        now = float(scene.source_time[frame])
-        colour = look.time_colours()(self.scale(now))
+        colour = look.time_colours()(self.scale(float(scene.source_time[frame])))
         self._set_cells(self.values[frame])
         wedges = [layers.ray_polygon(scene, s, frame, self.reach[s]) for s in range(len(scene.codes))]
         ends = [layers.ray_end(scene, s, frame, self.reach[s]) for s in range(len(scene.codes))]
@@ -158,6 +158,15 @@ class Animation:
             [np.stack([scene.site_km[s], end]) * KM for s, end in enumerate(ends) if end is not None]
         )
         self.rays.set_color(colour)
+        past = np.isfinite(scene.track_km[:, 0]) & (np.arange(scene.source_time.size) <= frame)
+        self.trail.set_offsets(scene.track_km[past] * KM if past.any() else np.empty((0, 2)))
+        self.trail.set_array(scene.source_time[past])
+        self._set_marks(frame)
+
+    def _set_marks(self, frame: int) -> None:
+        """Move what lies over cells, rays and track: areas, front, cursor and clock."""
+        scene = self.scene
+        now = float(scene.source_time[frame])
         rings: list[Array] = []
         widths: list[float] = []
         if scene.active[frame] and not scene.cells.is_trace:
@@ -168,9 +177,6 @@ class Animation:
                 widths += [width] * len(found)
         self.areas.set_segments(rings)
         self.areas.set_linewidth(widths or [0.0])
-        past = np.isfinite(scene.track_km[:, 0]) & (np.arange(scene.source_time.size) <= frame)
-        self.trail.set_offsets(scene.track_km[past] * KM if past.any() else np.empty((0, 2)))
-        self.trail.set_array(scene.source_time[past])
         fronts = scene.front_km[:, frame]
         self.front.set_data(fronts[:, 0] * KM, fronts[:, 1] * KM)
         self.cursor.set_xdata([now, now])
@@ -181,21 +187,25 @@ class Animation:
         if self.scene.cells.is_trace:
             self.cells.set_array(values)
             return
-        seen = values > 0.002 * self.top
-        self.cells.set_visible(bool(seen.any()))
-        if not seen.any():
+        seen = self.seen(values)
+        self.cells.set_visible(seen is not None)
+        if seen is None:
             return
-        rows, columns = np.flatnonzero(seen.any(axis=1)), np.flatnonzero(seen.any(axis=0))
+        (bottom, top), (left, right) = seen
         west, east, south, north = (edge * KM for edge in self.scene.cells.edges_km)
         width, height = (east - west) / values.shape[1], (north - south) / values.shape[0]
-        self.cells.set_data(values[rows[0] : rows[-1] + 1, columns[0] : columns[-1] + 1])
-        extent = (
-            west + columns[0] * width,
-            west + (columns[-1] + 1) * width,
-            south + rows[0] * height,
-            south + (rows[-1] + 1) * height,
+        self.cells.set_data(values[bottom:top, left:right])
+        self.cells.set_extent(
+            (west + left * width, west + right * width, south + bottom * height, south + top * height)
         )
-        self.cells.set_extent(extent)
+
+    def seen(self, values: Array) -> tuple[tuple[int, int], tuple[int, int]] | None:
+        """Return rows and columns, ends left out, of the rectangle of cells in which there is something to see."""
+        seen = values > 0.002 * self.top
+        rows, columns = np.flatnonzero(seen.any(axis=1)), np.flatnonzero(seen.any(axis=0))
+        if rows.size == 0:
+            return None
+        return (int(rows[0]), int(rows[-1]) + 1), (int(columns[0]), int(columns[-1]) + 1)
 
     def _finished(self) -> Frame:
         canvas: Any = self.picture.canvas
@@ -214,11 +224,23 @@ class Animation:
             background = canvas.copy_from_bbox(self.picture.bbox)
             # The locator lies over the map: its pixels are put back on top instead of being drawn again.
             locator = canvas.copy_from_bbox(self.locator.get_window_extent().padded(2))
+            paint = Compositor(self)
+            under = [self.areas] if paint.has_cells else [self.cells, self.areas]
+            over = self.moving[self.moving.index(self.trail) + 1 :]
+            pixels = np.asarray(canvas.buffer_rgba())
             count = self.scene.source_time.size
             for frame in range(count):
                 canvas.restore_region(background)
-                self.set_frame(frame)
-                for artist in self.moving:
+                paint.rays(pixels, frame)
+                if paint.has_cells:
+                    paint.cells(pixels, frame)
+                else:
+                    self._set_cells(self.values[frame])
+                self._set_marks(frame)
+                for artist in under:
+                    artist.draw(renderer)
+                paint.trail(pixels, frame)
+                for artist in over:
                     artist.draw(renderer)
                 canvas.restore_region(locator)
                 yield self._finished()
