@@ -183,7 +183,8 @@ class _Job:
     formats: tuple[str, ...]
 
     def sheets(self) -> list[Sheet]:
-        return sheets(self.result, self.overlays)
+        # Maps first: the helper, which draws from the end on, then seldom has to load the map library.
+        return sorted(sheets(self.result, self.overlays), key=lambda sheet: not sheet.name.endswith(("map", "frames")))
 
     def draw(self, sheet: Sheet) -> list[Path]:
         """Write one figure and its tables."""

@@ -203,10 +203,16 @@ def area_rings(scene: Scene, probability: Array, level: float) -> list[Array]:
     """Return closed rings in km around the cells of a regular grid whose probability is at least `level`."""
     from contourpy import LineType, contour_generator
 
-    padded = np.pad(probability, 1)
+    # Only the rectangle that holds the area, with one cell around it, so that every ring closes.
+    inside = probability >= level
+    rows, columns = np.flatnonzero(inside.any(axis=1)), np.flatnonzero(inside.any(axis=0))
+    if rows.size == 0:
+        return []
+    part = np.s_[rows[0] : rows[-1] + 3, columns[0] : columns[-1] + 3]
+    padded = np.pad(probability, 1)[part]
     east, north = scene.cells.places_km[0, :, 0], scene.cells.places_km[:, 0, 1]
-    east = np.concatenate([[2 * east[0] - east[1]], east, [2 * east[-1] - east[-2]]])
-    north = np.concatenate([[2 * north[0] - north[1]], north, [2 * north[-1] - north[-2]]])
+    east = np.concatenate([[2 * east[0] - east[1]], east, [2 * east[-1] - east[-2]]])[part[1]]
+    north = np.concatenate([[2 * north[0] - north[1]], north, [2 * north[-1] - north[-2]]])[part[0]]
     rings = contour_generator(east, north, padded, line_type=LineType.Separate).lines(level * (1 - 1e-9))
     return [np.asarray(ring) for ring in rings if len(ring) > 3]
 

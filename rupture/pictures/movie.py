@@ -135,11 +135,11 @@ class Animation:
         )
         for collection in (self.wedges, self.rays, self.areas):
             axes.add_collection(collection, autolim=False)
-        (star,) = axes.plot([0], [0], marker="*", markersize=9, mfc=look.ACCENT, mec="white", mew=0.7, linestyle="none")
+        (self.star,) = axes.plot([0], [0], marker="*", markersize=9, mfc=look.ACCENT, mec="white", mew=0.7, linestyle="none")
         (self.cursor,) = self.line.plot(
             [0, 0], [0, 1], transform=self.line.get_xaxis_transform(), color=look.INK, linewidth=1.2
         )
-        moving = [self.wedges, self.rays, self.cells, self.areas, self.trail, self.front, star, self.cursor]
+        moving = [self.wedges, self.rays, self.cells, self.areas, self.trail, self.front, self.star, self.cursor]
         for order, artist in enumerate(moving):
             # Above all that stays, as blitting draws them, so that both ways of drawing give the same picture.
             artist.set_zorder(20 + order)
