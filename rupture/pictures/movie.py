@@ -135,7 +135,9 @@ class Animation:
         )
         for collection in (self.wedges, self.rays, self.areas):
             axes.add_collection(collection, autolim=False)
-        (self.star,) = axes.plot([0], [0], marker="*", markersize=9, mfc=look.ACCENT, mec="white", mew=0.7, linestyle="none")
+        (self.star,) = axes.plot(
+            [0], [0], marker="*", markersize=9, mfc=look.ACCENT, mec="white", mew=0.7, linestyle="none"
+        )
         (self.cursor,) = self.line.plot(
             [0, 0], [0, 1], transform=self.line.get_xaxis_transform(), color=look.INK, linewidth=1.2
         )

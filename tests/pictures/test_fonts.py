@@ -8,7 +8,7 @@ from matplotlib.backends import _backend_pdf_ps as backend
 
 from rupture.pictures.fonts import lean_font, quick_embedding
 
-TEXT = "Änderung fi Ωμ 10⁻⁵ m²/s⁴, 68 % – Ł ж"
+TEXT = "Änderung fi µ 10⁻⁵ m²/s⁴, 68 % – Ł −3 °"
 
 
 def outlines(path: object, numbers: set[int]) -> dict[int, tuple[list[tuple[int, int]], int]]:
@@ -28,7 +28,7 @@ def test_the_same_glyphs_are_embedded(weight: str) -> None:
     path = font_manager.findfont(font_manager.FontProperties(family="DejaVu Sans", weight=weight))
     font = ft2font.FT2Font(str(path))
     numbers = {font.get_char_index(ord(letter)) for letter in TEXT}
-    assert lean_font(str(path))[1].issuperset(numbers)
+    assert numbers <= set(lean_font(str(path))[1])
     slow = outlines(path, numbers)
     with quick_embedding():
         assert outlines(path, numbers) == slow
