@@ -207,7 +207,8 @@ def label(
     summary = {
         "event": event_summary(inputs.event),
         "sites": site_summaries(rows),
-        "rupture": rupture,
+        # Pictures draw it beside the front: a rupture faster than this outruns its own S waves.
+        "rupture": {**rupture, "s_speed_km_s": round(inputs.earth.s_speed_km_s(inputs.event.depth_km), 3)},
         "reliability": reliability,
         "agreement": agreement(rupture, energy),
         **checks,
