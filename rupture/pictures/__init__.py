@@ -6,11 +6,13 @@ import importlib
 from typing import Any
 
 _PUBLIC = {
-    "along_figure": "answers",
+    "along_figure": "distance",
     "direction_figure": "panels",
     "directions_figure": "panels",
     "draw_all": "draw",
+    "energy_along_figure": "distance",
     "energy_figure": "answers",
+    "energy_fit_figure": "inversion",
     "frames_figure": "frames",
     "kinds_figure": "answers",
     "make_movie": "movie",

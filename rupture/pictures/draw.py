@@ -10,8 +10,10 @@ from pathlib import Path
 
 import numpy as np
 
-from rupture.pictures.answers import along_figure, energy_figure, kinds_figure
+from rupture.pictures.answers import energy_figure, kinds_figure
+from rupture.pictures.distance import along_figure, energy_along_figure
 from rupture.pictures.frames import frames_figure
+from rupture.pictures.inversion import energy_fit_figure
 from rupture.pictures.maps import map_figure
 from rupture.pictures.outlines import write_areas_geojson, write_kml
 from rupture.pictures.overlays import Overlay, read_overlays
@@ -24,6 +26,8 @@ from rupture.pictures.tables import (
     Table,
     along_tables,
     direction_tables,
+    energy_along_tables,
+    energy_fit_tables,
     energy_tables,
     frames_tables,
     kinds_tables,
@@ -80,20 +84,22 @@ def sheets(result: Result, overlays: Sequence[str | Path | Overlay] = ()) -> lis
         out.append(Sheet("frames", partial(frames_figure, result, overlays=drawn), partial(frames_tables, scene)))
         out.append(Sheet("energy", partial(energy_figure, result), partial(energy_tables, scene)))
     if result.energy is not None:
-        out.append(
+        inverted = Scene.of(result, "energy")
+        out += [
             Sheet(
                 "energy_map",
                 partial(map_figure, result, field="energy", overlays=drawn),
-                partial(map_tables, Scene.of(result, "energy")),
-            )
-        )
-        out.append(
+                partial(map_tables, inverted),
+            ),
             Sheet(
                 "energy_frames",
                 partial(frames_figure, result, field="energy", overlays=drawn),
-                partial(frames_tables, Scene.of(result, "energy")),
-            )
-        )
+                partial(frames_tables, inverted),
+            ),
+            Sheet("energy_along", partial(energy_along_figure, result), partial(energy_along_tables, inverted)),
+        ]
+        if "observed_power" in result.energy:
+            out.append(Sheet("energy_fit", partial(energy_fit_figure, result), partial(energy_fit_tables, inverted)))
     track = result.track
     if track is not None and "along_probability" in track:
         out.append(Sheet("along", partial(along_figure, result), partial(along_tables, scene)))

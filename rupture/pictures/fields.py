@@ -77,6 +77,15 @@ class Field:
             edges += [float(axis[0] - half), float(axis[-1] + half)]
         return edges[0], edges[1], edges[2], edges[3]
 
+    @property
+    def spacing_km(self) -> float:
+        """Distance between neighbouring cells."""
+        if self.is_trace:
+            apart = np.hypot(*np.diff(self.places_km, axis=0).T)
+            return float(np.median(apart)) if apart.size else 1.0
+        west, east, _, _ = self.edges_km
+        return (east - west) / self.dataset.sizes["easting"]
+
     @cached_property
     def values(self) -> Array:
         """Values, (frames, cells...): smoothed probability where there is such a thing; energy as a share of all."""

@@ -82,5 +82,6 @@ def frames_figure(
     picture.colorbar(
         ScalarMappable(Normalize(0, top), style.probability_colours()), cax=bar, orientation="horizontal", extend="max"
     )
+    bar.locator_params(axis="x", nbins=5)
     bar.set_xlabel(f"{label}; star: epicentre, ring: fitted front", labelpad=1.5)
     return picture

@@ -345,6 +345,13 @@ def map_extent(scene: Scene, aspect: float = 1.0, sites: bool = True) -> Extent:
     )
 
 
+def scale_bar_corner(scene: Scene, extent: Extent) -> str:
+    """Return the lower corner, 'left' or 'right', in which no site is in a scale bar's way; left when both are free."""
+    east = (scene.site_km[:, 0] - extent.west) / extent.width_km
+    low = (scene.site_km[:, 1] - extent.south) / extent.height_km < 0.14
+    return "right" if (low & (east < 0.34)).any() and not (low & (east > 0.66)).any() else "left"
+
+
 def source_places(scene: Scene) -> Array:
     """Places in km that the source region consists of: epicentre, track, line source, cells of the 95 % area."""
     places = [np.zeros((1, 2)), scene.track_km, *scene.front_km]

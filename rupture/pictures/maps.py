@@ -53,7 +53,7 @@ def map_figure(
     axes = projected_axes(picture, scene.plane, extent, (10, foot, main, main))
     draw_land(axes, scene.plane, extent)
     draw_graticule(axes, scene.plane, extent)
-    draw_scale_bar(axes, extent)
+    draw_scale_bar(axes, extent, corner=layers.scale_bar_corner(scene, extent))
     extra = layers.draw_overlays(axes, scene, drawn, size=1.8)
     layers.draw_rays(axes, scene, frames, colours, scale)
     handles = layers.draw_sites(axes, scene)
@@ -116,8 +116,10 @@ def _source_panel(
 
 
 def _emptiest_corner(scene: Scene, extent: Extent) -> tuple[int, int]:
-    """Return the corner (0 or 1 to the east, 0 or 1 to the north) with the fewest sites; the scale bar has the south-west."""
-    corners = [(1, 1), (0, 1), (1, 0)]
+    """Return the corner (0 or 1 to the east, 0 or 1 to the north) with the fewest sites; the scale bar has its own."""
+    corners = [(1, 1), (0, 1)]
+    if layers.scale_bar_corner(scene, extent) == "left":
+        corners.append((1, 0))
     size = 0.3
 
     def crowd(corner: tuple[int, int]) -> int:

@@ -89,7 +89,7 @@ class Animation:
         self.axes = projected_axes(picture, scene.plane, extent, (left, bottom, map_width, map_height))
         draw_land(self.axes, scene.plane, extent)
         draw_graticule(self.axes, scene.plane, extent)
-        draw_scale_bar(self.axes, extent, share=0.16)
+        draw_scale_bar(self.axes, extent, share=0.16, corner=layers.scale_bar_corner(scene, extent))
         layers.draw_overlays(self.axes, scene, self.overlays)
         layers.draw_sites(self.axes, scene)
         inset = 0.2 * map_height

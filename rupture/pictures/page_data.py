@@ -12,9 +12,10 @@ import numpy as np
 from numpy.typing import NDArray
 
 from rupture.pictures import layers, style
-from rupture.pictures.answers import energy_series, s_speed_km_s
+from rupture.pictures.answers import energy_series
 from rupture.pictures.basemap import KM, Extent, graticule
 from rupture.pictures.coastlines import local_land
+from rupture.pictures.distance import s_speed_km_s
 from rupture.pictures.overlays import Overlay
 from rupture.pictures.panels import coherence, predicted_curves, used_spans, window_of_interest
 from rupture.pictures.posteriors import SIZES, has_sample, posterior_sample

@@ -216,7 +216,7 @@ def draw_posterior(axes: Any, scene: Scene, index: int, span: tuple[float, float
 
 
 def used_spans(scene: Scene, index: int) -> list[tuple[float, float]]:
-    """Return first and last time of each run of windows that speak: a wave in them is more likely than none."""
+    """Return first and last time of each run of windows that speak: a wave in them is twice as likely as none."""
     if not scene.used[index]:
         return []
     time = scene.direction["time"].values.astype(float)

@@ -17,8 +17,8 @@ from rupture.result import Result
 
 Array = NDArray[np.float64]
 
-RAY_PROBABILITY = 0.5
-"""A site's ray is drawn where a coherent wave is at least as likely as none."""
+RAY_PROBABILITY = 2 / 3
+"""A site's ray is drawn where a coherent wave is twice as likely as none: noise alone says one half."""
 
 _LONGEST_LAG_S = 120.0
 

@@ -12,6 +12,7 @@ import numpy as np
 from numpy.typing import NDArray
 
 from rupture.pictures.answers import KINDS, energy_series
+from rupture.pictures.distance import energy_along
 from rupture.pictures.layers import SHARES, area_rings
 from rupture.pictures.panels import coherence, posterior_interval, predicted_curves
 from rupture.pictures.scene import Scene, credible_level
@@ -206,6 +207,30 @@ def along_tables(scene: Scene) -> list[Table]:
     for arm in range(scene.front_km.shape[0]):
         front[f"arm{arm + 1}_km"] = track["front_distance"].values[arm]
     return [Table("", image), Table("front", front)]
+
+
+def energy_along_tables(scene: Scene) -> list[Table | Grid]:
+    """Image of the energy-distance figure; the scene is that of the energy."""
+    time, along, density = energy_along(scene)
+    return [Grid("", (("source_time", "s", time), ("along", "km", along)), ("energy", "km-1 s-1"), density)]
+
+
+def energy_fit_tables(scene: Scene) -> list[Table]:
+    """Power at each site, observed and predicted, and the objective of the inversion."""
+    energy = scene.result.energy
+    assert energy is not None
+    time, codes = energy["time"].values.astype(float), [str(code) for code in energy["site"].values]
+    power = {
+        "site": np.repeat(codes, time.size),
+        "seconds_after_origin": np.tile(time, len(codes)),
+        "observed_power_m2_s4": energy["observed_power"].values.ravel(),
+        "predicted_power_m2_s4": energy["predicted_power"].values.ravel(),
+    }
+    out = [Table("", power)]
+    if "objective" in energy:
+        objective = energy["objective"].values
+        out.append(Table("convergence", {"update": np.arange(1, objective.size + 1), "objective": objective}))
+    return out
 
 
 def posterior_tables(scene: Scene) -> list[Table]:

@@ -276,7 +276,14 @@ def fabricated_result(
             "false_direction_probability": 0.03, "direction_error_deg_p90": 7.5, "wrong_kind_probability": 0.06,
             "sentence": "On 60 null tests with these sites a stationary source looked like a running one in 3 %.",
         },
-        "agreement": {"ray_stack": {"direction_deg": azimuth_deg}, "energy_inversion": {"direction_deg": azimuth_deg + 3}, "differ": False},
+        "agreement": {
+            "ray_stack": {"direction_deg": {"best": azimuth_deg}},
+            "energy_inversion": {
+                "direction_deg": {"best": azimuth_deg + 3}, "speed_km_s": {"best": speed_km_s}, "length_km": {"best": length_km},
+                "second_arm": second,
+            },
+            "differ": False,
+        },
         "provenance": {
             "versions": {"rupture-backtrack": "0.1.0", "numpy": np.__version__},
             "inputs": {"records/ZX.R01.mseed": "0" * 64}, "settings": {}, "seed": 7, "seconds": {"direction": 3.2, "stack": 4.1},
