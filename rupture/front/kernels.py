@@ -50,6 +50,10 @@ ISOTROPIC_CODA, CODA_FOCUS = 0.4, 0.87
 that their mean slowness keeps exp(-0.5 (30 deg)^2) of its length. Multiple forward scattering keeps early coda near the
 direct path (common practice); both values are broad on purpose."""
 
+SLOW_CODA, SLOW_CODA_TIMES = 0.25, 4.0
+"""This share of the scattered energy dies away so many times as slowly: coda decays fast at first and ever slower (Aki & Chouet
+1975), and late reverberations are not a rupture that goes on."""
+
 POWER_FLOOR = 0.02
 """Window power counts down to this share of its peak."""
 
@@ -179,18 +183,21 @@ def _arrivals(
 
 @numba.njit(cache=True)
 def _add_coda(theta, arms, bin_s, direct, scattered, isotropic):  # pragma: no cover - compiled
-    """Let what was scattered die away exponentially; a share keeps about its direction, the rest comes from anywhere."""
-    keep = np.exp(-bin_s / theta[CODA_TIME])
-    for arm in range(arms):
-        weight = pull_east = pull_north = 0.0
-        for b in range(isotropic.size):
-            weight = keep * weight + (1.0 - keep) * scattered[arm, WEIGHT, b]
-            pull_east = keep * pull_east + (1.0 - keep) * scattered[arm, PULL_EAST, b]
-            pull_north = keep * pull_north + (1.0 - keep) * scattered[arm, PULL_NORTH, b]
-            direct[arm, WEIGHT, b] += (1.0 - ISOTROPIC_CODA) * weight
-            direct[arm, PULL_EAST, b] += (1.0 - ISOTROPIC_CODA) * CODA_FOCUS * pull_east
-            direct[arm, PULL_NORTH, b] += (1.0 - ISOTROPIC_CODA) * CODA_FOCUS * pull_north
-            isotropic[b] += ISOTROPIC_CODA * weight
+    """Let what was scattered die away, part of it slowly; a share keeps about its direction, the rest comes from anywhere."""
+    for lasting in range(2):
+        times, share = (SLOW_CODA_TIMES, SLOW_CODA) if lasting else (1.0, 1.0 - SLOW_CODA)
+        keep = np.exp(-bin_s / (times * theta[CODA_TIME]))
+        gain = share * (1.0 - keep)
+        for arm in range(arms):
+            weight = pull_east = pull_north = 0.0
+            for b in range(isotropic.size):
+                weight = keep * weight + gain * scattered[arm, WEIGHT, b]
+                pull_east = keep * pull_east + gain * scattered[arm, PULL_EAST, b]
+                pull_north = keep * pull_north + gain * scattered[arm, PULL_NORTH, b]
+                direct[arm, WEIGHT, b] += (1.0 - ISOTROPIC_CODA) * weight
+                direct[arm, PULL_EAST, b] += (1.0 - ISOTROPIC_CODA) * CODA_FOCUS * pull_east
+                direct[arm, PULL_NORTH, b] += (1.0 - ISOTROPIC_CODA) * CODA_FOCUS * pull_north
+                isotropic[b] += ISOTROPIC_CODA * weight
 
 
 @numba.njit(cache=True)

@@ -77,8 +77,8 @@ class LinePrior:
     speed_m_s
         Range of rupture speeds, uniform in the logarithm: published ones run from under 1 to about 6 km/s.
     length_m, length_log_width
-        Median and log-width of the total length. The median follows Wells & Coppersmith (1994); the width of a factor of
-        two is twice their scatter.
+        Median and log-width of the total length. Both follow Wells & Coppersmith (1994): a scatter of 0.16 of the common
+        logarithm, and a magnitude that is uncertain by 0.15.
     shortest_ratio
         Least ratio of the shorter to the longer arm of a bilateral rupture; below it the rupture counts as unilateral.
     strength_width
@@ -96,7 +96,7 @@ class LinePrior:
     rise_s: float = 2.0
     speed_m_s: tuple[float, float] = (700.0, 7000.0)
     length_m: float = 50e3
-    length_log_width: float = 0.7
+    length_log_width: float = 0.45
     shortest_ratio: float = 0.2
     strength_width: float = 0.7
     bend_rad: float = 0.2
