@@ -131,7 +131,7 @@ class Picture(Figure):
     def heading(self, text: str, left_mm: float = 10.0) -> None:
         """Write the line that says which earthquake this is, broken where the page is narrow."""
         width, height = self.get_size_inches() / MM
-        lines = textwrap.wrap(text, max(20, int((width - left_mm) / 1.45)))
+        lines = textwrap.wrap(text, max(20, int((width - left_mm) / 1.55)))
         self.text(
             left_mm / width,
             1 - 1.6 / height,
