@@ -272,6 +272,9 @@ def _film(result: Result, folder: Path, progress: Progress, style: str | None = 
 
     with progress.stage("movie") as report:
         make_movie(result, folder / "movie.mp4", style=style, progress=report)
+    if result.energy is not None:
+        with progress.stage("energy movie") as report:
+            make_movie(result, folder / "movie_energy.mp4", field="energy", style=style, progress=report)
 
 
 def _answer(result: Result, options: argparse.Namespace) -> None:

@@ -155,7 +155,13 @@ def test_every_command_does_what_it_says(
         said = capsys.readouterr()
         assert status == 0, f"{page}: rupture {command}\n{said.err}"
     run = sorted(path.name for path in (workspace / "run").iterdir())
-    told = re.findall(r"^\| (`.*?) \|", (ROOT / "docs" / "start.md").read_text(encoding="utf-8"), flags=re.MULTILINE)
+    table = (ROOT / "docs" / "start.md").read_text(encoding="utf-8")
+    # No energy was inverted here: what it leaves is not there.
+    told = [
+        cell
+        for cell, meaning in re.findall(r"^\| (`.*?) \| (.*) \|$", table, flags=re.MULTILINE)
+        if "where it ran" not in meaning
+    ]
     assert run == sorted(name.strip("/") for cell in told for name in re.findall(r"`([^`]+)`", cell))
 
 
