@@ -10,6 +10,7 @@ from xml.sax.saxutils import escape
 import numpy as np
 from numpy.typing import NDArray
 
+from rupture.exports import split_at_date_line
 from rupture.pictures.layers import SHARES, area_rings
 from rupture.pictures.scene import Scene, credible_level
 from rupture.wording import SHORT_CAUTION
@@ -100,9 +101,14 @@ def write_kml(scene: Scene, path: Path) -> Path:
     for arm, place in enumerate(scene.front_km):
         known = place[np.isfinite(place[:, 0])]
         if len(known) > 1:
-            arm_lon, arm_lat = scene.to_degrees(known)
-            line = f"<LineString><tessellate>1</tessellate>{_coordinates(arm_lon, arm_lat)}</LineString>"
-            marks.append(f"<Placemark><name>fitted arm {arm + 1}</name>{line}</Placemark>")
+            parts = split_at_date_line(*scene.to_degrees(known))
+            lines = "".join(
+                f"<LineString><tessellate>1</tessellate>{_coordinates(*zip(*part, strict=True))}</LineString>"
+                for part in parts
+            )
+            marks.append(
+                f"<Placemark><name>fitted arm {arm + 1}</name><MultiGeometry>{lines}</MultiGeometry></Placemark>"
+            )
     if scene.field is not None and not scene.field.is_trace:
         for share in SHARES:
             shapes = "".join(_polygon(part) for part in _polygons(area_polygons(scene, share)))
