@@ -24,7 +24,8 @@ def left(made, tmp_path_factory):
 def test_everything_is_left_and_nothing_else(left):
     names = {p.name for p in left.iterdir()}
     expected = {
-        "result.nc", "summary.json", "movie.mp4", "report.html", "figures", "direction.csv", "track.csv", "track.geojson", "job.toml",
+        "result.nc", "summary.json", "movie.mp4", "movie_energy.mp4", "report.html", "figures", "direction.csv", "track.csv",
+        "track.geojson", "job.toml",
     }  # fmt: skip
     assert names == expected
     assert {"map.png", "map.pdf", "directions.png"} <= {p.name for p in (left / "figures").iterdir()}
