@@ -13,7 +13,7 @@ from rupture.earth.responses import Responses
 from rupture.errors import InputError
 from rupture.event import Event
 from rupture.front.intervals import interval
-from rupture.front.kernels import DURATION
+from rupture.front.kernels import DURATION, LENGTH, LENGTH_2
 from rupture.front.lines import KINDS, PARAMETERS, LinePrior, same_first_arm, to_parameters
 from rupture.front.sampler import temper
 from rupture.front.target import Target
@@ -46,6 +46,9 @@ class FitSettings:
     trust
         Share of the windows' log-likelihood that counts: what one model of rays does not know makes windows less
         independent than their noise says.
+    length_spread
+        Standard deviation of the log of true over fitted length: where a rupture ends, surface waves and slip that goes on
+        blur its last seconds.
     kind_threshold
         Probability from which a kind is named; below it the answer is "undetermined".
     widest_direction_deg
@@ -61,7 +64,8 @@ class FitSettings:
     azimuth_spread_deg: float = 3.0
     power_sigma: float = 0.8
     power_share: float = 1.0
-    trust: float = 0.25
+    trust: float = 0.35
+    length_spread: float = 0.08
     kind_threshold: float = 0.8
     widest_direction_deg: float = 90.0
     resamples: int = 20
@@ -73,6 +77,8 @@ class FitSettings:
             raise InputError("resamples must be 0, or 2 at least")
         if not self.hop_s > 0 or not self.slowness_spread > 0 or not self.power_sigma > 0:
             raise InputError("hop_s, slowness_spread and power_sigma must be positive")
+        if not 0 <= self.length_spread < 1:
+            raise InputError("length_spread must lie in [0, 1)")
         if not 0 < self.trust <= 1 or not self.power_share >= 0 or not 0.34 <= self.kind_threshold < 1:
             raise InputError("trust must lie in (0, 1], power_share be at least 0, kind_threshold lie in [0.34, 1)")
 
@@ -90,18 +96,18 @@ class RuptureFit:
     reason
         Why it is undetermined; empty otherwise.
     samples
-        SI parameters per kind in the order of `parameters`, shape (draws, 16) each.
+        SI parameters per kind in the order of `parameters`, shape (draws, columns) each.
     parameters
         Names of the columns.
-    likelihood
-        Log-likelihood per draw and site of each kind, for resampling without a new fit.
+    sampled
+        The draws as the sampler left them, in its coordinates and without the spread of lengths, for resampling.
     """
 
     kind: str
     kind_probability: dict[str, float]
     reason: str
     samples: dict[str, Array]
-    likelihood: dict[str, Array]
+    sampled: dict[str, Array]
     parameters: tuple[str, ...] = PARAMETERS
 
     @property
@@ -132,14 +138,21 @@ class RuptureFit:
 
 def prior_for(event: Event, longest_m: float | None = None) -> LinePrior:
     """Return priors scaled to the event's magnitude (Wells & Coppersmith 1994), or wide ones when it has none."""
+    # Deep sources hardly make surface waves; over 15 km at half a hertz they lose about a factor e (common practice).
+    surface = 0.5 * float(np.exp(-max(event.depth_km - 10.0, 0.0) / 15.0))
     if event.magnitude is None:
-        return LinePrior(length_log_width=1.2)
+        return LinePrior(length_log_width=1.2, surface_ratio=surface)
     length = subsurface_length_km(event.magnitude) * 1e3
     if longest_m is not None:
         length = min(length, longest_m)
     # Rise times scale with the size of slip patches, about a tenth of the duration (common practice).
     duration = length / 2800.0
-    return LinePrior(length_m=length, duration_s=max(2.0, 0.75 * duration), rise_s=max(0.5, 0.1 * duration))
+    return LinePrior(
+        length_m=length,
+        duration_s=max(2.0, 0.75 * duration),
+        rise_s=max(0.5, 0.1 * duration),
+        surface_ratio=surface,
+    )
 
 
 def fit_rupture(
@@ -207,7 +220,7 @@ def fit_windows(
     progress: Callable[[int, int], None] | None = None,
 ) -> RuptureFit:
     """Fit line sources to windows that are laid out already; see `fit_rupture`."""
-    samples, likelihood, evidence = {}, {}, {}
+    samples, sampled, evidence = {}, {}, {}
     for number, kind in enumerate(KINDS):
         rng = np.random.default_rng((seed, number))
         target = Target(kind, windows, prior, settings.trust)
@@ -221,16 +234,23 @@ def fit_windows(
             target.angles,
             target.rename,
         )
-        samples[kind] = to_parameters(kind, same_first_arm(kind, found.draws, longer_first=True))
-        likelihood[kind] = settings.trust * windows.log_likelihood(samples[kind])
+        sampled[kind] = same_first_arm(kind, found.draws, longer_first=True)
+        samples[kind] = spread_lengths(to_parameters(kind, sampled[kind]), settings.length_spread, rng)
         evidence[kind] = found.log_evidence
         if progress is not None:
             progress(number + 1, len(KINDS))
     largest = max(evidence.values())
     weight = {kind: float(np.exp(value - largest)) for kind, value in evidence.items()}
     share = {kind: value / sum(weight.values()) for kind, value in weight.items()}
-    fit = RuptureFit(max(share, key=lambda kind: share[kind]), share, "", samples, likelihood)
+    fit = RuptureFit(max(share, key=lambda kind: share[kind]), share, "", samples, sampled)
     return _judge(fit, settings)
+
+
+def spread_lengths(parameters: Array, spread: float, rng: np.random.Generator) -> Array:
+    """Return SI parameters, shape (count, columns), whose lengths and durations are off by a lognormal error of their own."""
+    out = parameters.copy()
+    out[:, (LENGTH, LENGTH_2, DURATION)] *= np.exp(spread * rng.standard_normal((parameters.shape[0], 1)))
+    return out
 
 
 def _judge(fit: RuptureFit, settings: FitSettings) -> RuptureFit:

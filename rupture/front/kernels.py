@@ -21,10 +21,11 @@ import numpy as np
     CODA_TIME,
     STRAY,
     P_SHARE,
+    SURFACE,
     RISE,
     SHARE_2,
     STRENGTH,
-) = range(17)
+) = range(18)
 
 KNOTS = 4
 """Log-strengths at equal steps along an arm (in time, for a stationary source): columns STRENGTH to STRENGTH + KNOTS - 1 for the first
@@ -41,6 +42,9 @@ LONGEST_RISE_S = 30.0
 
 TIME, SLOWNESS, ENERGY = range(3)
 """Columns of a wave's table."""
+
+S_WAVE, P_WAVE, SURFACE_WAVE = range(3)
+"""Sorts of waves."""
 
 WEIGHT, PULL_EAST, PULL_NORTH = range(3)
 """Rows that an arm fills: energy, and energy times the east and north slowness toward the source."""
@@ -119,7 +123,7 @@ def _spread_box(out, begin, end, energy, pull_east, pull_north):  # pragma: no c
 
 @numba.njit(cache=True)
 def _arrivals(
-    theta, arms, east, north, time, weight, place, tables, primary, step_m, start_s, bin_s, direct, scattered
+    theta, arms, east, north, time, weight, place, tables, sort, step_m, start_s, bin_s, direct, scattered
 ):  # pragma: no cover - compiled
     """Lay the arrivals of all waves of all pieces into bins; return when the first S wave comes.
 
@@ -159,12 +163,14 @@ def _arrivals(
                     if now[w, ENERGY] <= 0.0 or before[w, ENERGY] <= 0.0:
                         continue
                     energy = weight[arm, j - 1] * 0.5 * (now[w, ENERGY] + before[w, ENERGY])
-                    if primary[w]:
+                    if sort[w] == P_WAVE:
                         energy *= theta[P_SHARE]
+                    elif sort[w] == SURFACE_WAVE:
+                        energy *= theta[SURFACE]
                     begin, end = min(before[w, TIME], now[w, TIME]), max(before[w, TIME], now[w, TIME])
                     slow = 0.5 * (before[w, SLOWNESS] + now[w, SLOWNESS])
                     _spread_box(direct[arm], begin, end, energy, slow * back_e, slow * back_n)
-                    if not primary[w]:
+                    if sort[w] == S_WAVE:
                         fed += energy
                         first_s = min(first_s, begin)
                         if energy > loud:
@@ -279,7 +285,7 @@ def log_likelihoods(
     pad,
     places,
     tables,
-    primary,
+    sort,
     step_m,
     power_sigma,
     power_share,
@@ -311,8 +317,9 @@ def log_likelihoods(
         Time of each site's first window, shape (sites,); bins between windows; their length; bins before the first window.
     places
         East, north in m, cosine and sine of the turn from plane north to true north: shape (sites, 4).
-    tables, primary, step_m
-        Time, slowness and energy of each wave at equal distance steps, shape (D, waves, 3); which left as P; the step.
+    tables, sort, step_m
+        Time, slowness and energy of each wave at equal distance steps, shape (D, waves, 3); S_WAVE, P_WAVE or SURFACE_WAVE of
+        each; the step.
     power_sigma, power_share
         Standard deviation of the log of window power about the model; weight of the power term.
     """
@@ -337,7 +344,7 @@ def log_likelihoods(
             scattered = np.zeros((arms, 3, bins))
             isotropic = np.zeros(bins)
             from_s = _arrivals(
-                theta, arms, east, north, time, weight, places[s], tables, primary, step_m,
+                theta, arms, east, north, time, weight, places[s], tables, sort, step_m,
                 start_s[s] - pad * bin_s, bin_s, direct, scattered,
             )  # fmt: skip
             _add_coda(theta, arms, bin_s, direct, scattered, isotropic)

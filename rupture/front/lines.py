@@ -27,6 +27,7 @@ from rupture.front.kernels import (
     START,
     STRAY,
     STRENGTH,
+    SURFACE,
     strengths,
 )
 
@@ -34,15 +35,15 @@ Array = NDArray[np.float64]
 
 PARAMETERS = (
     "east_m", "north_m", "start_time_s", "azimuth_rad", "speed_m_s", "length_m", "second_azimuth_rad", "second_speed_m_s",
-    "second_length_m", "duration_s", "coda_ratio", "coda_time_s", "stray_share", "p_factor",
+    "second_length_m", "duration_s", "coda_ratio", "coda_time_s", "stray_share", "p_factor", "surface_ratio",
     "rise_time_s", "second_share", *(f"log_strength_{k + 1}" for k in range(KNOTS)),
     *(f"second_log_strength_{k + 1}" for k in range(KNOTS)),
 )  # fmt: skip
 
 KINDS = ("stationary", "unilateral", "bilateral")
 
-_LOG = (SPEED, LENGTH, SPEED_2, DURATION, CODA, CODA_TIME, STRAY, P_SHARE, RISE)
-_COMMON = (EAST, NORTH, START, CODA, CODA_TIME, STRAY, P_SHARE, RISE)
+_LOG = (SPEED, LENGTH, SPEED_2, DURATION, CODA, CODA_TIME, STRAY, P_SHARE, SURFACE, RISE)
+_COMMON = (EAST, NORTH, START, CODA, CODA_TIME, STRAY, P_SHARE, SURFACE, RISE)
 _FIRST = tuple(range(STRENGTH, STRENGTH + KNOTS))
 _SECOND = tuple(range(STRENGTH + KNOTS, STRENGTH + 2 * KNOTS))
 FREE = {
@@ -85,6 +86,8 @@ class LinePrior:
         Of the log of radiated energy per length (per time, for a stationary source) at each knot: the scatter of slip along a rupture.
     bend_rad
         Of the angle by which the second arm departs from straight on.
+    surface_ratio
+        Median energy of surface waves over that of S at 100 km; its log-width is 1.
     duration_s, duration_log_width
         Median and log-width of the duration of a stationary source: as long as a rupture of median length takes.
     axis_rad
@@ -100,6 +103,7 @@ class LinePrior:
     shortest_ratio: float = 0.2
     strength_width: float = 0.7
     bend_rad: float = 0.2
+    surface_ratio: float = 0.5
     duration_s: float = 20.0
     duration_log_width: float = 0.8
     axis_rad: float | None = None
@@ -142,6 +146,7 @@ class LinePrior:
             CODA_TIME: (np.log(10.0), 0.5),
             STRAY: (np.log(0.1), 0.6),
             P_SHARE: (0.0, 0.7),
+            SURFACE: (float(np.log(self.surface_ratio)), 1.0),
             RISE: (float(np.log(self.rise_s)), 0.6),
         }[parameter]
 
@@ -186,18 +191,6 @@ def to_parameters(kind: str, draws: Array) -> Array:
         out[:, DURATION] = out[:, LENGTH] / out[:, SPEED]
     out[:, AZIMUTH] %= 2 * np.pi
     return out
-
-
-def to_coordinates(kind: str, parameters: Array) -> Array:
-    """Turn SI parameters, shape (count, columns), into the sampler's coordinates: the inverse of `to_parameters`."""
-    full = parameters.copy()
-    if kind == "bilateral":
-        whole = parameters[:, LENGTH] + parameters[:, LENGTH_2]
-        full[:, LENGTH], full[:, LENGTH_2] = whole, parameters[:, LENGTH_2] / whole
-        bend = parameters[:, AZIMUTH_2] - parameters[:, AZIMUTH] - np.pi
-        full[:, AZIMUTH_2] = (bend + np.pi) % (2 * np.pi) - np.pi
-    columns = [np.log(full[:, p]) if p in _LOG else full[:, p] for p in FREE[kind]]
-    return np.stack(columns, axis=1)
 
 
 def _mean_strength(parameters: Array, arm: int) -> Array:

@@ -14,7 +14,7 @@ from rupture.errors import InputError
 from rupture.event import Event
 from rupture.front.fit import CIRCULAR, FitSettings, RuptureFit, prior_for, windows_of
 from rupture.front.intervals import interval
-from rupture.front.lines import PARAMETERS, LinePrior, same_first_arm, to_coordinates, to_parameters
+from rupture.front.lines import PARAMETERS, LinePrior, same_first_arm, to_parameters
 from rupture.front.sampler import bridge
 from rupture.front.target import Target
 from rupture.front.windows import Windows
@@ -138,9 +138,9 @@ def resample_windows(
     if resamples < 2:
         raise InputError(f"{resamples} resamples have no spread; give at least 2")
     kind = fit.likeliest
-    draws = fit.samples[kind]
+    draws = fit.sampled[kind]
     rng = np.random.default_rng((seed, 17))
-    start = to_coordinates(kind, draws[np.sort(rng.permutation(draws.shape[0])[:DRAWS])])
+    start = draws[np.sort(rng.permutation(draws.shape[0])[:DRAWS])]
     sites = len(windows.code)
     plans = [_drawn(windows, rng) for _ in range(resamples)]
     if sites > 1:

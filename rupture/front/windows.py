@@ -12,7 +12,7 @@ from rupture.direction import SiteDirection
 from rupture.earth.responses import STEP_M, Responses
 from rupture.errors import DataError
 from rupture.event import Event
-from rupture.front.kernels import LONGEST_RISE_S, POWER_FLOOR, log_likelihoods
+from rupture.front.kernels import LONGEST_RISE_S, P_WAVE, POWER_FLOOR, S_WAVE, SURFACE_WAVE, log_likelihoods
 from rupture.geodesy import LocalPlane, distance_azimuth
 
 Array = NDArray[np.float64]
@@ -22,6 +22,13 @@ LEAST_ENERGY = 0.02
 
 HALF_CELLS = 24
 """Cells from zero to the largest slowness in the tables: 2.4 degrees at that slowness, less than any spread."""
+
+SURFACE_SLOWER = 1.1
+"""Slowness of the surface wave over that of S waves far away: 1/0.92 for a Rayleigh wave in a Poisson solid (Rayleigh 1885), a
+little more in a crust whose top is slow."""
+
+SURFACE_FROM_M, SURFACE_DISTANCE_M = 20e3, 100e3
+"""Nearer than this there is no surface wave yet; where its energy is compared with that of S."""
 
 FLAT = 0.02
 """A window whose ratios differ by less than this says nothing of direction."""
@@ -52,7 +59,7 @@ class Windows:
     pad: int
     places: Array
     tables: Array
-    primary: NDArray[np.bool_]
+    sort: NDArray[np.int64]
     power_sigma: float
     power_share: float
 
@@ -86,7 +93,7 @@ class Windows:
         counted: Array = log_likelihoods(
             np.ascontiguousarray(parameters), self.first, self.view_first, self.table_first, self.window_s, self.overlap, self.codes,
             self.value, self.telling, self.cells, self.cell_s_m, self.level, multiple, self.start_s, self.stride, self.bin_s, self.pad,
-            self.places, self.tables, self.primary, STEP_M, self.power_sigma, self.power_share,
+            self.places, self.tables, self.sort, STEP_M, self.power_sigma, self.power_share,
         )  # fmt: skip
         return counted
 
@@ -131,7 +138,7 @@ def lay_out(
     distance, _, back = distance_azimuth(event.longitude_deg, event.latitude_deg, site_longitude_deg, site_latitude_deg)
     # The plane is centred on the epicentre: its north differs from a site's by the convergence of the meridians.
     turn = np.where(np.hypot(east, north) > 1.0, back - np.arctan2(-east, -north), 0.0)
-    tables, primary = _strong_waves(responses)
+    tables, sort = _strong_waves(responses)
     largest = float(tables[..., 1][tables[..., 2] > 0].max())
     onset = {wave: responses.at(responses.strongest(wave)[0], distance) for wave in "PS"}
     step = float(directions[0].time_s[1] - directions[0].time_s[0])
@@ -163,7 +170,7 @@ def lay_out(
         tuple(d.code for d in directions), np.array(first), np.array(view_first),
         np.concatenate([[0], np.cumsum([row.size for row in rows])])[:-1], np.array(lengths), np.array(overlaps), codes, value, np.concatenate(telling),
         2 * HALF_CELLS + 1, largest / HALF_CELLS, np.concatenate(levels), np.array(starts), stride, hop / stride,
-        pad, np.stack([east, north, np.cos(turn), np.sin(turn)], axis=1), tables, primary, power_sigma, power_share,
+        pad, np.stack([east, north, np.cos(turn), np.sin(turn)], axis=1), tables, sort, power_sigma, power_share,
     )  # fmt: skip
 
 
@@ -219,15 +226,33 @@ def slowness_table(
     return np.ascontiguousarray(np.maximum(table, 1e-6), np.float32)
 
 
-def _strong_waves(responses: Responses) -> tuple[Array, NDArray[np.bool_]]:
-    """Tables (D, waves, 3) of time, slowness and energy, weak waves with no energy, waves that are nowhere strong left out."""
-    primary = np.array([wave == "P" for wave in responses.wave])
+def _strong_waves(responses: Responses) -> tuple[Array, NDArray[np.int64]]:
+    """Tables (D, waves, 3) of time, slowness and energy, and the sort of each wave.
+
+    Weak waves have no energy, and waves that are nowhere strong are left out. A surface wave follows S, a little slower than
+    the S waves far away; it spreads along the surface alone, and at 100 km has the energy of all S: how much it really has
+    is for the fit to find.
+    """
+    sort = np.array([P_WAVE if wave == "P" else S_WAVE for wave in responses.wave])
     energy = responses.energy.copy()
-    for group in (primary, ~primary):
+    for group in (sort == P_WAVE, sort == S_WAVE):
         energy[group] = np.where(energy[group] >= LEAST_ENERGY * energy[group].max(axis=0), energy[group], 0.0)
     keep = energy.max(axis=1) > 0
     tables = np.stack([responses.time_s[keep], responses.slowness_s_m[keep], energy[keep]], axis=-1)
-    return np.ascontiguousarray(tables.transpose(1, 0, 2)), primary[keep]
+    distance = STEP_M * np.arange(energy.shape[1])
+    far = min(round(SURFACE_DISTANCE_M / STEP_M), distance.size - 1)
+    slowness = SURFACE_SLOWER * responses.slowness_s_m[sort == S_WAVE][:, far].max()
+    level = energy[sort == S_WAVE][:, far].sum() * distance[far]
+    surface = np.stack(
+        [
+            slowness * distance,
+            np.full(distance.size, slowness),
+            np.where(distance >= SURFACE_FROM_M, level / np.maximum(distance, STEP_M), 0.0),
+        ],
+        axis=-1,
+    )
+    tables = np.concatenate([tables, surface[None]])
+    return np.ascontiguousarray(tables.transpose(1, 0, 2)), np.append(sort[keep], SURFACE_WAVE)
 
 
 def _level(power: Array, masked: NDArray[np.bool_]) -> Array:
