@@ -18,7 +18,7 @@ from rupture.pictures.coastlines import local_land
 from rupture.pictures.distance import s_speed_km_s
 from rupture.pictures.overlays import Overlay
 from rupture.pictures.panels import coherence, predicted_curves, used_spans, window_of_interest
-from rupture.pictures.posteriors import SIZES, has_sample, posterior_sample
+from rupture.pictures.posteriors import SIZES, has_sample, posterior_sample, stated_interval
 from rupture.pictures.scene import Scene, credible_level
 
 Array = NDArray[np.float64]
@@ -275,14 +275,11 @@ def _along(scene: Scene) -> dict[str, Any]:
 
 def _histogram(scene: Scene, name: str, label: str, unit: str) -> dict[str, Any]:
     draws = posterior_sample(scene.result, name)
+    low, best, high = stated_interval(scene.result, name)
     if name == "azimuth_deg":
-        # Around the circular mean, so that a direction near north is one peak.
-        middle = np.degrees(np.angle(np.exp(1j * np.radians(draws)).mean()))
-        draws = (draws - middle + 180) % 360 - 180 + middle
-        if middle < 0:
-            draws = draws + 360
+        # Around the best direction, so that a direction near north is one peak.
+        draws = (draws - best + 180) % 360 - 180 + best
     density, edges = np.histogram(draws, bins=min(40, max(8, int(np.sqrt(draws.size)))), density=True)
-    low, best, high = np.percentile(draws, [5, 50, 95])
     return {
         "name": name, "label": label, "unit": unit, "edges": _numbers(edges, 5), "density": _numbers(density, 6),
         "interval": _numbers(np.array([low, best, high]), 3),

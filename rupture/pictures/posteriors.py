@@ -44,11 +44,26 @@ def posterior_figure(result: Result, style_file: str | Path | None, width_mm: fl
         tall = 72.0 / max(len(panels), 1)
         for k, (name, label, unit) in enumerate(panels):
             panel = picture.axes_mm(104, height - 12 - (k + 1) * tall + 9, 70, tall - 12)
-            _draw_histogram(panel, posterior_sample(result, name), label, unit)
+            _draw_histogram(panel, posterior_sample(result, name), stated_interval(result, name), label, unit)
     return picture
 
 
 SIZES = (("speed_km_s", "rupture speed", "km/s"), ("length_km", "length", "km"), ("duration_s", "duration", "s"))
+
+
+def stated_interval(result: Result, name: str) -> tuple[float, float, float]:
+    """Return low, best and high of a parameter as the summary states them; where it does not, from the draws.
+
+    Angles are unwrapped: low <= best <= high.
+    """
+    stated = (result.summary.get("rupture") or {}).get({"azimuth_deg": "direction_deg"}.get(name, name))
+    if not stated:
+        low, best, high = np.percentile(posterior_sample(result, name), [5, 50, 95])
+    else:
+        low, best, high = (float(stated[key]) for key in ("p05", "best", "p95"))
+        if name == "azimuth_deg":
+            low, high = best - (best - low) % 360, best + (high - best) % 360
+    return float(low), float(best), float(high)
 
 
 def has_sample(result: Result, name: str) -> bool:
@@ -108,8 +123,8 @@ def _draw_rose(axes: Any, scene: Scene, azimuth: Array) -> list[str]:
     return notes
 
 
-def _draw_histogram(axes: Any, draws: Array, label: str, unit: str) -> None:
-    low, best, high = np.percentile(draws, [5, 50, 95])
+def _draw_histogram(axes: Any, draws: Array, interval: tuple[float, float, float], label: str, unit: str) -> None:
+    low, best, high = interval
     axes.hist(
         draws, bins=min(40, max(8, int(np.sqrt(draws.size)))), density=True, color=style.probability_colours()(0.45)
     )

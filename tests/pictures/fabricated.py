@@ -240,7 +240,12 @@ def fabricated_result(
 
     def interval(name: str) -> dict[str, float]:
         column = sample[:, parameters.index(name)]
-        low_, best_, high_ = np.percentile(column, [5, 50, 95])
+        if name == "azimuth_deg":
+            # On the circle, as a real summary states it.
+            column = azimuth_deg + (column - azimuth_deg + 180) % 360 - 180
+            low_, best_, high_ = np.percentile(column, [5, 50, 95]) % 360
+        else:
+            low_, best_, high_ = np.percentile(column, [5, 50, 95])
         return {"best": float(best_), "p05": float(low_), "p95": float(high_)}
 
     kind = "bilateral" if second_km else "unilateral"

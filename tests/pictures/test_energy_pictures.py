@@ -77,3 +77,18 @@ def test_without_an_inversion_there_is_nothing_to_draw(build: Callable[..., Resu
     for figure in (pictures.energy_fit_figure, pictures.energy_along_figure):
         with pytest.raises(InputError, match="no energy inversion"):
             figure(result)
+
+
+def test_histograms_show_the_interval_that_the_summary_states(unilateral: Result) -> None:
+    from rupture.pictures.page_data import page_data
+    from rupture.pictures.posteriors import stated_interval
+
+    stated = unilateral.summary["rupture"]["speed_km_s"]
+    assert stated_interval(unilateral, "speed_km_s") == (stated["p05"], stated["best"], stated["p95"])
+    items = {item["name"]: item["interval"] for item in page_data(Scene.of(unilateral))["posterior"]}
+    assert items["speed_km_s"] == pytest.approx([stated["p05"], stated["best"], stated["p95"]], abs=6e-4)
+    # Where the summary states none, the draws do: 5, 50 and 95 % of a normal distribution of 80 and 5 km.
+    bare = Result(
+        {**unilateral.summary, "rupture": None}, unilateral.sites, unilateral.direction, track=unilateral.track
+    )
+    assert stated_interval(bare, "length_km") == pytest.approx((80 - 8.2, 80, 80 + 8.2), abs=1.5)

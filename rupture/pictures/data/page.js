@@ -439,14 +439,15 @@
       const holder = make("div");
       const [low, best, high] = item.interval;
       const text = (v) => (item.unit === "deg" ? (((v % 360) + 360) % 360).toFixed(0) : v.toPrecision(3));
-      holder.append(make("h3", { textContent: `${item.label}: ${text(best)} ${item.unit} (90 %: ${text(low)} to ${text(high)})` }));
+      holder.append(make("h3", { textContent: `${item.label}: ${text(best)} ${item.unit}` }));
+      holder.append(make("p", { className: "help", textContent: `90 %: ${text(low)} to ${text(high)} ${item.unit}` }));
       $("posteriors").append(holder);
       const middle = item.density.map((_, i) => (item.edges[i] + item.edges[i + 1]) / 2);
       chart(holder, {
         height: 170,
         legend: { show: false },
         scales: { x: { time: false, range: () => [item.edges[0], item.edges[item.edges.length - 1]] }, y: { range: (u, a, b) => [0, b * 1.08] } },
-        axes: [axisLook({ label: `${item.label} (${item.unit})`, values: (u, all) => all.map((v) => (item.unit === "deg" ? String(((v % 360) + 360) % 360) : String(v))) }), axisLook({ label: `density (1/${item.unit.includes("/") ? `(${item.unit})` : item.unit})`, size: 62 })],
+        axes: [axisLook({ label: `${item.label} (${item.unit})`, values: (u, all) => all.map((v) => (item.unit === "deg" ? String(((v % 360) + 360) % 360) : String(v))) }), axisLook({ label: `per ${item.unit}`, size: 62 })],
         series: [{ label: item.label }, { label: "density", fill: () => colour("bar"), stroke: () => colour("bar"), width: 1, paths: uPlot.paths.bars({ size: [1, 1000] }), points: { show: false } }],
         cursor: { show: false },
         hooks: { draw: [(u) => { strokeLine(u, [best, 0], [best, u.scales.y.max], { stroke: colour("accent"), width: 2 }); strokeLine(u, [low, 0], [high, 0], { stroke: colour("accent"), width: 9 }); }] },
