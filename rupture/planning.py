@@ -22,7 +22,7 @@ from rupture.mapping import read_trace
 from rupture.mapping.grid import subsurface_length_km
 from rupture.progress import Progress
 from rupture.resolution.ensemble import Network
-from rupture.resolution.null_tests import PARTICLES, summarise
+from rupture.resolution.null_tests import in_short, summarise
 from rupture.resolution.siting import candidate_grid, rank, read_candidates, rupture_points
 from rupture.resolution.study import make_cases, run_study
 from rupture.run import load, load_event, noise_window, strong_waves
@@ -36,7 +36,7 @@ def network_from(job: Job, progress: Progress) -> Network:
     from rupture.resolution.planned import planned_sites
     from rupture.synthetic.coda import CodaSettings
 
-    fit = replace(job.fit, particles=min(PARTICLES, job.fit.particles), hop_s=max(2.0, job.fit.hop_s))
+    direction, fit = in_short(job.direction, job.fit)
     coda = CodaSettings(energy_ratio=job.resolve.coda_energy_ratio, waves=40)
     if not job.planned:
         inputs = load(job, progress)
@@ -55,7 +55,7 @@ def network_from(job: Job, progress: Progress) -> Network:
         longitude, latitude = read_trace(job.input.trace)
         _, azimuth, _ = distance_azimuth(longitude[0], latitude[0], longitude[-1], latitude[-1])
         prior = replace(prior, axis_rad=float(azimuth))
-    return Network(event, tuple(sites), windows, earth.layers, responses, job.direction, fit, prior, coda)
+    return Network(event, tuple(sites), windows, earth.layers, responses, direction, fit, prior, coda)
 
 
 def resolve(options: argparse.Namespace) -> int:
