@@ -249,13 +249,13 @@ class Animation:
                 if progress is not None:
                     progress(frame + 1, count)
 
-    def redrawn_frames(self) -> Iterator[Frame]:
-        """Yield every frame by drawing the whole picture anew: the slow, obvious twin of `frames`."""
+    def redrawn_frames(self, first: int = 0) -> Iterator[Frame]:
+        """Yield frames from `first` on by drawing the whole picture anew: the slow, obvious twin of `frames`."""
         canvas: Any = self.picture.canvas
         with look.style_context(self.picture.rupture_style):
             for artist in self.moving:
                 artist.set_animated(False)
-            for frame in range(self.scene.source_time.size):
+            for frame in range(first, self.scene.source_time.size):
                 self.set_frame(frame)
                 canvas.draw()
                 yield self._finished()
