@@ -230,8 +230,6 @@ def redraw(options: argparse.Namespace) -> int:
     result = Result.load(options.result)
     with output_folder(options.out, options.overwrite, holds="report.html") as folder:
         _draw(result, folder, progress, options.style)
-        if result.map is not None:
-            _film(result, folder, progress, options.style)
     print(Path(options.out) / "report.html")
     return 0
 
@@ -245,7 +243,6 @@ def leave_track(result: Result, folder: Path, progress: Progress) -> None:
         write_track_csv(result, folder / "track.csv")
         write_track_geojson(result, folder / "track.geojson")
     _draw(result, folder, progress)
-    _film(result, folder, progress)
     result.summary["provenance"]["seconds"] = dict(progress.seconds)
     result.save(folder / "result.nc")
     _texts(result, folder)
@@ -259,22 +256,10 @@ def _texts(result: Result, folder: Path) -> None:
 
 
 def _draw(result: Result, folder: Path, progress: Progress, style: str | None = None) -> None:
-    from rupture.pictures import draw_all, write_report
+    from rupture.pictures import draw_everything
 
-    with progress.stage("figures") as report:
-        draw_all(result, folder / "figures", style, report, workers=2)
-    with progress.stage("report page"):
-        write_report(result, folder / "report.html")
-
-
-def _film(result: Result, folder: Path, progress: Progress, style: str | None = None) -> None:
-    from rupture.pictures import make_movie
-
-    with progress.stage("movie") as report:
-        make_movie(result, folder / "movie.mp4", style=style, progress=report)
-    if result.energy is not None:
-        with progress.stage("energy movie") as report:
-            make_movie(result, folder / "movie_energy.mp4", field="energy", style=style, progress=report)
+    with progress.stage("pictures") as report:
+        draw_everything(result, folder, style, report, workers=2)
 
 
 def _answer(result: Result, options: argparse.Namespace) -> None:

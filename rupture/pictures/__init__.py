@@ -10,6 +10,7 @@ _PUBLIC = {
     "direction_figure": "panels",
     "directions_figure": "panels",
     "draw_all": "draw",
+    "draw_everything": "draw",
     "energy_along_figure": "distance",
     "energy_figure": "answers",
     "energy_fit_figure": "inversion",

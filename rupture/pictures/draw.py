@@ -162,19 +162,57 @@ def draw_all(
     """
     folder = Path(out_dir)
     folder.mkdir(parents=True, exist_ok=True)
-    job = _Job(result, tuple(read_overlays(overlays)), style, folder, formats)
-    todo = job.sheets()
+    return _run(_Job(result, tuple(read_overlays(overlays)), style, folder, formats), progress, workers)
+
+
+def draw_everything(
+    result: Result,
+    out_dir: str | Path,
+    style: str | Path | None = None,
+    progress: Callable[[int, int], None] | None = None,
+    overlays: Sequence[str | Path | Overlay] = (),
+    workers: int = 1,
+) -> list[Path]:
+    """Leave all pictures of a result in a folder: `figures/`, `report.html` and, where something was mapped, its movies.
+
+    Parameters
+    ----------
+    result
+        A result.
+    out_dir
+        The folder.
+    style, progress, overlays, workers
+        As in `draw_all`. With two workers one draws figures while the other makes the movies.
+
+    Returns
+    -------
+    list of pathlib.Path
+        What was written.
+
+    Raises
+    ------
+    InputError
+        When the style file or an overlay cannot be used.
+    """
+    folder = Path(out_dir)
+    (folder / "figures").mkdir(parents=True, exist_ok=True)
+    movies = []
+    if result.energy is not None:
+        movies.append(("energy", folder / "movie_energy.mp4"))
+    if result.map is not None:
+        movies.append(("location", folder / "movie.mp4"))
+    drawn = tuple(read_overlays(overlays))
+    job = _Job(result, drawn, style, folder / "figures", FORMATS, folder / "report.html", tuple(movies))
+    return _run(job, progress, workers)
+
+
+def _run(job: _Job, progress: Callable[[int, int], None] | None, workers: int) -> list[Path]:
+    tasks = job.tasks()
     written: list[Path] = []
-    for done, files in enumerate(_draw_together(job, todo, workers) if workers > 1 else map(job.draw, todo)):
+    for done, files in enumerate(_together(job, tasks, workers) if workers > 1 else (task() for task in tasks)):
         written += files
         if progress is not None:
-            progress(done + 1, len(todo) + 1)
-    scene = Scene.of(result)
-    written.append(write_kml(scene, folder / "map.kml"))
-    if scene.field is not None and not scene.field.is_trace:
-        written.append(write_areas_geojson(scene, folder / "map_areas.geojson"))
-    if progress is not None:
-        progress(len(todo) + 1, len(todo) + 1)
+            progress(done + 1, len(tasks))
     return written
 
 
@@ -187,10 +225,19 @@ class _Job:
     style: str | Path | None
     folder: Path
     formats: tuple[str, ...]
+    page: Path | None = None
+    movies: tuple[tuple[str, Path], ...] = ()
 
-    def sheets(self) -> list[Sheet]:
-        # Maps first: the helper, which draws from the end on, then seldom has to load the map library.
-        return sorted(sheets(self.result, self.overlays), key=lambda sheet: not sheet.name.endswith(("map", "frames")))
+    def tasks(self) -> list[Callable[[], list[Path]]]:
+        """Everything to do: maps first and movies last, so that a helper that works from the end does the longest first."""
+        figures = sorted(
+            sheets(self.result, self.overlays), key=lambda sheet: not sheet.name.endswith(("map", "frames"))
+        )
+        out: list[Callable[[], list[Path]]] = [partial(self.draw, sheet) for sheet in figures]
+        out.append(self.outline)
+        if self.page is not None:
+            out.append(self.write_page)
+        return out + [partial(self.film, field, path) for field, path in self.movies]
 
     def draw(self, sheet: Sheet) -> list[Path]:
         """Write one figure and its tables."""
@@ -206,6 +253,27 @@ class _Job:
             written.append(table.write(self.folder / f"{name}.{table.suffix}"))
         return written
 
+    def outline(self) -> list[Path]:
+        """Write the outlines for GIS."""
+        scene = Scene.of(self.result)
+        written = [write_kml(scene, self.folder / "map.kml")]
+        if scene.field is not None and not scene.field.is_trace:
+            written.append(write_areas_geojson(scene, self.folder / "map_areas.geojson"))
+        return written
+
+    def write_page(self) -> list[Path]:
+        """Write the report page."""
+        from rupture.pictures.report import write_report
+
+        assert self.page is not None
+        return [write_report(self.result, self.page, overlays=self.overlays)]
+
+    def film(self, field: str, path: Path) -> list[Path]:
+        """Write one movie."""
+        from rupture.pictures.movie import make_movie
+
+        return [make_movie(self.result, path, field=field, style=self.style, overlays=self.overlays)]
+
 
 _prepared: list[_Job] = []
 
@@ -214,21 +282,20 @@ def _prepare(job: _Job) -> None:
     _prepared[:] = [job]
 
 
-def _draw_prepared(index: int) -> list[Path]:
-    job = _prepared[0]
-    return job.draw(job.sheets()[index])
+def _do_prepared(index: int) -> list[Path]:
+    return _prepared[0].tasks()[index]()
 
 
-def _draw_together(job: _Job, todo: list[Sheet], workers: int) -> Iterator[list[Path]]:
-    """Draw from the first sheet on, while helpers draw from the last one back; yields in the order of the sheets."""
+def _together(job: _Job, tasks: list[Callable[[], list[Path]]], workers: int) -> Iterator[list[Path]]:
+    """Work from the first task on, while helpers work from the last one back; yields in the order of the tasks."""
     from concurrent.futures import ProcessPoolExecutor
     from multiprocessing import get_context
 
     # Started anew, not forked: a forked copy of a program with threads may hang.
     with ProcessPoolExecutor(workers - 1, get_context("spawn"), _prepare, (job,)) as pool:
-        later = {index: pool.submit(_draw_prepared, index) for index in reversed(range(len(todo)))}
+        later = {index: pool.submit(_do_prepared, index) for index in reversed(range(len(tasks)))}
         try:
-            for index, sheet in enumerate(todo):
-                yield job.draw(sheet) if later[index].cancel() else later[index].result()
+            for index, task in enumerate(tasks):
+                yield task() if later[index].cancel() else later[index].result()
         finally:
             pool.shutdown(cancel_futures=True)

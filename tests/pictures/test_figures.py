@@ -321,3 +321,21 @@ def test_two_processes_draw_the_same_files(build: Callable[..., Result], tmp_pat
     assert [p.name for p in two] == [p.name for p in one]
     for a, b in zip(one, two, strict=True):
         assert a.read_bytes() == b.read_bytes()
+
+
+def test_everything_is_left_in_one_folder(build: Callable[..., Result], tmp_path: Path) -> None:
+    result = small(build, sites=1, step_s=8.0, cells=15, spacing_km=12.0)
+    seen: list[tuple[int, int]] = []
+    written = pictures.draw_everything(result, tmp_path / "run", workers=2, progress=lambda *step: seen.append(step))
+    assert {path.name for path in (tmp_path / "run").iterdir()} == {
+        "figures",
+        "report.html",
+        "movie.mp4",
+        "movie_energy.mp4",
+    }
+    assert sorted(written) == sorted(path for path in (tmp_path / "run").rglob("*") if path.is_file())
+    assert [done for done, _ in seen] == list(range(1, seen[-1][1] + 1))
+    # Directions alone: nothing moves, nothing was inverted.
+    bare = Result({**result.summary, "rupture": None}, result.sites, result.direction)
+    pictures.draw_everything(bare, tmp_path / "bare")
+    assert {path.name for path in (tmp_path / "bare").iterdir()} == {"figures", "report.html"}
