@@ -151,6 +151,29 @@ def build_parser() -> argparse.ArgumentParser:
     )
     redraw.add_argument("result", metavar="RESULT.nc", help="result.nc of a run")
     redraw.add_argument("--style", metavar="FILE", help="Matplotlib style file that is laid over the project's own")
+    redraw.add_argument(
+        "--overlay", nargs="+", default=[], metavar="FILE", help="GeoJSON of fault traces or aftershocks for the maps"
+    )
+    redraw.add_argument(
+        "--formats",
+        nargs="+",
+        default=["png", "pdf"],
+        choices=["png", "pdf", "svg"],
+        help="formats of the figures (default png pdf)",
+    )
+    redraw.add_argument(
+        "--columns",
+        type=int,
+        default=2,
+        choices=[1, 2],
+        help="width of the figures in columns of a journal (default 2)",
+    )
+    redraw.add_argument(
+        "--movie-shape", default="4:3", choices=["4:3", "16:9", "square"], help="shape of the movies (default 4:3)"
+    )
+    redraw.add_argument(
+        "--movie-format", default="mp4", choices=["mp4", "webp", "gif"], help="format of the movies (default mp4)"
+    )
     _out(redraw)
     return parser
 

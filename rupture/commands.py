@@ -229,7 +229,10 @@ def redraw(options: argparse.Namespace) -> int:
     progress = Progress(options.quiet)
     result = Result.load(options.result)
     with output_folder(options.out, options.overwrite, holds="report.html") as folder:
-        _draw(result, folder, progress, options.style)
+        _draw(
+            result, folder, progress, style=options.style, overlays=options.overlay, formats=tuple(options.formats),
+            columns=options.columns, movie_shape=options.movie_shape, movie_format=options.movie_format,
+        )  # fmt: skip
     print(Path(options.out) / "report.html")
     return 0
 
@@ -255,11 +258,11 @@ def _texts(result: Result, folder: Path) -> None:
     (folder / "job.toml").write_text(tomli_w.dumps(result.settings), encoding="utf-8")
 
 
-def _draw(result: Result, folder: Path, progress: Progress, style: str | None = None) -> None:
+def _draw(result: Result, folder: Path, progress: Progress, **look: Any) -> None:
     from rupture.pictures import draw_everything
 
     with progress.stage("pictures") as report:
-        draw_everything(result, folder, style, report, workers=2)
+        draw_everything(result, folder, progress=report, workers=2, **look)
 
 
 def _answer(result: Result, options: argparse.Namespace) -> None:

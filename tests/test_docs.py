@@ -164,7 +164,7 @@ def test_every_command_does_what_it_says(
     assert run == sorted(name.strip("/") for cell in told for name in re.findall(r"`([^`]+)`", cell))
 
 
-def _tables_alone(result: Result, folder: Path, style: str | None = None, *rest: object, **options: object) -> None:
+def _tables_alone(result: Result, folder: Path, style: str | None = None, **options: object) -> None:
     pictures.draw_all(result, folder / "figures", style, formats=())
     pictures.write_report(result, folder / "report.html")
     if result.map is not None:

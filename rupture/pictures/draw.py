@@ -128,6 +128,7 @@ def draw_all(
     progress: Callable[[int, int], None] | None = None,
     formats: tuple[str, ...] = FORMATS,
     overlays: Sequence[str | Path | Overlay] = (),
+    columns: int = 2,
     workers: int = 1,
 ) -> list[Path]:
     """Draw every figure that the result has the data for, each with its data beside it as CSV or NetCDF, the map as KML too.
@@ -146,6 +147,8 @@ def draw_all(
         File formats: png (300 dpi), pdf, svg; none for the tables alone.
     overlays
         GeoJSON files of fault traces or aftershocks to draw on the maps.
+    columns
+        Width of the figures: 1 or 2 columns of a journal's page.
     workers
         Processes that draw. More than one needs a main module that may be imported again (`if __name__ ==
         "__main__"`), as Python's multiprocessing asks.
@@ -162,7 +165,7 @@ def draw_all(
     """
     folder = Path(out_dir)
     folder.mkdir(parents=True, exist_ok=True)
-    return _run(_Job(result, tuple(read_overlays(overlays)), style, folder, formats), progress, workers)
+    return _run(_Job(result, tuple(read_overlays(overlays)), style, folder, formats, columns), progress, workers)
 
 
 def draw_everything(
@@ -170,7 +173,11 @@ def draw_everything(
     out_dir: str | Path,
     style: str | Path | None = None,
     progress: Callable[[int, int], None] | None = None,
+    formats: tuple[str, ...] = FORMATS,
     overlays: Sequence[str | Path | Overlay] = (),
+    columns: int = 2,
+    movie_shape: str = "4:3",
+    movie_format: str = "mp4",
     workers: int = 1,
 ) -> list[Path]:
     """Leave all pictures of a result in a folder: `figures/`, `report.html` and, where something was mapped, its movies.
@@ -181,8 +188,12 @@ def draw_everything(
         A result.
     out_dir
         The folder.
-    style, progress, overlays, workers
+    style, progress, formats, overlays, columns, workers
         As in `draw_all`. With two workers one draws figures while the other makes the movies.
+    movie_shape
+        '4:3', '16:9' or 'square'.
+    movie_format
+        'mp4', 'webp' or 'gif'.
 
     Returns
     -------
@@ -198,11 +209,12 @@ def draw_everything(
     (folder / "figures").mkdir(parents=True, exist_ok=True)
     movies = []
     if result.energy is not None:
-        movies.append(("energy", folder / "movie_energy.mp4"))
+        movies.append(("energy", folder / f"movie_energy.{movie_format}"))
     if result.map is not None:
-        movies.append(("location", folder / "movie.mp4"))
+        movies.append(("location", folder / f"movie.{movie_format}"))
     drawn = tuple(read_overlays(overlays))
-    job = _Job(result, drawn, style, folder / "figures", FORMATS, folder / "report.html", tuple(movies))
+    figures, page = folder / "figures", folder / "report.html"
+    job = _Job(result, drawn, style, figures, formats, columns, page, tuple(movies), movie_shape)
     return _run(job, progress, workers)
 
 
@@ -225,8 +237,10 @@ class _Job:
     style: str | Path | None
     folder: Path
     formats: tuple[str, ...]
+    columns: int = 2
     page: Path | None = None
     movies: tuple[tuple[str, Path], ...] = ()
+    movie_shape: str = "4:3"
 
     def tasks(self) -> list[Callable[[], list[Path]]]:
         """Everything to do: maps first and movies last, so that a helper that works from the end does the longest first."""
@@ -243,7 +257,7 @@ class _Job:
         """Write one figure and its tables."""
         written = []
         if self.formats:
-            picture = sheet.draw(style=self.style)
+            picture = sheet.draw(style=self.style, columns=self.columns)
         for suffix in self.formats:
             path = self.folder / f"{sheet.name}.{suffix}"
             picture.savefig(path)
@@ -272,7 +286,8 @@ class _Job:
         """Write one movie."""
         from rupture.pictures.movie import make_movie
 
-        return [make_movie(self.result, path, field=field, style=self.style, overlays=self.overlays)]
+        shape = self.movie_shape
+        return [make_movie(self.result, path, field=field, shape=shape, style=self.style, overlays=self.overlays)]
 
 
 _prepared: list[_Job] = []

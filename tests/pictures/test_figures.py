@@ -1,6 +1,7 @@
 """Every figure draws on every kind of result, in one look, with its data beside it."""
 
 import csv
+import re
 from collections.abc import Callable
 from pathlib import Path
 
@@ -335,6 +336,16 @@ def test_everything_is_left_in_one_folder(build: Callable[..., Result], tmp_path
     }
     assert sorted(written) == sorted(path for path in (tmp_path / "run").rglob("*") if path.is_file())
     assert [done for done, _ in seen] == list(range(1, seen[-1][1] + 1))
+    slides = tmp_path / "slides"
+    pictures.draw_everything(result, slides, formats=("svg",), columns=1, movie_shape="16:9", movie_format="gif")
+    assert {path.name for path in slides.iterdir()} == {"figures", "report.html", "movie.gif", "movie_energy.gif"}
+    width = re.search(r'width="([\d.]+)pt"', (slides / "figures" / "map.svg").read_text(encoding="utf-8"))
+    assert width is not None
+    assert float(width[1]) == pytest.approx(88 / 25.4 * 72, abs=0.5)
+    from PIL import Image
+
+    with Image.open(slides / "movie.gif") as image:
+        assert image.size == (1280, 720)
     # Directions alone: nothing moves, nothing was inverted.
     bare = Result({**result.summary, "rupture": None}, result.sites, result.direction)
     pictures.draw_everything(bare, tmp_path / "bare")
