@@ -37,9 +37,16 @@ def kinds_figure(result: Result, style_file: str | Path | None, width_mm: float)
         for name, value in reliability.items()
         if name.endswith("_probability") and isinstance(value, int | float)
     }
+    sentence = _wrapped(
+        reliability.get("sentence")
+        or "No null tests were run with these sites: how often such an answer is false is not known.",
+        width_mm,
+    )
     wide = width_mm > 100
     bars = len(rupture["kind_probability"])
-    height = (34.0 if wide else 38.0) + 6 * bars + (0 if wide or not tests else 14 + 6 * len(tests))
+    # Below the lowest axes: their label, then the sentence, then the caution.
+    foot = 14.0 + 2.9 * (sentence.count("\n") + 1)
+    height = foot + (14.0 if wide else 18.0) + 6 * bars + (0 if wide or not tests else 17 + 6 * len(tests))
     picture = style.Picture(width_mm, height, style_file)
     picture.heading(scene.title, left_mm=4)
     name_room = 22.0
@@ -52,7 +59,7 @@ def kinds_figure(result: Result, style_file: str | Path | None, width_mm: float)
     axes.set_title(f"Kind of rupture: {rupture['kind']}", pad=4)
     axes.set_xlabel("posterior probability", labelpad=1.5)
     if tests:
-        left, test_bottom = (width_mm / 2 + 34, bottom) if wide else (36.0, 20.0)
+        left, test_bottom = (width_mm / 2 + 34, bottom) if wide else (36.0, foot)
         test_size = width_mm - left - 12
         test_height = plot_height if wide else 6.0 * len(tests)
         test_axes = picture.axes_mm(left, test_bottom, test_size, test_height)
@@ -60,18 +67,14 @@ def kinds_figure(result: Result, style_file: str | Path | None, width_mm: float)
         _bars(test_axes, labels, list(tests.values()), style.MUTED)
         test_axes.set_title("Null tests of these sites", pad=4)
         test_axes.set_xlabel("probability of the error", labelpad=1.5)
-    sentence = (
-        reliability.get("sentence")
-        or "No null tests were run with these sites: how often such an answer is false is not known."
-    )
-    picture.text(4 / width_mm, 5.0 / height, _wrapped(sentence, width_mm), fontsize=6.2, va="bottom", parse_math=False)
+    picture.text(4 / width_mm, 5.0 / height, sentence, fontsize=6.2, va="bottom", parse_math=False)
     return picture
 
 
 def _wrapped(text: str, width_mm: float) -> str:
     import textwrap
 
-    return "\n".join(textwrap.wrap(text, int(width_mm / 1.12)))
+    return "\n".join(textwrap.wrap(text, int((width_mm - 8) / 1.17)))
 
 
 def _bars(axes: Any, names: list[str], values: list[float], colour: Any) -> None:

@@ -243,7 +243,7 @@ def draw_graticule(axes: Any, plane: LocalPlane, extent: Extent, labels: bool = 
     """Draw meridians and parallels, and label them where they meet the frame."""
     lines = graticule(plane, extent)
     axes.add_collection(
-        LineCollection([line.places_km * KM for line in lines], colors=style.FAINT, linewidths=0.35, zorder=2.5),
+        LineCollection([line.places_km * KM for line in lines], colors=style.FAINT, linewidths=0.35, zorder=1.8),
         autolim=False,
     )
     if not labels:

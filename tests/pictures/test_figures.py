@@ -350,3 +350,19 @@ def test_everything_is_left_in_one_folder(build: Callable[..., Result], tmp_path
     bare = Result({**result.summary, "rupture": None}, result.sites, result.direction)
     pictures.draw_everything(bare, tmp_path / "bare")
     assert {path.name for path in (tmp_path / "bare").iterdir()} == {"figures", "report.html"}
+
+
+@pytest.mark.parametrize("columns", [1, 2])
+def test_a_long_null_test_sentence_stays_clear_of_the_axes(unilateral: Result, columns: int) -> None:
+    sentence = "Of 20 synthetic ruptures that never moved, these sites called 2 a moving one. " * 3
+    reliability = {**unilateral.summary["reliability"], "sentence": sentence}
+    result = Result({**unilateral.summary, "reliability": reliability}, unilateral.sites, unilateral.direction)
+    picture = pictures.kinds_figure(result, columns=columns)
+    picture.canvas.draw()
+    assert_text_inside(picture, "kinds")
+    (written,) = [text for text in picture.texts if "never moved" in text.get_text()]
+    box = written.get_window_extent()
+    for axes in picture.axes:
+        assert not box.overlaps(axes.get_tightbbox())
+    (caution,) = [text for text in picture.texts if text.get_text() == SHORT_CAUTION]
+    assert not box.overlaps(caution.get_window_extent())
