@@ -229,7 +229,9 @@ def draw_track(axes: Any, scene: Scene, colours: Colormap, scale: Normalize, siz
                 "", known[-1] * KM, known[-2] * KM, zorder=6.3,
                 arrowprops={"arrowstyle": "-|>", "color": style.INK, "lw": 1.0, "mutation_scale": 9, "shrinkA": 0, "shrinkB": 0},
             )  # fmt: skip
-            handles.append(Line2D([], [], label="line source, fitted" if arm == 0 else "second arm", **look))
+            # An arrow in the legend too: an area's edge is a black line as well.
+            name = "line source, fitted" if arm == 0 else "second arm"
+            handles.append(Line2D([], [], label=name, marker=">", markersize=3.4, **look))
     known = np.isfinite(scene.track_km[:, 0])
     if known.any():
         axes.scatter(
