@@ -115,7 +115,7 @@ def direction(options: argparse.Namespace) -> int:
         }  # fmt: skip
         result = Result(
             summary, datasets.site_dataset(rows), datasets.direction_dataset(found),
-            quality=quality_rows(inputs.site_set), settings=job.as_table(),
+            quality=quality_rows(inputs.site_set), settings=job.as_table(), records=tuple(inputs.sites),
         )  # fmt: skip
         with progress.stage("tables"):
             result.save(folder / "result.nc")

@@ -14,6 +14,8 @@ from rupture.errors import InputError
 if TYPE_CHECKING:
     import xarray as xr
 
+    from rupture.site import Site
+
 GROUPS = ("sites", "direction", "map", "energy", "track")
 CONVENTIONS = "CF-1.11"
 
@@ -57,6 +59,8 @@ class Result:
         One dictionary per channel: site, channel, found, done, missing, used, reason.
     settings
         The resolved job, as written to job.toml.
+    records
+        The corrected records, while the run that read them lasts; they are not stored.
     """
 
     summary: dict[str, Any]
@@ -67,6 +71,7 @@ class Result:
     track: xr.Dataset | None = None
     quality: list[dict[str, Any]] = field(default_factory=list)
     settings: dict[str, Any] = field(default_factory=dict)
+    records: tuple[Site, ...] = field(default=(), repr=False, compare=False)
 
     def save(self, path: str | Path) -> Path:
         """Write NetCDF-4 beside the target and move it into place; return the path."""

@@ -223,6 +223,7 @@ def label(
         track_dataset(inputs, tracked, np.asarray(direction["time"].values)),
         quality_rows(inputs.site_set),
         job.as_table(),
+        tuple(inputs.sites),
     )
 
 

@@ -20,6 +20,7 @@ from rupture.pictures.overlays import Overlay, read_overlays
 from rupture.pictures.panels import direction_figure, directions_figure
 from rupture.pictures.posteriors import has_sample, posterior_figure
 from rupture.pictures.scene import Scene
+from rupture.pictures.sections import section_figure
 from rupture.pictures.style import Picture
 from rupture.pictures.tables import (
     Grid,
@@ -33,6 +34,7 @@ from rupture.pictures.tables import (
     kinds_tables,
     map_tables,
     posterior_tables,
+    section_tables,
 )
 from rupture.result import Result
 
@@ -105,6 +107,10 @@ def sheets(result: Result, overlays: Sequence[str | Path | Overlay] = ()) -> lis
         out.append(Sheet("along", partial(along_figure, result), partial(along_tables, scene)))
     if has_sample(result, "azimuth_deg"):
         out.append(Sheet("posterior", partial(posterior_figure, result), partial(posterior_tables, scene)))
+    if any(site.code in scene.codes for site in result.records):
+        out.append(
+            Sheet("section", partial(section_figure, result, sites=result.records), partial(section_tables, scene))
+        )
     if result.summary.get("rupture"):
         out.append(Sheet("kinds", partial(kinds_figure, result), partial(kinds_tables, scene)))
     return out
@@ -263,7 +269,7 @@ class _Job:
             picture.savefig(path)
             written.append(path)
         for table in sheet.tables():
-            name = f"{sheet.name}_{table.name}" if table.name else sheet.name
+            name = f"{sheet.name}_{file_name(table.name)}" if table.name else sheet.name
             written.append(table.write(self.folder / f"{name}.{table.suffix}"))
         return written
 

@@ -11,6 +11,7 @@ from typing import Any
 import numpy as np
 from numpy.typing import NDArray
 
+from rupture.conventions import COMPONENTS
 from rupture.pictures.answers import KINDS, energy_series
 from rupture.pictures.distance import energy_along
 from rupture.pictures.layers import SHARES, area_rings
@@ -231,6 +232,20 @@ def energy_fit_tables(scene: Scene) -> list[Table]:
         objective = energy["objective"].values
         out.append(Table("convergence", {"update": np.arange(1, objective.size + 1), "objective": objective}))
     return out
+
+
+def section_tables(scene: Scene) -> list[Grid]:
+    """Corrected records of each site: components E, N, Up of acceleration (m/s^2), then of rotation rate (rad/s)."""
+    return [
+        Grid(
+            site.code,
+            (("component", "1", np.arange(len(COMPONENTS))), ("seconds_after_origin", "s", site.times_s)),
+            ("motion", "m s-2, rad s-1"),
+            np.where(site.valid, site.data, np.nan),
+        )
+        for site in scene.result.records
+        if site.code in scene.codes
+    ]
 
 
 def posterior_tables(scene: Scene) -> list[Table]:

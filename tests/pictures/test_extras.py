@@ -2,15 +2,17 @@
 
 import json
 from collections.abc import Callable
+from dataclasses import replace
 from pathlib import Path
 from xml.etree import ElementTree as ET
 
 import numpy as np
 import pytest
 import shapely
+import xarray as xr
 
 from rupture.errors import InputError
-from rupture.pictures import map_figure, section_figure, style
+from rupture.pictures import draw, map_figure, section_figure, style
 from rupture.pictures.layers import SHARES
 from rupture.pictures.movie import Animation
 from rupture.pictures.outlines import area_polygons, write_areas_geojson, write_kml
@@ -159,3 +161,19 @@ def test_record_section_shows_components_and_arrivals(unilateral: Result) -> Non
     assert f"{np.abs(site.data[0, inside]).max():.1e}" in written
     with pytest.raises(InputError, match="none of the records"):
         section_figure(unilateral, [])
+
+
+def test_a_run_draws_its_records_and_leaves_their_data(unilateral: Result, tmp_path: Path) -> None:
+    sites = records(unilateral)
+    assert "section" not in {sheet.name for sheet in draw.sheets(unilateral)}
+    result = replace(unilateral, records=tuple(sites))
+    (sheet,) = [sheet for sheet in draw.sheets(result) if sheet.name == "section"]
+    for grid in sheet.tables():
+        grid.write(tmp_path / "section.nc")
+        site = next(site for site in sites if site.code == grid.name)
+        with xr.open_dataset(tmp_path / "section.nc") as data:
+            assert data["motion"].dims == ("component", "seconds_after_origin")
+            np.testing.assert_allclose(data["motion"], np.where(site.valid, site.data, np.nan), rtol=1e-6)
+            np.testing.assert_array_equal(data["seconds_after_origin"], site.times_s)
+    # Records are not part of what is stored.
+    assert Result.load(result.save(tmp_path / "result.nc")).records == ()
