@@ -14,7 +14,7 @@ from rupture.errors import DataError, InputError
 from rupture.folder import output_folder
 from rupture.progress import Progress
 from rupture.result import Result
-from rupture.settings import InputSettings, Job, NullTestSettings, read_job
+from rupture.settings import InputSettings, Job, NullTestSettings, read_job, with_whole_paths
 from rupture.wording import SHORT_CAUTION, answer_sentences
 
 DEMO_NULL_TESTS = 12
@@ -51,7 +51,7 @@ def job_from(options: argparse.Namespace, base: Job | None = None) -> Job:
         if options.seed < 0:
             raise InputError("--seed must be a whole number from 0 up")
         job = replace(job, seed=options.seed)
-    return _map_options(job, options)
+    return with_whole_paths(_map_options(job, options))
 
 
 def _changed(given: InputSettings, changes: dict[str, Any]) -> InputSettings:
@@ -188,7 +188,7 @@ def demo(options: argparse.Namespace) -> int:
             job, null_tests=_null_tests(NullTestSettings(DEMO_NULL_TESTS), options), energy=_energy(job.energy, options)
         )
         result = run_track(job, progress)
-        result = moved(result, str(folder), str(options.out))
+        result = moved(result, str(folder), str(Path(options.out).absolute()))
         leave_track(result, folder, progress)
     _answer(result, options)
     truth = json.loads((Path(options.out) / "input" / "truth.json").read_text(encoding="utf-8"))["rupture"]

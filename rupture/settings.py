@@ -177,6 +177,11 @@ def _planned(content: Any, path: str, wrong: list[str]) -> tuple[PlannedSite, ..
     return tuple(sites)
 
 
+def with_whole_paths(job: Job) -> Job:
+    """Return the job with paths that hold from any folder, as its copy among the results needs them."""
+    return replace(job, input=_beside(job.input, Path.cwd()), earth=_earth_beside(job.earth, Path.cwd()))
+
+
 def _beside(given: InputSettings, folder: Path) -> InputSettings:
     def move(text: str) -> str:
         return text if Path(text).is_absolute() or ":" in text.split("/")[0] else str(folder / text)

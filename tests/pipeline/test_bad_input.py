@@ -10,7 +10,7 @@ from rupture.records import event_from_origin
 from rupture.synthetic.simulate import simulate
 from tests.pipeline.conftest import Given, scenario
 
-QUICK = "[fit]\nparticles = 60\nmoves = 1\n[null_tests]\nruptures = 0\n"
+QUICK = "[fit]\nparticles = 60\nmoves = 1\nresamples = 0\n[null_tests]\nruptures = 0\n[energy]\non = false\n"
 
 
 def refused(run, out, arguments, status=2):
