@@ -14,6 +14,7 @@ import json
 import time
 from collections.abc import Callable
 from dataclasses import replace
+from functools import partial
 from pathlib import Path
 from typing import Any
 
@@ -50,12 +51,13 @@ def demo_network(extra: tuple[PlannedSite, ...] = ()) -> Network:
     scenario = read_scenario("demo")
     # Strike follows each rupture's azimuth.
     event = replace(scenario.as_event(), mechanism_deg=None)
-    planned = tuple(
-        PlannedSite(s.code, s.longitude_deg, s.latitude_deg, "Z+rotH", "array-derived", s.translation)
-        if s.array
-        else PlannedSite(s.code, s.longitude_deg, s.latitude_deg, s.components, s.rotation, s.translation)
+    planned = [
+        PlannedSite(
+            s.code, s.longitude_deg or 0.0, s.latitude_deg or 0.0, "Z+rotH" if s.array else s.components,
+            "array-derived" if s.array else s.rotation, s.translation,
+        )
         for s in scenario.site
-    )
+    ]  # fmt: skip
     planned += extra
     places = [p.longitude_deg for p in planned], [p.latitude_deg for p in planned]
     longest_km = float(distance_azimuth(event.longitude_deg, event.latitude_deg, *places)[0].max()) / KM
@@ -304,7 +306,7 @@ def main() -> None:
             path = folder / f"{name}_{k:04d}.json"
             if k >= len(some) or (time.monotonic() > until and not path.is_file()):
                 continue
-            out.append(kept(path, lambda k=k, s=some, r=run, n=some_network: r(n, s[k], k)))
+            out.append(kept(path, partial(run, some_network, some[k], k)))
     PAGE.write_text(page(rows, siting, workers), encoding="utf-8")
     print(PAGE.read_text(encoding="utf-8"))
 
