@@ -193,21 +193,18 @@ def direction_tables(scene: Scene, index: int) -> list[Table | Grid]:
     return [Table("", curves), image]
 
 
-def along_tables(scene: Scene) -> list[Table]:
+def along_tables(scene: Scene) -> list[Table | Grid]:
     """Image and fitted front of the distance figure."""
     track = scene.result.track
     assert track is not None
     along = track["along"].values.astype(float)
     share = np.asarray(track["along_probability"].values, float)
-    image = {
-        "source_time_s": np.repeat(track["source_time"].values.astype(float), along.size),
-        "along_km": np.tile(along, track.sizes["source_time"]),
-        "probability": share.ravel(),
-    }
-    front: dict[str, Column] = {"source_time_s": track["source_time"].values.astype(float)}
+    time = track["source_time"].values.astype(float)
+    image = Grid("", (("source_time", "s", time), ("along", "km", along)), ("probability", "1"), share)
+    front: dict[str, Column] = {"source_time_s": time}
     for arm in range(scene.front_km.shape[0]):
         front[f"arm{arm + 1}_km"] = track["front_distance"].values[arm]
-    return [Table("", image), Table("front", front)]
+    return [image, Table("front", front)]
 
 
 def energy_along_tables(scene: Scene) -> list[Table | Grid]:
