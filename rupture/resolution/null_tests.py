@@ -154,8 +154,9 @@ def _sentence(result: dict[str, Any], stationary: int, false: int, moving: int) 
         f"of {moving} that ran one way, nine in ten directions came out within {error:.0f} degrees"
     )
     caught = result["confusion"]["unilateral"]["unilateral"]
-    if error > 60:
-        return start + ": this geometry cannot tell a direction."
-    if error > 20 or false > 0.1 * stationary:
+    # Directions that are never said to be one are no directions, however near to the truth their middles lie.
+    if error > 60 or caught < moving / 3:
+        return start + f" and {caught} were named one-way: this geometry cannot tell a direction."
+    if error > 20 or false > 0.1 * stationary or caught < 2 * moving / 3:
         return start + f" and {caught} were named one-way: take the direction with caution."
     return start + f" and {caught} were named one-way."

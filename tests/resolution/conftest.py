@@ -45,3 +45,8 @@ def network():
 def noisier(network):
     sites = tuple(replace(s, data=2 * s.data) for s in network.sites)
     return replace(network, sites=sites)
+
+
+@pytest.fixture(scope="session")
+def build():
+    return build_network

@@ -70,7 +70,8 @@ def test_a_study_killed_twice_goes_on_to_the_same_numbers(network, cases, rows, 
             # Once it has got further than the last time, at any moment.
             deadline = time.monotonic() + 60
             while _count(folder) <= done[-1]:
-                assert time.monotonic() < deadline and process.poll() is None
+                assert time.monotonic() < deadline
+                assert process.poll() is None
                 time.sleep(0.01)
             time.sleep(moments.uniform(0.0, 0.4))
             os.kill(process.pid, signal.SIGKILL)
