@@ -138,7 +138,8 @@ def fit_lines(
     for kind in KINDS if near is None else (near.kind,):
         bounds = np.array(_bounds(kind, width, float(np.ptp(time_s))))
         starts = [near.parameters] if near is not None else _starts(cost, kind, bounds, found, seed)
-        best = min((_descend(cost, kind, bounds, first) for first in starts), key=lambda end: float(end.fun))
+        times = 2 if near is None else 1
+        best = min((_descend(cost, kind, bounds, first, times) for first in starts), key=lambda end: float(end.fun))
         score = -independent * float(best.fun) - 0.5 * len(bounds) * np.log(independent)
         found.append(LineFit(kind, np.asarray(best.x), score))
     return sorted(found, key=lambda fit: -fit.score)
@@ -160,11 +161,14 @@ def _starts(
     return starts
 
 
-def _descend(cost: Callable[[Array, str], float], kind: str, bounds: Array, first: Array) -> Any:
-    """Descend from a start; twice, since a simplex in many dimensions may collapse early."""
-    options = {"maxiter": 500, "xatol": 1e-3, "fatol": 1e-6, "adaptive": True}
-    end = minimize(cost, np.clip(first, *bounds.T), (kind,), "Nelder-Mead", bounds=bounds, options=options)
-    return minimize(cost, end.x, (kind,), "Nelder-Mead", bounds=bounds, options=options)
+def _descend(cost: Callable[[Array, str], float], kind: str, bounds: Array, first: Array, times: int) -> Any:
+    """Descend from a start, more than once where it is far, since a simplex in many dimensions may collapse early."""
+    options = {"maxiter": 500, "xatol": 1e-3, "fatol": 1e-5, "adaptive": True}
+    at = np.clip(first, *bounds.T)
+    for _ in range(times):
+        end = minimize(cost, at, (kind,), "Nelder-Mead", bounds=bounds, options=options)
+        at = end.x
+    return end
 
 
 def _bounds(kind: str, width_m: float, span_s: float) -> list[tuple[float, float]]:
