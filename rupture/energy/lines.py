@@ -64,7 +64,7 @@ class LineAnswer:
     best
         The best fit of the likeliest kind.
     values
-        Name to (best, p05, p95): azimuth_rad, speed_m_s, length_m, duration_s and, of a second arm, second_azimuth_rad,
+        Name to (best, p05, p95): east_m, north_m and start_time_s of the start, azimuth_rad, speed_m_s, length_m, duration_s and, of a second arm, second_azimuth_rad,
         second_speed_m_s, second_length_m. Without resampled inversions the ends are NaN.
     """
 
@@ -213,7 +213,7 @@ def line_answer(
         rows.append(_values(fit_lines(movie, east_m, north_m, time_s, independent, seed, best)[0]))
         if progress is not None:
             progress(number + 1, len(resampled))
-    values = {name: _interval([row[name] for row in rows], name.endswith("azimuth_rad")) for name in rows[0]}
+    values = {name: _interval([row[name] for row in rows], name) for name in rows[0]}
     reason = ""
     if max(probability.values()) < SURE:
         reason = "the energy movie does not tell the kinds of rupture apart"
@@ -225,7 +225,8 @@ def line_answer(
 def _values(fit: LineFit) -> dict[str, float]:
     parts = arms(fit.kind, fit.parameters)
     parts.sort(key=lambda arm: -arm[1] * arm[2])
-    out = {"duration_s": max(arm[2] for arm in parts)}
+    east, north, start = (float(v) for v in fit.parameters[:3])
+    out = {"duration_s": max(arm[2] for arm in parts), "start_time_s": start, "east_m": east, "north_m": north}
     for prefix, (azimuth, speed, duration, _) in zip(("", "second_"), parts, strict=False):
         if fit.kind != "stationary":
             out |= {
@@ -236,7 +237,8 @@ def _values(fit: LineFit) -> dict[str, float]:
     return out
 
 
-def _interval(values: Sequence[float], circular: bool) -> tuple[float, float, float]:
+def _interval(values: Sequence[float], name: str) -> tuple[float, float, float]:
+    circular, signed = name.endswith("azimuth_rad"), name in ("east_m", "north_m", "start_time_s")
     best, others = values[0], np.array(values[1:])
     if not others.size:
         return best, np.nan, np.nan
@@ -244,7 +246,7 @@ def _interval(values: Sequence[float], circular: bool) -> tuple[float, float, fl
     # Few resamples: a normal spread about the best rather than their order statistics.
     half = 1.645 * float(np.sqrt(np.mean(off**2)))
     low, high = best - half, best + half
-    return (best, low % (2 * np.pi), high % (2 * np.pi)) if circular else (best, max(low, 0.0), high)
+    return (best, low % (2 * np.pi), high % (2 * np.pi)) if circular else (best, low if signed else max(low, 0.0), high)
 
 
 def line_summary(answer: LineAnswer) -> dict[str, Any]:
@@ -264,6 +266,9 @@ def line_summary(answer: LineAnswer) -> dict[str, Any]:
         "speed_km_s": part("speed_m_s", 1e-3),
         "length_km": part("length_m", 1e-3),
         "duration_s": part("duration_s", 1.0),
+        "start_time_s": part("start_time_s", 1.0),
+        "start_east_km": part("east_m", 1e-3),
+        "start_north_km": part("north_m", 1e-3),
         "second_arm": {
             "direction_deg": part("second_azimuth_rad", 180 / np.pi),
             "speed_km_s": part("second_speed_m_s", 1e-3),

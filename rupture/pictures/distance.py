@@ -115,13 +115,18 @@ def _inverted(result: Result) -> dict[str, Any]:
 def _inversion_lines(scene: Scene) -> list[Array]:
     """Return corners (source time, km along) of each arm that the inversion found."""
     found, lines = _inverted(scene.result), []
+    east, north, start = (
+        (found.get(name) or {}).get("best") or 0.0 for name in ("start_east_km", "start_north_km", "start_time_s")
+    )
+    strike = np.radians(strike_deg(scene))
+    begin = east * np.sin(strike) + north * np.cos(strike)
     for arm in (found, found.get("second_arm") or {}):
         direction, speed, length = (
             (arm.get(name) or {}).get("best") for name in ("direction_deg", "speed_km_s", "length_km")
         )
         if direction is not None and speed and length:
             reach = length * np.cos(np.radians(direction - strike_deg(scene)))
-            lines.append(np.array([[0.0, 0.0], [length / speed, reach]]))
+            lines.append(np.array([[start, begin], [start + length / speed, begin + reach]]))
     return lines
 
 
