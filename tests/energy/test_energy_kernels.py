@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+from dataclasses import replace
 from pathlib import Path
 
 import numpy as np
@@ -111,11 +112,33 @@ def test_covariances_scale_rotation_to_the_size_of_acceleration() -> None:
     "mechanism", [(0.0, 95.0, 0.0), (0.0, 0.0, 0.0), (500.0, 45.0, 0.0), (0.0, 45.0, 190.0), (np.nan, 45.0, 0.0)]
 )
 def test_mechanism_out_of_range_is_refused_in_a_sentence(mechanism: tuple[float, float, float]) -> None:
-    with pytest.raises(InputError, match="strike must lie in -360 to 360, dip in 0 to 90, rake in -180 to 180"):
+    with pytest.raises(
+        InputError, match="strike must lie in -360 to 360, dip in 0 to 90, rake in -180 to 180"
+    ) as caught:
         build_kernels(ROCK, 8.0, 40.0, SETTINGS, mechanism)
+    assert caught.value.exit_code == 2
 
 
 @pytest.mark.parametrize("longest_km", [0.0, -3.0, 4000.0])
 def test_distances_out_of_range_are_refused_in_a_sentence(longest_km: float) -> None:
-    with pytest.raises(InputError, match="between 0 and 1000 km"):
+    with pytest.raises(InputError, match="between 0 and 1000 km") as caught:
         build_kernels(ROCK, 8.0, longest_km, SETTINGS)
+    assert caught.value.exit_code == 2
+
+
+def test_cells_outside_the_distances_of_the_table_are_refused_in_a_sentence(averaged: KernelTable) -> None:
+    with pytest.raises(InputError, match=r"a cell lies 90 km from a site, but the kernels end at 42 km") as caught:
+        averaged.place(np.array([5e3, 90e3]))
+    assert caught.value.exit_code == 2
+
+
+def test_a_store_filled_for_another_model_is_not_taken(
+    averaged: KernelTable, tmp_path: Path, monkeypatch: pytest.MonkeyPatch
+) -> None:
+    """The store names files by what they depend on: one that holds another Earth changes nothing."""
+    soft = replace(ROCK, vs_km_s=0.8 * np.asarray(ROCK.vs_km_s))
+    after_rock = build_kernels(soft, 8.0, 40.0, SETTINGS)
+    monkeypatch.setenv("XDG_CACHE_HOME", str(tmp_path))
+    alone = build_kernels(soft, 8.0, 40.0, SETTINGS)
+    np.testing.assert_allclose(after_rock.harmonics, alone.harmonics, rtol=1e-5, atol=1e-7)
+    assert np.abs(after_rock.harmonics - averaged.harmonics).max() > 0.1
