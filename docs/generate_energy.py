@@ -125,6 +125,16 @@ def row(name: str, pick: tuple[int, ...], components: str, change: dict, kernels
     )
 
 
+def write_page(lines: list[str]) -> None:
+    """Write the page with the rows that are there, and say how many are not."""
+    here = Path(__file__).parent
+    text = (here / "energy_head.txt").read_text(encoding="utf-8") + "\n".join(lines) + "\n"
+    if len(lines) < len(RUNS):
+        missing = ", ".join(sorted({f"{name} ({len(pick)} sites)" for name, pick, *_ in RUNS[len(lines) :]}))
+        text += f"\n**Unfinished:** {len(lines)} of {len(RUNS)} rows; not measured yet: {missing}.\n"
+    (here / "energy.md").write_text(text, encoding="utf-8")
+
+
 def main() -> None:
     """Write the table beside this script."""
     parser = argparse.ArgumentParser(description=__doc__)
@@ -137,8 +147,7 @@ def main() -> None:
     for run in RUNS:
         lines.append(row(*run, kernels, folder))
         print(lines[-1], flush=True)
-    head = (Path(__file__).parent / "energy_head.txt").read_text(encoding="utf-8")
-    (Path(__file__).parent / "energy.md").write_text(head + "\n".join(lines) + "\n", encoding="utf-8")
+        write_page(lines)
 
 
 if __name__ == "__main__":
