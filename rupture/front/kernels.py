@@ -7,25 +7,9 @@ import numpy as np
 
 # Columns of a parameter table (the order of rupture.front.lines.PARAMETERS).
 (
-    EAST,
-    NORTH,
-    START,
-    AZIMUTH,
-    SPEED,
-    LENGTH,
-    AZIMUTH_2,
-    SPEED_2,
-    LENGTH_2,
-    DURATION,
-    CODA,
-    CODA_TIME,
-    STRAY,
-    P_SHARE,
-    SURFACE,
-    RISE,
-    SHARE_2,
-    STRENGTH,
-) = range(18)
+    EAST, NORTH, START, AZIMUTH, SPEED, LENGTH, AZIMUTH_2, SPEED_2, LENGTH_2,
+    DURATION, CODA, CODA_TIME, STRAY, P_SHARE, SURFACE, RISE, SHARE_2, STRENGTH,
+) = range(18)  # fmt: skip
 
 KNOTS = 4
 """Log-strengths at equal steps along an arm (in time, for a stationary source): columns STRENGTH to STRENGTH + KNOTS - 1 for the first
