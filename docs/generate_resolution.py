@@ -229,7 +229,7 @@ def page(rows: list[dict[str, Any]], siting: list[dict[str, Any]], workers: dict
     def named(which: str) -> int:
         return sum(r[which]["found"] == r[which]["kind"] for r in rows)
 
-    swapped = sum(r["full"]["kind"] == "bilateral" and r["full"]["direction_error_deg"] > 90 for r in rows)
+    swapped = sum(r["full"]["kind"] == "bilateral" and r["full"]["direction_error_deg"] > 150 for r in rows)
     network = demo_network()
     candidates = candidate_sites()
     existing = [(s.longitude_deg, s.latitude_deg, s.kind) for s in network.sites if s.code in FIRST_SITES]
@@ -254,7 +254,7 @@ read off the fit of the true kind. Made by `python docs/generate_resolution.py -
 """
     middle = f"""
 Of {len(still)} ruptures that never moved, {false} were called a moving one. In {swapped} of the two-way ruptures the fit took the other arm for the
-longer one; each counts as a direction missed by half a circle, and as not held.
+longer one (more than 150 degrees off); each counts as a direction missed, and as not held.
 
 ## As null tests and `rupture resolve` fit them
 
