@@ -44,9 +44,9 @@ for k, code in enumerate(codes):
     })  # fmt: skip
 event = {
     "origin_time": "2031-05-14T03:21:07Z",
-    "longitude_deg": 12.0,
-    "latitude_deg": 40.0,
-    "depth_km": 10.0,
+    "longitude_deg": 12,
+    "latitude_deg": 40,
+    "depth_km": 10,
     "name": "Invented",
 }
 result = Result({"event": event}, site_dataset(rows), direction_dataset(found))
