@@ -42,13 +42,8 @@ for k, code in enumerate(codes):
         "components": "6C", "distance": distance / 1e3, "azimuth": azimuths[k], "p_arrival": distance / 6e3,
         "s_arrival": distance / 3.46e3, "azimuth_correction": 0.0, "time_correction": 0.0,
     })  # fmt: skip
-event = {
-    "origin_time": "2031-05-14T03:21:07Z",
-    "longitude_deg": 12,
-    "latitude_deg": 40,
-    "depth_km": 10,
-    "name": "Invented",
-}
+place = {"longitude_deg": 12.0, "latitude_deg": 40.0, "depth_km": 10.0}
+event = {"origin_time": "2031-05-14T03:21:07Z", "name": "Invented"} | place
 result = Result({"event": event}, site_dataset(rows), direction_dataset(found))
 
 picture, image = directions_figure(result, columns=2), io.BytesIO()
