@@ -179,6 +179,7 @@ def site_rows(inputs: Inputs, refused: dict[str, str]) -> list[dict[str, Any]]:
                 "p_arrival": float(inputs.p_arrival_s[k]) if k is not None else np.nan,
                 "s_arrival": float(inputs.s_arrival_s[k]) if k is not None else np.nan,
                 "azimuth_correction": _applied(verdict, "deg"), "time_correction": _applied(verdict, "s"),
+                "corrections": [_in_numbers(c) for c in verdict.corrections],
             }
         )  # fmt: skip
     return rows
@@ -186,6 +187,17 @@ def site_rows(inputs: Inputs, refused: dict[str, str]) -> list[dict[str, Any]]:
 
 def _applied(verdict: Any, unit: str) -> float:
     return float(sum(c.value for c in verdict.corrections if c.applied and c.unit == unit and np.isfinite(c.value)))
+
+
+def _in_numbers(correction: Any) -> dict[str, Any]:
+    """Return a correction as summary.json holds it; null where the data do not say."""
+    value, uncertainty = (
+        round(float(v), 4) if np.isfinite(v) else None for v in (correction.value, correction.uncertainty)
+    )
+    return {
+        "kind": correction.kind, "value": value, "uncertainty": uncertainty, "unit": correction.unit,
+        "noticed": bool(correction.noticed), "applied": bool(correction.applied),
+    }  # fmt: skip
 
 
 def event_summary(event: Event) -> dict[str, Any]:
@@ -205,7 +217,7 @@ def site_summaries(rows: Sequence[dict[str, Any]]) -> list[dict[str, Any]]:
             "code": r["code"], "used": r["used"], "reason": r["reason"], "components": r["components"],
             "distance_km": round(r["distance"], 3), "azimuth_deg": round(r["azimuth"], 3),
             "azimuth_correction_deg": round(r["azimuth_correction"], 3),
-            "time_correction_s": round(r["time_correction"], 4),
+            "time_correction_s": round(r["time_correction"], 4), "corrections": r["corrections"],
         }
         for r in rows
     ]  # fmt: skip

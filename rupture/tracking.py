@@ -126,7 +126,9 @@ def stack_and_fit(
     frames = np.arange(-5.0 * job.map.frame_s, until + 0.5 * job.map.frame_s, job.map.frame_s)
     with progress.stage("ray stack") as report:
         geometry = cell_geometry(inputs, position, grid)
-        stack = stack_rays(found, grid, geometry, inputs.s_arrival_s[position].tolist(), frames, job.stack, report)
+        clocks = [inputs.sites[k].time_error_s for k in position]
+        onsets = inputs.s_arrival_s[position].tolist()
+        stack = stack_rays(found, grid, geometry, onsets, frames, job.stack, report, clocks)
     with progress.stage("front"):
         overlap = float(np.mean([d.weight.mean() for d in found])) * job.map.frame_s / job.direction.hop_s
         front = smooth_front(stack.log_ratio, frames, grid, min(1.0, overlap), job.smooth)

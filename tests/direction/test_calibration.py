@@ -40,7 +40,7 @@ def windows():
     return answer
 
 
-@pytest.mark.parametrize(("kind", "error_deg"), [("6C", 5.0), ("Z+rotH", 5.0), ("3C+rotZ", 20.0)])
+@pytest.mark.parametrize(("kind", "error_deg"), [("6C", 4.0), ("Z+rotH", 4.0), ("3C+rotZ", 15.0)])
 def test_intervals_hold_the_truth(windows, kind, error_deg):
     inside, width, off = windows[kind]
     print(

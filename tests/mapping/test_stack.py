@@ -14,6 +14,7 @@ from rupture.event import Event
 from rupture.geodesy import destination, distance_azimuth
 from rupture.mapping import StackSettings, map_grid, site_geometry, stack_rays
 from rupture.mapping.kernels import add_shifted_rows
+from rupture.mapping.lookup import look_up_rows
 
 EARTH = build_earth("uniform:3.5")
 HOP_S = 0.5
@@ -220,3 +221,20 @@ def test_frames_that_do_not_fit_and_bad_settings(stacked):
     ):
         with pytest.raises(InputError, match=words):
             StackSettings(**change)
+
+
+def test_a_doubtful_clock_blurs_its_rays():
+    """The same direction, flickering from one window to the next, says less through a clock that may be 2 s off."""
+    time = np.arange(0.0, 40.0, 0.5)
+    angle, slow = np.radians(3.0) * np.arange(120), np.geomspace(5e-5, 2.5e-3, 28)
+    ratio = np.zeros((120, 28, 80), np.float32)
+    ratio[30, :, 40] = 4.0
+    direction = SiteDirection(
+        "ZZ.A", time, np.array([[0.2, 0.5]]), np.array([4.0]), angle, slow, ratio, ratio[None], np.ones((1, 80)),
+        np.ones(80), np.ones(80),
+    )  # fmt: skip
+    peak = []
+    for error_s in (0.0, 2.0):
+        table, row = look_up_rows(direction, np.array([np.pi / 2]), np.array([3e-4]), 0.25, error_s)
+        peak.append(table[row[0]].max())
+    assert peak[1] < 0.6 * peak[0]

@@ -49,7 +49,10 @@ def test_summary(left):
     for site in summary["sites"]:
         assert set(site) >= {
             "code", "used", "reason", "components", "distance_km", "azimuth_deg", "azimuth_correction_deg", "time_correction_s",
+            "corrections",
         }  # fmt: skip
+        for correction in site["corrections"]:
+            assert set(correction) == {"kind", "value", "uncertainty", "unit", "noticed", "applied"}
     rupture = summary["rupture"]
     assert rupture["kind"] in ("stationary", "unilateral", "bilateral", "undetermined")
     assert sum(rupture["kind_probability"].values()) == pytest.approx(1.0, abs=1e-3)
